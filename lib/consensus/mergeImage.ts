@@ -9,5 +9,7 @@ export function mergeImage(
   settings: Partial<ConsensusSettings> = {},
   reliability?: Reliability,
 ): ImageConsensus {
-  throw new Error(`not merged yet: ${labels.annotators.length} ${settings.method} ${reliability?.iterations}`);
+  throw new Error(
+    `not merged yet: ${labels.annotators.length} ${settings.method} ${reliability?.iterations}`,
+  );
 }

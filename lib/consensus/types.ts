@@ -76,12 +76,7 @@ export type AgreedInstance = {
 };
 
 export type LeftOutReason =
-  | "unsupported"
-  | "outvoted-class"
-  | "part-of"
-  | "covers-several"
-  | "duplicate"
-  | "low-overlap";
+  "unsupported" | "outvoted-class" | "part-of" | "covers-several" | "duplicate" | "low-overlap";
 
 export type LeftOutInstance = { annotatorId: string; instanceId: string; reason: LeftOutReason; why: string };
 
@@ -143,7 +138,12 @@ export type AnnotatorReliability = {
 };
 
 /** Annotators whose labels repeat each other, or the untouched proposals; each group has one vote. */
-export type CopyGroup = { annotatorIds: string[]; source: "annotator" | "proposals"; meanIou: number; share: number };
+export type CopyGroup = {
+  annotatorIds: string[];
+  source: "annotator" | "proposals";
+  meanIou: number;
+  share: number;
+};
 
 /** What the whole batch tells about its annotators; made by estimateReliability, used by mergeImage. */
 export type Reliability = {
