@@ -1,0 +1,184 @@
+import { and, eq, inArray } from "drizzle-orm";
+import { getDb, inTransaction, type Tx } from "@/db/client";
+import { findBatch, findImage, listClasses, type BatchRow, type ClassRow, type ImageRow } from "@/db/queries/batches";
+import { listReliabilityLabels } from "@/db/queries/reliability";
+import { listSubmissionsOf, type SubmissionRow } from "@/db/queries/work";
+import { consensusRuns, images, submissions } from "@/db/schema";
+import { mergeImage } from "@/lib/consensus/mergeImage";
+import { estimateReliability } from "@/lib/consensus/reliability";
+import type { AnnotatorScore, ConsensusSettings, ImageConsensus, ImageLabels } from "@/lib/consensus/types";
+import { invariant } from "@/lib/errors";
+import { newId } from "@/lib/ids";
+import { enqueue } from "@/lib/jobs/queue";
+import { openSplitDispute } from "@/lib/market/disputes/openDispute";
+import { adjustSubmissionPay, releaseForSubmission } from "@/lib/market/money/settlement";
+import { payOf } from "./payOf";
+
+/** How many settled images pass before what the batch tells about its annotators is estimated anew. */
+const RELIABILITY_IMAGES_MAX = 200;
+
+/** The submissions of one image as the consensus engine takes them. */
+export function labelsOf(image: ImageRow, list: readonly SubmissionRow[]): ImageLabels {
+  invariant(image.width && image.height, "an image with submissions was checked");
+  return {
+    width: image.width,
+    height: image.height,
+    annotators: list.map(({ annotatorId, document }) => ({ annotatorId, instances: document.instances })),
+  };
+}
+
+/** The batch's settings as the engine takes them. */
+export function settingsOf(batch: BatchRow, key: readonly ClassRow[]): Partial<ConsensusSettings> {
+  return {
+    kMin: batch.kMin,
+    kMax: batch.kMax,
+    agreementTarget: batch.agreementTarget,
+    boxClasses: key.filter((row) => row.geometry === "box").map((row) => row.id),
+  };
+}
+
+/**
+ * The job behind each image that has its submissions: merges them, and then, in one transaction, records the
+ * run and acts on it. Settled: pays each annotator by the score. Short: asks for one more. Split: opens a
+ * dispute. Running it again on the same submissions changes nothing.
+ */
+export function settleImage({ imageId, nowMs }: { imageId: string; nowMs: number }): void {
+  const db = getDb();
+  const image = findImage(db, imageId);
+  const batch = image && findBatch(db, image.batchId);
+  if (!image || !batch || image.consensusState === "settled" || image.consensusState === "split") return;
+  const list = listSubmissionsOf(db, imageId);
+  if (list.length < image.slotsWanted) return;
+  const key = listClasses(db, batch.id);
+  const settings = settingsOf(batch, key);
+  const startMs = performance.now();
+  const history = listReliabilityLabels(db, batch.id, RELIABILITY_IMAGES_MAX);
+  const reliability = history.length > 0 ? estimateReliability(history, settings) : undefined;
+  const result = mergeImage(labelsOf(image, list), settings, reliability);
+  const millis = Math.round(performance.now() - startMs);
+  inTransaction(db, (tx) => {
+    const current = findImage(tx, imageId);
+    if (!current || current.consensusState === "settled" || current.consensusState === "split") return;
+    if (listSubmissionsOf(tx, imageId).length !== list.length) return; // one more came in: its own job follows
+    const runId = recordRun(tx, { image, origin: "engine", disputeId: null, submissionList: list, settings, result, millis, nowMs });
+    if (result.verdict === "short" && image.slotsWanted < batch.kMax) {
+      tx.update(images)
+        .set({ consensusState: "short", slotsWanted: image.slotsWanted + 1, currentRunId: runId })
+        .where(eq(images.id, imageId))
+        .run();
+      return;
+    }
+    if (result.verdict === "settled") {
+      settle(tx, { image, runId, nowMs });
+      applyScores(tx, { batch, key, list, scores: result.scores, runId, disputeId: null, nowMs });
+      return;
+    }
+    tx.update(images).set({ consensusState: "split", currentRunId: runId }).where(eq(images.id, imageId)).run();
+    openSplitDispute(tx, { batch, image, runId, reason: result.reason, nowMs });
+  });
+}
+
+type NewRun = {
+  image: ImageRow;
+  origin: "engine" | "decision";
+  disputeId: string | null;
+  submissionList: readonly SubmissionRow[];
+  settings: Partial<ConsensusSettings>;
+  result: ImageConsensus;
+  millis: number;
+  nowMs: number;
+};
+
+/** Keeps a run. Runs are only ever added. Returns its id. */
+export function recordRun(tx: Tx, run: NewRun): string {
+  const id = newId("run");
+  tx.insert(consensusRuns)
+    .values({
+      id,
+      batchId: run.image.batchId,
+      imageId: run.image.id,
+      origin: run.origin,
+      disputeId: run.disputeId,
+      verdict: run.result.verdict,
+      agreement: run.result.agreement,
+      predictedIou: run.result.predictedQuality.value,
+      submissionIds: run.submissionList.map((submission) => submission.id),
+      settings: { ...run.settings },
+      result: run.result,
+      millis: run.millis,
+      createdAtMs: run.nowMs,
+    })
+    .run();
+  return id;
+}
+
+/** Marks the image settled by a run, and lets the batch's proposals learn from it. */
+export function settle(tx: Tx, { image, runId, nowMs }: { image: ImageRow; runId: string; nowMs: number }): void {
+  tx.update(images).set({ consensusState: "settled", currentRunId: runId, settledAtMs: nowMs }).where(eq(images.id, image.id)).run();
+  enqueue(tx, {
+    kind: "batch.train",
+    payload: { batchId: image.batchId },
+    subject: image.batchId,
+    uniqueKey: `train:${image.batchId}`,
+    nowMs,
+    delayMs: 2000, // images that settle together train once
+    priority: -5,
+    attemptsMax: 3,
+  });
+}
+
+type Scored = {
+  batch: BatchRow;
+  key: readonly ClassRow[];
+  list: readonly SubmissionRow[];
+  scores: readonly AnnotatorScore[];
+  runId: string;
+  disputeId: string | null;
+  nowMs: number;
+};
+
+/**
+ * Writes score and pay of each submission. The first score pays; a later one (a decided dispute) moves the
+ * difference by a posting linked to the first. Returns the cents by which pay rose in sum.
+ */
+export function applyScores(tx: Tx, { batch, key, list, scores, runId, disputeId, nowMs }: Scored): number {
+  const scoreOf = new Map(scores.map((score) => [score.annotatorId, score]));
+  let movedCents = 0;
+  for (const submission of list) {
+    const score = scoreOf.get(submission.annotatorId);
+    invariant(score, "each annotator of an image is scored");
+    const { payCents, feeCents } = payOf(batch, key, submission.document, score);
+    const parties = { submissionId: submission.id, batchId: batch.id, annotatorId: submission.annotatorId };
+    if (submission.payCents === null) {
+      if (payCents > 0) releaseForSubmission(tx, { ...parties, payCents, feeCents, nowMs });
+      movedCents += payCents;
+    } else if (submission.payCents !== payCents) {
+      invariant(disputeId, "pay that was posted changes by a decision only");
+      adjustSubmissionPay(tx, {
+        ...parties,
+        disputeId,
+        oldPayCents: submission.payCents,
+        oldFeeCents: submission.feeCents ?? 0,
+        newPayCents: payCents,
+        newFeeCents: feeCents,
+        nowMs,
+      });
+      movedCents += payCents - submission.payCents;
+    }
+    tx.update(submissions)
+      .set({ scoredRunId: runId, quality: score.quality, payCents, feeCents, paidAtMs: submission.paidAtMs ?? nowMs })
+      .where(eq(submissions.id, submission.id))
+      .run();
+  }
+  return movedCents;
+}
+
+/** Images of an open batch whose consensus is due but has no job: after a crash or a lowered target. */
+export function listUnsettled(tx: Tx, batchId: string): string[] {
+  return tx
+    .select({ id: images.id })
+    .from(images)
+    .where(and(eq(images.batchId, batchId), inArray(images.consensusState, ["none", "short"])))
+    .all()
+    .map((row) => row.id);
+}

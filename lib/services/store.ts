@@ -1,0 +1,148 @@
+import { Readable } from "node:stream";
+import {
+  AbortMultipartUploadCommand,
+  CompleteMultipartUploadCommand,
+  CreateBucketCommand,
+  CreateMultipartUploadCommand,
+  DeleteObjectCommand,
+  GetObjectCommand,
+  HeadBucketCommand,
+  HeadObjectCommand,
+  ListPartsCommand,
+  NotFound,
+  PutObjectCommand,
+  S3Client,
+  UploadPartCommand,
+} from "@aws-sdk/client-s3";
+import { Upload } from "@aws-sdk/lib-storage";
+import { getSignedUrl } from "@aws-sdk/s3-request-presigner";
+import { env } from "@/lib/env";
+
+export type PartTag = { number: number; etag: string };
+
+const PRESIGNED_SECONDS = 3600;
+
+let client: S3Client | undefined;
+let presigner: S3Client | undefined;
+
+function configured(extra: Partial<ConstructorParameters<typeof S3Client>[0]> = {}): S3Client {
+  const { S3_ENDPOINT, S3_REGION, S3_ACCESS_KEY_ID, S3_SECRET_ACCESS_KEY } = env();
+  return new S3Client({
+    endpoint: S3_ENDPOINT,
+    region: S3_REGION,
+    forcePathStyle: true,
+    credentials: { accessKeyId: S3_ACCESS_KEY_ID, secretAccessKey: S3_SECRET_ACCESS_KEY },
+    ...extra,
+  });
+}
+
+function s3(): S3Client {
+  client ??= configured();
+  return client;
+}
+
+/** Presigns without a default checksum: the CRC32 of an empty body would refuse every real one. */
+function signer(): S3Client {
+  presigner ??= configured({ requestChecksumCalculation: "WHEN_REQUIRED" });
+  return presigner;
+}
+
+const Bucket = () => env().S3_BUCKET;
+
+/** Makes the bucket if it is not there yet. */
+export async function ensureBucket(): Promise<void> {
+  try {
+    await s3().send(new HeadBucketCommand({ Bucket: Bucket() }));
+  } catch {
+    await s3().send(new CreateBucketCommand({ Bucket: Bucket() }));
+  }
+}
+
+/**
+ * An address to which the browser may PUT exactly these many bytes of this type, once: another length is
+ * refused with 403, a second PUT with 412. `headers` must be sent as given.
+ */
+export async function presignPut(key: string, byteSize: number, mediaType: string) {
+  const command = new PutObjectCommand({
+    Bucket: Bucket(),
+    Key: key,
+    ContentType: mediaType,
+    ContentLength: byteSize,
+    IfNoneMatch: "*",
+  });
+  const url = await getSignedUrl(signer(), command, {
+    expiresIn: PRESIGNED_SECONDS,
+    signableHeaders: new Set(["host", "content-type", "content-length", "if-none-match"]),
+  });
+  return { url, headers: { "content-type": mediaType, "if-none-match": "*" } };
+}
+
+export async function startMultipart(key: string, mediaType: string): Promise<string> {
+  const answer = await s3().send(new CreateMultipartUploadCommand({ Bucket: Bucket(), Key: key, ContentType: mediaType }));
+  if (!answer.UploadId) throw new Error("the object store gave no upload id");
+  return answer.UploadId;
+}
+
+export function presignPart(key: string, uploadId: string, number: number): Promise<string> {
+  const command = new UploadPartCommand({ Bucket: Bucket(), Key: key, UploadId: uploadId, PartNumber: number });
+  return getSignedUrl(signer(), command, { expiresIn: PRESIGNED_SECONDS });
+}
+
+/** The parts that have arrived; null when the store no longer knows the upload. */
+export async function listParts(key: string, uploadId: string): Promise<PartTag[] | null> {
+  try {
+    const answer = await s3().send(new ListPartsCommand({ Bucket: Bucket(), Key: key, UploadId: uploadId }));
+    return (answer.Parts ?? []).map((part) => ({ number: part.PartNumber ?? 0, etag: part.ETag ?? "" }));
+  } catch (error) {
+    if (error instanceof Error && error.name === "NoSuchUpload") return null;
+    throw error;
+  }
+}
+
+export async function completeMultipart(key: string, uploadId: string, parts: PartTag[]): Promise<void> {
+  const Parts = [...parts].sort((a, b) => a.number - b.number).map((p) => ({ PartNumber: p.number, ETag: p.etag }));
+  await s3().send(
+    new CompleteMultipartUploadCommand({ Bucket: Bucket(), Key: key, UploadId: uploadId, MultipartUpload: { Parts } }),
+  );
+}
+
+export async function abortMultipart(key: string, uploadId: string): Promise<void> {
+  await s3().send(new AbortMultipartUploadCommand({ Bucket: Bucket(), Key: key, UploadId: uploadId })).catch(() => undefined);
+}
+
+/** Size in bytes, or null when there is no such object. */
+export async function findObjectSize(key: string): Promise<number | null> {
+  try {
+    const answer = await s3().send(new HeadObjectCommand({ Bucket: Bucket(), Key: key }));
+    return answer.ContentLength ?? 0;
+  } catch (error) {
+    if (error instanceof NotFound || (error instanceof Error && error.name === "NoSuchKey")) return null;
+    throw error;
+  }
+}
+
+export async function getObject(key: string): Promise<Buffer> {
+  const answer = await s3().send(new GetObjectCommand({ Bucket: Bucket(), Key: key }));
+  if (!answer.Body) throw new Error(`object ${key} has no body`);
+  return Buffer.from(await answer.Body.transformToByteArray());
+}
+
+/** The object as a web stream with its length, for answering a request without holding it in memory. */
+export async function streamObject(key: string): Promise<{ stream: ReadableStream; byteSize: number | undefined }> {
+  const answer = await s3().send(new GetObjectCommand({ Bucket: Bucket(), Key: key }));
+  if (!answer.Body) throw new Error(`object ${key} has no body`);
+  return { stream: answer.Body.transformToWebStream(), byteSize: answer.ContentLength };
+}
+
+export async function putObject(key: string, body: Buffer, mediaType: string): Promise<void> {
+  await s3().send(new PutObjectCommand({ Bucket: Bucket(), Key: key, Body: body, ContentType: mediaType }));
+}
+
+/** Stores a stream of unknown length. */
+export async function putStream(key: string, body: Readable, mediaType: string): Promise<void> {
+  await new Upload({ client: s3(), params: { Bucket: Bucket(), Key: key, Body: body, ContentType: mediaType } }).done();
+}
+
+export async function deleteObject(key: string): Promise<void> {
+  await s3().send(new DeleteObjectCommand({ Bucket: Bucket(), Key: key }));
+}
