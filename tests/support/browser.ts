@@ -37,7 +37,7 @@ export async function launchBrowser(options: LaunchOptions = {}): Promise<Browse
     ...options,
     executablePath,
     args: [...CONTAINER_ARGS, ...(options.args ?? [])],
-    env: { ...definedEnv(), ...env, ...options.env },
+    env: { ...process.env, ...env, ...options.env },
   });
 }
 
@@ -114,7 +114,7 @@ async function browserTmp(home: string): Promise<string> {
 
 async function starts(executablePath: string, env: Record<string, string>): Promise<boolean> {
   try {
-    await run(executablePath, ["--version"], { env: { ...definedEnv(), ...env }, timeout: 30_000 });
+    await run(executablePath, ["--version"], { env: { ...process.env, ...env }, timeout: 30_000 });
     return true;
   } catch {
     return false; // The caller tries the next set of libraries and reports when none is left.
@@ -123,11 +123,6 @@ async function starts(executablePath: string, env: Record<string, string>): Prom
 
 function libraryPath(folder: string): string {
   return [folder, process.env["LD_LIBRARY_PATH"]].filter(Boolean).join(":");
-}
-
-function definedEnv(): Record<string, string> {
-  const pairs = Object.entries(process.env).filter((pair): pair is [string, string] => pair[1] !== undefined);
-  return Object.fromEntries(pairs);
 }
 
 function restore(name: string, value: string | undefined): void {
