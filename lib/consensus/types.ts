@@ -47,6 +47,8 @@ export type ConsensusSettings = {
   boxClasses: readonly string[];
   /** Most IoU that simplifying an agreed outline may cost; 0..1. */
   outlineIouLossMax: number;
+  /** Names of classes for the words that people read; an id without a name stands for itself. */
+  classNames: Readonly<Record<string, string>>;
   /** Explain one-to-many (merged, split) instances and let them support what they cover. */
   explain: boolean;
 };
@@ -125,6 +127,11 @@ export type AnnotatorReliability = {
   falseAlarm: Estimate;
   /** P(drawn class or nothing | true class or nothing): rows and columns are the classes, then "nothing". */
   confusion: number[][];
+  /**
+   * How many of the votes for something that is not there are this annotator's, relative to an equal share
+   * among those who looked: 1 for a typical annotator, more for one who invents.
+   */
+  inventions: number;
   /** Weight of the outline in a fusion, relative to a typical annotator (1). */
   outlineWeight: number;
   /** Mean 1 - IoU with the outline of the others. */
@@ -172,5 +179,6 @@ export const DEFAULT_SETTINGS: ConsensusSettings = {
   looseIou: 0.6,
   boxClasses: [],
   outlineIouLossMax: 0.005,
+  classNames: {},
   explain: true,
 };
