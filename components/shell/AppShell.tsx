@@ -60,7 +60,7 @@ export function AppShell({ user, nav, width = "page", footer = true, children }:
                 </ButtonLink>
               </>
             )}
-            <MobileNav items={items} />
+            <MobileNav items={user ? items : [...items, { href: "/join", label: "Join" }]} />
           </div>
         </div>
       </header>

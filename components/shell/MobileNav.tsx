@@ -11,7 +11,8 @@ import { NavLinks } from "./NavLinks";
 /** The places on a narrow screen, in a drawer from the right that closes on arrival. */
 export function MobileNav({ items }: { items: readonly NavItem[] }) {
   const pathname = usePathname();
-  // Open belongs to the page it was opened on; going somewhere else closes it without an effect.
+  // Open belongs to the page it was opened on: going back closes it too. A link to a part of the same page
+  // changes no path, so a click in the list closes it as well.
   const [openOn, setOpenOn] = useState<string>();
   return (
     <Dialog.Root
@@ -33,7 +34,7 @@ export function MobileNav({ items }: { items: readonly NavItem[] }) {
               <X aria-hidden className="size-6" />
             </Dialog.Close>
           </div>
-          <nav aria-label="Main">
+          <nav aria-label="Main" onClick={() => setOpenOn(undefined)}>
             <NavLinks items={items} direction="column" />
           </nav>
         </Dialog.Popup>

@@ -44,7 +44,7 @@ export function Interval({ value, low, high, digits = 2, level = 0.95, unit, cla
       ) : (
         <>
           {value.toFixed(digits)}
-          {suffix} <span className="text-muted whitespace-nowrap">({range})</span>
+          {suffix} <span className="text-muted text-[0.75em] whitespace-nowrap">({range})</span>
         </>
       )}
     </span>

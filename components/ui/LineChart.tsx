@@ -22,7 +22,7 @@ type Props = {
 
 const WIDTH = 640;
 const HEIGHT = 260;
-const LEFT = 52;
+const LEFT = 60;
 const RIGHT = 12;
 const TOP = 12;
 const BOTTOM = 40;
@@ -72,7 +72,7 @@ export function LineChart({ title, series, xLabel, yLabel, formatX, formatY, yRa
         {levels.map((level) => (
           <g key={level}>
             <line x1={LEFT} x2={WIDTH - RIGHT} y1={toY(level)} y2={toY(level)} stroke="var(--line)" />
-            <text x={LEFT - 8} y={toY(level) + 4} textAnchor="end" fontSize="12" fill="var(--muted)">
+            <text x={LEFT - 8} y={toY(level) + 4} textAnchor="end" fontSize="14" fill="var(--muted)">
               {showY(level)}
             </text>
           </g>
@@ -83,13 +83,13 @@ export function LineChart({ title, series, xLabel, yLabel, formatX, formatY, yRa
             x={toX(x)}
             y={HEIGHT - BOTTOM + 17}
             textAnchor={(["start", "middle", "end"] as const)[index]}
-            fontSize="12"
+            fontSize="14"
             fill="var(--muted)"
           >
             {showX(x)}
           </text>
         ))}
-        <text x={WIDTH - RIGHT} y={HEIGHT - 5} textAnchor="end" fontSize="12" fill="var(--muted)">
+        <text x={WIDTH - RIGHT} y={HEIGHT - 5} textAnchor="end" fontSize="14" fill="var(--muted)">
           {xLabel}
         </text>
         {target ? (
@@ -102,7 +102,7 @@ export function LineChart({ title, series, xLabel, yLabel, formatX, formatY, yRa
               stroke="var(--ink)"
               strokeDasharray="4 4"
             />
-            <text x={WIDTH - RIGHT} y={toY(target.y) - 5} textAnchor="end" fontSize="12" fill="var(--ink)">
+            <text x={WIDTH - RIGHT} y={toY(target.y) - 5} textAnchor="end" fontSize="14" fill="var(--ink)">
               {target.label}
             </text>
           </g>

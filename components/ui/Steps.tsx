@@ -63,7 +63,7 @@ export function Steps({
 
 function Station({ state }: { state: Step["state"] }) {
   return (
-    <svg viewBox="0 0 28 28" aria-hidden className="relative size-7">
+    <svg viewBox="0 0 28 28" aria-hidden className="relative z-10 size-7">
       {state === "done" ? (
         <>
           <rect

@@ -117,7 +117,7 @@ export function Cell({ label, align, figure = false, className, ...rest }: CellP
       {...rest}
       {...(label ? { "data-label": label } : {})}
       className={cn(
-        "px-3 py-2.5 first:ps-0 last:pe-0",
+        "py-2.5 max-md:px-0 max-md:py-1 md:px-3 md:first:ps-0 md:last:pe-0",
         side === "end" && "md:text-end",
         figure && "font-figures",
         className,
@@ -133,7 +133,7 @@ export function RowHead({ className, ...rest }: ComponentProps<"th">) {
       role="rowheader"
       scope="row"
       {...rest}
-      className={cn("px-3 py-2.5 text-start font-semibold first:ps-0", className)}
+      className={cn("py-2.5 text-start font-semibold max-md:py-1 md:px-3 md:first:ps-0", className)}
     />
   );
 }
