@@ -7,7 +7,7 @@ const LIMITS = {
 } as const;
 
 /** Counts one use of `what` by `who`; throws rate_limited with the wait in words when it was the last. */
-export async function useAllowance(what: keyof typeof LIMITS, who: string): Promise<void> {
+export async function spendAllowance(what: keyof typeof LIMITS, who: string): Promise<void> {
   try {
     await LIMITS[what].consume(who);
   } catch (refusal) {

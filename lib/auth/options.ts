@@ -6,7 +6,7 @@ import { nowMs } from "@/lib/clock";
 import { env } from "@/lib/env";
 import { AppError } from "@/lib/errors";
 import { redeemSignInLink } from "@/lib/market/people/signIn";
-import { useAllowance } from "./limits";
+import { spendAllowance } from "./limits";
 import { isPassword } from "./password";
 
 type SessionUser = { id: string; name: string; email: string; epoch: number };
@@ -29,7 +29,7 @@ export function authOptions(): NextAuthOptions {
         authorize: async (given) => {
           const email = (given?.email ?? "").trim().toLowerCase();
           try {
-            await useAllowance("sign-in", email);
+            await spendAllowance("sign-in", email);
           } catch (error) {
             throw new Error(error instanceof AppError ? error.message : "Try again later.", { cause: error });
           }

@@ -44,7 +44,7 @@ export function inviteColleague({ actor, nowMs, teamId, email, role }: By & { te
         to: email,
         subject: `${actor.name} invites you to ${team?.name ?? "a team"}`,
         lines: [`${actor.name} shares the team "${team?.name ?? ""}" on Merestone with you, as ${role}.`, "The link works for a week."],
-        action: { label: "Join the team", path: `/join?secret=${secret}` },
+        action: { label: "Join the team", path: `/invitation?secret=${secret}` },
         tag: "invite",
       },
       nowMs,

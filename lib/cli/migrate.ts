@@ -1,0 +1,3 @@
+import { migrateDatabase, getDb } from "@/db/client";
+
+migrateDatabase(getDb());
