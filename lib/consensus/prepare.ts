@@ -1,4 +1,4 @@
-import type { CopyGroup, ImageLabels, LabelledInstance, Reliability } from "./types";
+import type { ImageLabels, LabelledInstance, Reliability } from "./types";
 import { boxesMeet, drawnIou, spansOf, type Spans } from "./spans";
 
 /** One drawn instance, ready to be compared. `voter` is its annotator's copy group, or the annotator alone. */
@@ -51,7 +51,7 @@ export function prepareImage(labels: ImageLabels, reliability?: Reliability): Pr
     }
   });
   const pairs = overlappingPairs(drawn);
-  const voterOf = voters(annotatorIds, drawn, pairs, reliability?.copies ?? []);
+  const voterOf = voters(annotatorIds, drawn, pairs, reliability);
   const items = drawn.map((item) => ({ ...item, voter: voterOf[item.annotator]! }));
   const itemsOf: number[][] = annotatorIds.map(() => []);
   items.forEach((item, index) => itemsOf[item.annotator]!.push(index));
@@ -99,17 +99,22 @@ function overlappingPairs(
 }
 
 /** Whether two annotators' labels of this image are so alike that one was copied from the other. */
-export function areCopies(matchedIous: readonly number[], sizeA: number, sizeB: number): boolean {
+export function areCopies(
+  matchedIous: readonly number[],
+  sizeA: number,
+  sizeB: number,
+  knownToCopy: boolean,
+): boolean {
   const close = matchedIous.filter((iou) => iou >= COPY_IOU_MIN).length;
   // One or two close outlines happen by chance, above all on boxes of clear objects.
-  return close >= 3 && close >= COPY_SHARE_MIN * Math.min(sizeA, sizeB);
+  return close >= (knownToCopy ? 1 : 3) && close >= COPY_SHARE_MIN * Math.min(sizeA, sizeB);
 }
 
 function voters(
   annotatorIds: readonly string[],
   drawn: readonly { annotator: number; instance: LabelledInstance }[],
   pairs: readonly Pair[],
-  copies: readonly CopyGroup[],
+  reliability: Reliability | undefined,
 ): Int32Array {
   const count = annotatorIds.length;
   const voterOf = Int32Array.from({ length: count }, (_, i) => i);
@@ -118,12 +123,13 @@ function voters(
     const to = Math.min(voterOf[a]!, voterOf[b]!);
     for (let k = 0; k < count; k++) if (voterOf[k] === from) voterOf[k] = to;
   };
-  for (const group of copies) {
+  for (const group of reliability?.copies ?? []) {
     const here = group.annotatorIds.map((id) => annotatorIds.indexOf(id)).filter((index) => index >= 0);
     for (const index of here) join(here[0]!, index);
   }
   const sizes = new Int32Array(count);
   for (const item of drawn) sizes[item.annotator]!++;
+  const known = (k: number) => Boolean(reliability?.annotators[annotatorIds[k]!]?.copyOf);
   const close = new Map<number, number[]>();
   for (const { a, b, iou } of pairs) {
     if (iou < COPY_IOU_MIN || tookTheSame(drawn[a]!.instance, drawn[b]!.instance)) continue;
@@ -137,7 +143,7 @@ function voters(
   for (const [key, ious] of close) {
     const a = Math.floor(key / count);
     const b = key % count;
-    if (areCopies(ious, sizes[a]!, sizes[b]!)) join(a, b);
+    if (areCopies(ious, sizes[a]!, sizes[b]!, known(a) || known(b))) join(a, b);
   }
   return voterOf;
 }

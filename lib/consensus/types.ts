@@ -148,7 +148,7 @@ export type AnnotatorReliability = {
 export type CopyGroup = {
   annotatorIds: string[];
   source: "annotator" | "proposals";
-  meanIou: number;
+  /** Share of the drawings compared that are the same. */
   share: number;
 };
 
