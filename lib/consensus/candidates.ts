@@ -1,5 +1,5 @@
 import type { Clusters } from "./cluster";
-import type { Item, PreparedImage } from "./prepare";
+import type { PreparedImage } from "./prepare";
 import { boxesMeet, drawnIou, overlapOf, type Spans } from "./spans";
 import type { Reliability } from "./types";
 
@@ -33,6 +33,8 @@ export type Candidates = {
 const COVERED_MIN = 0.6;
 /** Share of the covering instance that is made up of the objects it covers. */
 const FILLED_MIN = 0.5;
+/** A united outline may have this many times the weight of each object that it covers, if two people drew those. */
+const COVERER_WEIGHT_MAX = 1.6;
 /** Share of a part's area that lies in the whole. */
 const PART_INSIDE_MIN = 0.75;
 /** A part is at most this share of the whole; above, it is a loose outline of the whole. */
@@ -149,6 +151,7 @@ type Draft = {
   medoid: number;
   meanPairIou: number;
   weight: number;
+  voters: number;
   classId: string;
   spans: Spans;
 };
@@ -187,6 +190,7 @@ function draft(
     medoid: members[best]!,
     meanPairIou: pairCount > 0 ? total / pairCount : NaN,
     weight: [...perVoter.values()].reduce((sum, weight) => sum + weight, 0),
+    voters: perVoter.size,
     classId,
     spans: image.items[members[best]!]!.spans,
   };
@@ -208,15 +212,26 @@ function explainItem(
   for (let c = 0; c < drafts.length; c++) {
     const other = drafts[c]!;
     if (c === own || dissolved.has(c) || !boxesMeet(spans.box, other.spans.box)) continue;
-    if (other.weight <= drafts[own]!.weight * 1.001) continue;
-    const hasOwn = other.members.some((member) => image.items[member]!.annotator === annotator);
-    if (hasOwn && drawnIou(spans, other.spans) >= Math.max(0.5, iouCut))
+    const heavier = other.weight > drafts[own]!.weight * 1.001;
+    // Two people who draw the same two objects independently have seen a border; one who unites them overlooked it.
+    const borne = heavier || (other.voters >= 2 && other.weight * COVERER_WEIGHT_MAX >= drafts[own]!.weight);
+    if (!borne) continue;
+    const mine = other.members.find((member) => image.items[member]!.annotator === annotator);
+    const mySpans = mine === undefined ? undefined : image.items[mine]!.spans;
+    if (heavier && mySpans && drawnIou(spans, mySpans) >= 0.5 && drawnIou(spans, other.spans) >= Math.max(0.5, iouCut)) {
       return { reason: "duplicate", of: [c] };
+    }
     // A cap on a bottle is an object of its own; only the same class is divided or united.
     if (other.classId !== instance.classId || image.items[other.medoid]!.instance.crowd) continue;
     const { commonPx2, aPx2, bPx2 } = overlapOf(spans, other.spans);
     if (commonPx2 >= COVERED_MIN * bPx2) covered.push({ c, common: commonPx2 / Math.max(aPx2, 1e-12) });
-    if (commonPx2 > wholeShare * aPx2 && aPx2 <= PART_SIZE_MAX * bPx2) {
+    if (
+      heavier &&
+      drafts[own]!.voters === 1 &&
+      commonPx2 > wholeShare * aPx2 &&
+      aPx2 <= PART_SIZE_MAX * bPx2 &&
+      isDivided(image, item, other, mySpans)
+    ) {
       whole = c;
       wholeShare = commonPx2 / aPx2;
     }
@@ -228,7 +243,29 @@ function explainItem(
   return undefined;
 }
 
-/** The item's class, as the annotator named it. */
-export function classOf(items: readonly Item[], item: number): string {
-  return items[item]!.instance.classId;
+/**
+ * Whether the annotator drew the object in pieces, of which this is one: the pieces lie beside each other and together
+ * make up most of the object, none of them the whole. A second object inside a whole one is no piece.
+ */
+function isDivided(image: PreparedImage, item: number, whole: Draft, member: Spans | undefined): boolean {
+  const { spans, annotator, instance } = image.items[item]!;
+  const pieces = image.itemsOf[annotator]!
+    .filter((other) => other !== item && image.items[other]!.instance.classId === instance.classId)
+    .map((other) => image.items[other]!.spans)
+    .filter((other) => boxesMeet(other.box, whole.spans.box));
+  let filled = overlapOf(spans, whole.spans).commonPx2;
+  const wholePx2 = whole.spans.areaPx2;
+  for (const piece of pieces) {
+    const { commonPx2, aPx2 } = overlapOf(piece, whole.spans);
+    if (piece !== member && commonPx2 < PART_INSIDE_MIN * aPx2) continue;
+    if (aPx2 > PART_SIZE_MAX * wholePx2) return false;
+    if (overlapOf(piece, spans).commonPx2 > PIECES_SHARE_MAX * Math.min(aPx2, spans.areaPx2)) return false;
+    filled += commonPx2;
+  }
+  return filled >= PIECES_FILL_MIN * wholePx2;
 }
+
+/** Pieces of one object overlap each other by no more than this share of the smaller. */
+const PIECES_SHARE_MAX = 0.3;
+/** Pieces make up at least this share of the object. */
+const PIECES_FILL_MIN = 0.6;
