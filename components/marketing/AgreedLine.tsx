@@ -33,6 +33,14 @@ export function AgreedLine() {
         fill="none"
       >
         <defs>
+          <path id="sketch-agreed" d={closedPath(AGREED_OUTLINE)} />
+          {OUTLINES.map((outline) => (
+            <path
+              key={outline.station}
+              id={`sketch-outline-${outline.station}`}
+              d={closedPath(outline.points)}
+            />
+          ))}
           <clipPath id="sketch-frame">
             <rect
               x={FRAME.left}
@@ -99,17 +107,16 @@ export function AgreedLine() {
 function Drawing() {
   return (
     <g strokeLinejoin="round">
-      <path d={closedPath(AGREED_OUTLINE)} fill="var(--agreed-soft)" fillOpacity="0.75" />
+      <use href="#sketch-agreed" fill="var(--agreed-soft)" fillOpacity="0.75" />
       <Bottle />
       {OUTLINES.map((outline, index) => (
-        <path
+        <use
           key={outline.station}
-          d={closedPath(outline.points)}
+          href={`#sketch-outline-${outline.station}`}
           stroke="var(--ink)"
           strokeOpacity="0.8"
           strokeWidth="1.2"
           strokeDasharray={outline.dash === "none" ? undefined : outline.dash}
-          vectorEffect="non-scaling-stroke"
           className="animate-[surface_0.7s_ease-out_both]"
           style={delay(0.15 + index * 0.28)}
         />
@@ -198,17 +205,17 @@ function Lens() {
       <circle cx={x} cy={y} r={radius} fill="var(--sheet)" />
       <g clipPath="url(#sketch-lens)">
         <g transform={`translate(${x} ${y}) scale(${zoom}) translate(${-focusX} ${-focusY})`}>
-          <path d={closedPath(AGREED_OUTLINE)} fill="var(--agreed-soft)" />
+          <use href="#sketch-agreed" fill="var(--agreed-soft)" />
           {OUTLINES.map((outline) => (
-            <path
+            <use
               key={outline.station}
-              d={closedPath(outline.points)}
+              href={`#sketch-outline-${outline.station}`}
               stroke="var(--ink)"
-              strokeWidth="0.7"
+              strokeWidth="1.2"
               strokeDasharray={outline.dash === "none" ? undefined : outline.dash}
             />
           ))}
-          <path d={closedPath(AGREED_OUTLINE)} stroke="var(--agreed)" strokeWidth="1.7" />
+          <use href="#sketch-agreed" stroke="var(--agreed)" strokeWidth="1.7" />
         </g>
       </g>
       <circle cx={x} cy={y} r={radius} stroke="var(--ink)" strokeWidth="1.6" />
@@ -248,9 +255,7 @@ function Ground() {
         ))}
       </g>
       <g strokeWidth="1.4" strokeOpacity="0.5">
-        {SAND.map(([x, y]) => (
-          <path key={`${x} ${y}`} d={`M${x} ${y}h.01`} />
-        ))}
+        <path d={SAND.map(([x, y]) => `M${x} ${y}h.01`).join("")} />
       </g>
     </g>
   );

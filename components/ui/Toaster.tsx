@@ -12,6 +12,7 @@ export function Toaster() {
       containerAriaLabel="Messages"
       duration={6000}
       gap={8}
+      style={{ fontFamily: "var(--text)" }}
       toastOptions={{
         unstyled: true,
         classNames: {

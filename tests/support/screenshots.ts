@@ -39,7 +39,14 @@ export async function takeScreenshots(job: ScreenshotJob): Promise<Screenshot[]>
           const [name, target] = typeof entry === "string" ? [nameOf(entry), entry] : entry;
           const problems: string[] = [];
           const page = await context.newPage();
-          page.on("console", (message) => message.type() === "error" && problems.push(message.text()));
+          page.on("console", (message) => {
+            // A failed request is reported below, with its address.
+            if (message.type() === "error" && !message.text().startsWith("Failed to load resource"))
+              problems.push(message.text());
+          });
+          page.on("response", (response) => {
+            if (response.status() >= 400) problems.push(`${response.status()} ${response.url()}`);
+          });
           page.on("pageerror", (error) => problems.push(error.message));
           await page.goto(new URL(target, job.baseUrl).href, { waitUntil: "load" });
           await page.evaluate(() => document.fonts.ready);
