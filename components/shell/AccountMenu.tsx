@@ -18,7 +18,7 @@ export function AccountMenu({ user }: { user: ShellUser }) {
         className="rounded-sheet hover:bg-ink/8 data-popup-open:bg-ink/8 flex min-h-11 items-center gap-2 px-2.5 font-semibold"
       >
         <CircleUserRound aria-hidden className="size-5" />
-        <span className="hidden max-w-40 truncate lg:inline">{user.name}</span>
+        <span className="hidden max-w-40 truncate xl:inline">{user.name}</span>
       </Menu.Trigger>
       <Menu.Portal>
         <Menu.Positioner sideOffset={6} align="end" className="z-50">

@@ -27,6 +27,12 @@ const VISITOR_NAV: readonly NavItem[] = [
   { href: "/#before", label: "Before you accept" },
 ];
 
+// A narrow header has no room for these two as buttons, so the drawer lists them as well.
+const VISITOR_DOORS: readonly NavItem[] = [
+  { href: "/sign-in", label: "Sign in" },
+  { href: "/join", label: "Join" },
+];
+
 /** Header, places, page and footer around every screen. */
 export function AppShell({ user, nav, width = "page", footer = true, children }: Props) {
   const items = nav ?? (user ? navFor(user.role) : VISITOR_NAV);
@@ -40,10 +46,14 @@ export function AppShell({ user, nav, width = "page", footer = true, children }:
       </a>
       <header className="bg-paper border-line sticky top-0 z-30 border-b print:hidden">
         <div className="max-w-page mx-auto flex h-16 items-center gap-3 px-4 sm:px-6 lg:px-8">
-          <Link href={user ? homeOf(user.role) : "/"} aria-label="Merestone, start" className="me-4 shrink-0">
+          <Link
+            href={user ? homeOf(user.role) : "/"}
+            aria-label="Merestone, start"
+            className="shrink-0 min-[24rem]:me-4"
+          >
             <Wordmark />
           </Link>
-          <nav aria-label="Main" className="hidden md:block">
+          <nav aria-label="Main" className="hidden lg:block">
             <NavLinks items={items} direction="row" />
           </nav>
           <div className="ms-auto flex items-center gap-1">
@@ -52,7 +62,7 @@ export function AppShell({ user, nav, width = "page", footer = true, children }:
               <AccountMenu user={user} />
             ) : (
               <>
-                <ButtonLink href="/sign-in" kind="plain" size="small">
+                <ButtonLink href="/sign-in" kind="plain" size="small" className="max-[24rem]:hidden">
                   Sign in
                 </ButtonLink>
                 <ButtonLink href="/join" kind="primary" size="small" className="hidden sm:inline-flex">
@@ -60,7 +70,7 @@ export function AppShell({ user, nav, width = "page", footer = true, children }:
                 </ButtonLink>
               </>
             )}
-            <MobileNav items={user ? items : [...items, { href: "/join", label: "Join" }]} />
+            <MobileNav items={user ? items : [...items, ...VISITOR_DOORS]} />
           </div>
         </div>
       </header>

@@ -19,7 +19,9 @@ export function Wordmark() {
   return (
     <span className="inline-flex items-center gap-2">
       <MerestoneMark className="size-8" />
-      <span className="font-heading text-[1.35rem] leading-none font-semibold tracking-tight">Merestone</span>
+      <span className="font-heading text-[1.35rem] leading-none font-semibold tracking-tight max-[22rem]:sr-only">
+        Merestone
+      </span>
     </span>
   );
 }

@@ -21,7 +21,7 @@ export function MobileNav({ items }: { items: readonly NavItem[] }) {
     >
       <Dialog.Trigger
         aria-label="Menu"
-        className="rounded-sheet hover:bg-ink/8 grid size-11 place-items-center md:hidden"
+        className="rounded-sheet hover:bg-ink/8 grid size-11 place-items-center lg:hidden"
       >
         <Menu aria-hidden className="size-6" />
       </Dialog.Trigger>

@@ -36,7 +36,7 @@ export function Bars({ label, bars, max, className }: Props) {
           </span>
           <span aria-hidden className="border-rule h-3 border-s">
             <span
-              className={cn("block h-full", FILL[bar.state ?? "plain"])}
+              className={cn("block h-full forced-colors:bg-[CanvasText]", FILL[bar.state ?? "plain"])}
               style={{ width: `${full > 0 ? Math.min(1, Math.max(0, bar.value / full)) * 100 : 0}%` }}
             />
           </span>

@@ -29,7 +29,7 @@ export function Notice({ kind = "info", title, children, action, live = false, c
   return (
     <div
       {...(live ? { role: kind === "danger" ? "alert" : "status" } : { role: "note" })}
-      className={cn("flex items-start gap-3 px-4 py-3", box, className)}
+      className={cn("flex items-start gap-3 px-4 py-3 forced-colors:border", box, className)}
     >
       <Icon aria-hidden className="mt-0.5 size-5 shrink-0" />
       <div className="min-w-0 grow">

@@ -14,10 +14,10 @@ type Props = {
 };
 
 const BAR: Record<MarkState, string> = {
-  agreed: "bg-agreed",
-  waits: "bg-waits",
-  disputed: "bg-disputed",
-  plain: "bg-ink",
+  agreed: "bg-agreed forced-colors:bg-[Highlight]",
+  waits: "bg-waits forced-colors:bg-[Highlight]",
+  disputed: "bg-disputed forced-colors:bg-[Highlight]",
+  plain: "bg-ink forced-colors:bg-[Highlight]",
 };
 
 /** How far something has come that ends by itself. */

@@ -13,7 +13,7 @@ type Props = Omit<ComponentProps<"section">, "title"> & {
 export function Sheet({ title, actions, lead, level = 2, className, children, ...rest }: Props) {
   const Heading = level === 2 ? "h2" : "h3";
   return (
-    <section {...rest} className={cn("bg-sheet ticks p-5 sm:p-7", className)}>
+    <section {...rest} className={cn("bg-sheet ticks p-5 sm:p-7 forced-colors:border", className)}>
       {title ? (
         <div className="mb-4 flex flex-wrap items-start justify-between gap-x-6 gap-y-3">
           <div>

@@ -41,7 +41,7 @@ export function Switch({ label, hint, id, className, ...rest }: Props) {
           className={cn(
             "border-rule bg-sunk relative h-7 w-12 cursor-pointer appearance-none rounded-full border transition-colors",
             "before:bg-rule before:absolute before:top-1/2 before:left-1 before:size-4.5 before:-translate-y-1/2",
-            "before:rounded-[2px] before:transition-transform before:content-['']",
+            "before:rounded-[2px] before:transition-transform before:content-[''] forced-colors:before:bg-[ButtonText]",
             "checked:border-agreed checked:bg-agreed-soft checked:before:bg-agreed checked:before:translate-x-5",
             "disabled:cursor-not-allowed disabled:opacity-55",
           )}
