@@ -20,5 +20,4 @@ export type Rings = readonly Ring[];
 
 /** What a person draws or an engine finds: a box, or a region. */
 export type Shape =
-  | { readonly kind: "box"; readonly box: Box }
-  | { readonly kind: "polygon"; readonly rings: Rings };
+  { readonly kind: "box"; readonly box: Box } | { readonly kind: "polygon"; readonly rings: Rings };
