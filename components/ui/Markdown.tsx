@@ -34,7 +34,6 @@ export function Markdown({ children, headingFrom = 3, className }: Props) {
 const shared: Components = {
   a: ({ node: _node, ...rest }) => <a {...rest} rel="nofollow noopener noreferrer" target="_blank" />,
   // Examples of a brief come from S3 by short-lived addresses, which an image optimiser could not cache.
-  // eslint-disable-next-line @next/next/no-img-element
   img: ({ node: _node, alt, ...rest }) => <img {...rest} alt={alt ?? ""} loading="lazy" />,
 };
 

@@ -12,17 +12,17 @@ type Props = {
 };
 
 const MINUTE_MS = 60_000;
+const TICK_MS = 15_000;
 
 /**
  * A moment, stored in UTC and shown in the reader's own zone. The server does not know the zone, so its page says
  * UTC; the browser rewrites it. `relative` is kept current and gives the full moment as its tooltip.
  */
 export function When({ at, form = "dateTime", className }: Props) {
-  // The clock ticks once a minute for all: the snapshot is the minute, so that only a new minute repaints.
-  const minute = useSyncExternalStore(subscribeToMinutes, currentMinute, unknownMinute);
+  const tickMs = useSyncExternalStore(subscribeToTicks, currentTick, unknownTick);
   const instant = new Date(at);
   if (Number.isNaN(instant.getTime())) return <span className={className}>unknown</span>;
-  const isLocal = minute !== undefined;
+  const isLocal = tickMs !== undefined;
   return (
     <time
       dateTime={instant.toISOString()}
@@ -30,19 +30,20 @@ export function When({ at, form = "dateTime", className }: Props) {
       className={className}
     >
       {isLocal && form === "relative"
-        ? relativeText(instant.getTime() - Date.now())
+        ? relativeText(instant.getTime() - tickMs)
         : formatInstant(instant, form === "relative" ? "dateTime" : form, isLocal)}
     </time>
   );
 }
 
-function subscribeToMinutes(onChange: () => void): () => void {
-  const timer = setInterval(onChange, MINUTE_MS / 4);
+function subscribeToTicks(onChange: () => void): () => void {
+  const timer = setInterval(onChange, TICK_MS);
   return () => clearInterval(timer);
 }
 
-const currentMinute = (): number | undefined => Math.floor(Date.now() / MINUTE_MS);
-const unknownMinute = (): number | undefined => undefined;
+// The time is read in steps, so that a render is repeatable within one and only a new one repaints.
+const currentTick = (): number | undefined => Math.floor(Date.now() / TICK_MS) * TICK_MS;
+const unknownTick = (): number | undefined => undefined;
 
 const PARTS: Record<Exclude<WhenForm, "relative">, Intl.DateTimeFormatOptions> = {
   date: { day: "numeric", month: "short", year: "numeric" },
