@@ -27,8 +27,7 @@ async function main(): Promise<void> {
   }
   await runToEnd("node", ["--import", "tsx", "lib/cli/migrate.ts"], stackEnv(plan));
   parts.push(startWorker(plan));
-  process.env.NODE_ENV = "development" as typeof process.env.NODE_ENV;
-  parts.push(startPart("web", ["node_modules/next/dist/bin/next", "dev", "-H", "127.0.0.1", "-p", String(plan.webPort)], plan));
+  parts.push(startPart("web", ["node_modules/next/dist/bin/next", "dev", "-H", "127.0.0.1", "-p", String(plan.webPort)], plan, { NODE_ENV: "development" }));
   console.log(`http://127.0.0.1:${plan.webPort} (logs in ${path.join(plan.folder, "logs")})`);
 }
 

@@ -89,10 +89,10 @@ export async function runToEnd(command: string, args: string[], environment: Nod
 export type Part = { name: string; process: ChildProcess };
 
 /** Starts a TypeScript entry as a child of its own, its output in `folder`/logs/`name`.log. */
-export function startPart(name: string, args: string[], plan: StackPlan): Part {
+export function startPart(name: string, args: string[], plan: StackPlan, extra: Partial<NodeJS.ProcessEnv> = {}): Part {
   const logs = path.join(plan.folder, "logs");
   mkdirSync(logs, { recursive: true });
-  const child = spawn("node", args, { cwd: ROOT, env: stackEnv(plan), stdio: ["ignore", "pipe", "pipe"] });
+  const child = spawn("node", args, { cwd: ROOT, env: { ...stackEnv(plan), ...extra }, stdio: ["ignore", "pipe", "pipe"] });
   const file = path.join(logs, `${name}.log`);
   writeFileSync(file, "", { flag: "a" });
   const append = (chunk: Buffer) => writeFileSync(file, chunk, { flag: "a" });

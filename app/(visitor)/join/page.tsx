@@ -5,14 +5,14 @@ import { JoinForm } from "./_components/JoinForm";
 
 export const metadata: Metadata = { title: "Join" };
 
-type Props = { searchParams: Promise<{ as?: string }> };
+type Props = { searchParams: Promise<{ role?: string }> };
 
 export default async function JoinPage({ searchParams }: Props) {
-  const { as } = await searchParams;
+  const { role } = await searchParams;
   return (
     <>
       <PageHeader title="Join Merestone" lead="An account is free. You confirm your e-mail, and that is all." />
-      <JoinForm role={as === "annotator" || as === "requester" ? as : null} />
+      <JoinForm role={role === "annotator" || role === "requester" ? role : null} />
       <p className="text-muted">
         You have an account?{" "}
         <Link href="/sign-in" className="link">

@@ -53,7 +53,7 @@ export function settleImage({ imageId, nowMs }: { imageId: string; nowMs: number
   const settings = settingsOf(batch, key);
   const startMs = performance.now();
   const history = listReliabilityLabels(db, batch.id, RELIABILITY_IMAGES_MAX);
-  const reliability = history.length > 0 ? estimateReliability(history, settings) : undefined;
+  const reliability = history.length > 0 ? estimateReliability(history, { settings }) : undefined;
   const result = mergeImage(labelsOf(image, list), settings, reliability);
   const millis = Math.round(performance.now() - startMs);
   inTransaction(db, (tx) => {

@@ -39,7 +39,7 @@ export function imageForDesk(imageId: string, briefVersion?: number): Omit<DeskT
     proposals: (findProposals(db, imageId)?.proposals ?? []).map((proposal) => ({
       id: proposal.id,
       classId: proposal.classId,
-      shape: proposal.rings.length > 0 ? { kind: "polygon", rings: proposal.rings.map((ring) => ring.map(([x, y]): [number, number] => [x, y])) } : { kind: "box", box: [...proposal.box] },
+      shape: proposal.rings.length > 0 ? { kind: "polygon", rings: proposal.rings } : { kind: "box", box: proposal.box },
       score: proposal.score,
     })),
     brief: {

@@ -74,8 +74,8 @@ export function PayStep({ batch, initial, imageCount, polygonShare }: Props) {
         {batch.isDraft ? null : <Notice>Quality and pay are fixed since the batch was funded.</Notice>}
         <Sheet title="Quality" lead="Each picture is drawn by several people. It is settled when they agree enough; if not, one more is asked, up to the most. If they still differ, an admin decides.">
           <div className="grid gap-5 sm:grid-cols-2">
-            <NumberInput label="Fewest annotators a picture" min={2} max={9} value={settings.kMin} disabled={!batch.isDraft} error={problem?.fields.kMin} onChange={(event) => set({ kMin: Number(event.currentTarget.value) })} />
-            <NumberInput label="Most annotators a picture" min={2} max={9} value={settings.kMax} disabled={!batch.isDraft} error={problem?.fields.kMax ?? (settings.kMax < settings.kMin ? "Not below the fewest." : undefined)} onChange={(event) => set({ kMax: Number(event.currentTarget.value) })} />
+            <NumberInput label="Fewest annotators a picture" min={2} max={9} defaultValue={initial.kMin} disabled={!batch.isDraft} error={problem?.fields.kMin} onNumberChange={(value) => value !== undefined && set({ kMin: value })} />
+            <NumberInput label="Most annotators a picture" min={2} max={9} defaultValue={initial.kMax} disabled={!batch.isDraft} error={problem?.fields.kMax ?? (settings.kMax < settings.kMin ? "Not below the fewest." : undefined)} onNumberChange={(value) => value !== undefined && set({ kMax: value })} />
             <div className="sm:col-span-2">
               <label htmlFor="target" className="text-[0.95rem] font-semibold">
                 Agreement target: <span className="font-figures">{Math.round(settings.agreementTarget * 100)} %</span>
@@ -93,7 +93,7 @@ export function PayStep({ batch, initial, imageCount, polygonShare }: Props) {
             <MoneyInput label="Cap a picture" defaultCents={settings.capCents} minCents={1} maxCents={100_000} disabled={!batch.isDraft} error={problem?.fields.capCents ?? (settings.capCents < settings.baseCents ? "Not below the base." : undefined)} onCentsChange={cents("capCents")} />
             <MoneyInput label="Each agreed box" defaultCents={settings.boxCents} minCents={0} maxCents={10_000} disabled={!batch.isDraft} onCentsChange={cents("boxCents")} />
             <MoneyInput label="Each agreed outline" defaultCents={settings.polygonCents} minCents={0} maxCents={10_000} disabled={!batch.isDraft} onCentsChange={cents("polygonCents")} />
-            <NumberInput label="Objects a picture, your guess" hint="For the expected cost only; the worst case does not depend on it." min={0.1} max={500} step={0.5} value={settings.expectedInstances} disabled={!batch.isDraft} onChange={(event) => set({ expectedInstances: Number(event.currentTarget.value) })} />
+            <NumberInput label="Objects a picture, your guess" hint="For the expected cost only; the worst case does not depend on it." min={0.1} max={500} step={0.5} defaultValue={initial.expectedInstances} disabled={!batch.isDraft} onNumberChange={(value) => value !== undefined && set({ expectedInstances: value })} />
             <MoneyInput label="Floor an hour" hint="Below this measured pay the product warns you and annotators." defaultCents={settings.floorHourlyCents} minCents={0} maxCents={20_000} disabled={!batch.isDraft} onCentsChange={cents("floorHourlyCents")} />
           </div>
           {hourlyCents < settings.floorHourlyCents ? (

@@ -1,0 +1,17 @@
+"use server";
+
+import { revalidatePath } from "next/cache";
+import { z } from "zod";
+import { nowMs } from "@/lib/clock";
+import { action } from "@/lib/http/action";
+import { requestPayout, startOnboarding } from "@/lib/market/money/payouts";
+
+/** The address of the onboarding, made fresh: it works once. */
+export const onboard = action({ role: "annotator", input: z.object({}) }, ({ actor }) => startOnboarding({ actor, nowMs: nowMs() }));
+
+/** Asks for everything that is payable. */
+export const payOut = action({ role: "annotator", input: z.object({}) }, ({ actor }) => {
+  const payout = requestPayout({ actor, nowMs: nowMs() });
+  revalidatePath("/earnings");
+  return payout;
+});
