@@ -123,7 +123,7 @@ let state = new Uint8Array(0);
 let order = new Int32Array(0);
 let orderAbove = new Int32Array(0);
 let rank = new Int32Array(0);
-let crossings: Crossing[] = [];
+const crossings: Crossing[] = [];
 
 type Crossing = { readonly edge: number; readonly t: number; readonly owner: number };
 
