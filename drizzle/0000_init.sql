@@ -235,6 +235,7 @@ CREATE TABLE `disputes` (
 	`batch_id` text NOT NULL,
 	`image_id` text NOT NULL,
 	`submission_id` text,
+	`subject` text NOT NULL,
 	`kind` text NOT NULL,
 	`opened_by` text,
 	`reason` text NOT NULL,
@@ -257,7 +258,7 @@ CREATE TABLE `disputes` (
 --> statement-breakpoint
 CREATE INDEX `disputes_docket` ON `disputes` (`status`,`due_at_ms`);--> statement-breakpoint
 CREATE INDEX `disputes_image` ON `disputes` (`image_id`);--> statement-breakpoint
-CREATE UNIQUE INDEX `disputes_one_open` ON `disputes` (`image_id`,`coalesce(submission_id`,` '')`) WHERE status = 'open';--> statement-breakpoint
+CREATE UNIQUE INDEX `disputes_one_open` ON `disputes` (`subject`) WHERE status = 'open';--> statement-breakpoint
 CREATE TABLE `drafts` (
 	`claim_id` text PRIMARY KEY NOT NULL,
 	`version` integer NOT NULL,

@@ -98,6 +98,8 @@ export const disputes = sqliteTable(
     imageId: text("image_id").notNull().references(() => images.id),
     /** The contested submission; null when the whole image is contested. */
     submissionId: text("submission_id").references(() => submissions.id),
+    /** What is contested: the submission's id, else the image's. At most one open dispute a subject. */
+    subject: text("subject").notNull(),
     kind: text("kind", { enum: ["score", "image", "split"] }).notNull(),
     openedBy: text("opened_by").references(() => users.id), // null: by itself
     reason: text("reason").notNull(),
@@ -117,6 +119,6 @@ export const disputes = sqliteTable(
   (t) => [
     index("disputes_docket").on(t.status, t.dueAtMs),
     index("disputes_image").on(t.imageId),
-    uniqueIndex("disputes_one_open").on(t.imageId, sql`coalesce(submission_id, '')`).where(sql`status = 'open'`),
+    uniqueIndex("disputes_one_open").on(t.subject).where(sql`status = 'open'`),
   ],
 );

@@ -1,4 +1,4 @@
-import { and, eq, isNotNull, sql } from "drizzle-orm";
+import { and, eq, isNotNull } from "drizzle-orm";
 import { getDb, inTransaction, type Tx } from "@/db/client";
 import { findBatch, findImage, type BatchRow, type ImageRow } from "@/db/queries/batches";
 import { findRun, findSubmission, listSubmissionsOf, type SubmissionRow } from "@/db/queries/work";
@@ -45,7 +45,8 @@ type New = {
 function insertDispute(tx: Tx, { batch, image, kind, runId, submissionId, openedBy, reason, nowMs }: New): string {
   const all = listSubmissionsOf(tx, image.id);
   const touched = submissionId ? all.filter((submission) => submission.id === submissionId) : all;
-  const open = tx.select({ id: disputes.id }).from(disputes).where(and(eq(disputes.imageId, image.id), eq(disputes.status, "open"), sql`coalesce(${disputes.submissionId}, '') = ${submissionId ?? ""}`)).get();
+  const subject = submissionId ?? image.id;
+  const open = tx.select({ id: disputes.id }).from(disputes).where(and(eq(disputes.subject, subject), eq(disputes.status, "open"))).get();
   if (open) throw new AppError("conflict", "This is on the docket already.");
   const id = newId("dsp");
   tx.insert(disputes)
@@ -54,6 +55,7 @@ function insertDispute(tx: Tx, { batch, image, kind, runId, submissionId, opened
       batchId: batch.id,
       imageId: image.id,
       submissionId,
+      subject,
       kind,
       openedBy,
       reason,
