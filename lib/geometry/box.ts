@@ -56,14 +56,29 @@ export function boxFromPoints(points: Iterable<Point>): Box {
   return left <= right && top <= bottom ? [left, top, right - left, bottom - top] : [0, 0, 0, 0];
 }
 
-/** The smallest box around a ring. */
+/** The smallest box around a ring; [0, 0, 0, 0] for none. */
 export function boxOfRing(ring: Ring): Box {
   return boxFromPoints(ring);
 }
 
 /** The smallest box around all rings; [0, 0, 0, 0] for none. */
 export function boxOfRings(rings: Rings): Box {
-  return boxFromPoints(rings.length === 1 ? (rings[0] ?? []) : rings.flat());
+  let left = Infinity;
+  let top = Infinity;
+  let right = -Infinity;
+  let bottom = -Infinity;
+  for (const ring of rings) {
+    for (let i = 0; i < ring.length; i++) {
+      const point = ring[i]!;
+      const x = point[0];
+      const y = point[1];
+      if (x < left) left = x;
+      if (x > right) right = x;
+      if (y < top) top = y;
+      if (y > bottom) bottom = y;
+    }
+  }
+  return left <= right && top <= bottom ? [left, top, right - left, bottom - top] : [0, 0, 0, 0];
 }
 
 /** The smallest box around a shape; a box is its own. */

@@ -3,17 +3,18 @@ import type { Box, Rings, Shape } from "./types";
 
 /**
  * Rings made ready for many comparisons under the even-odd rule: their edges that are not horizontal, ordered
- * from top to bottom, the heights of all vertices, the bounds and the area. Immutable; make one per
+ * from top to bottom, the bounds and the area. Immutable; make one per
  * shape and keep it.
  */
 export type Region = {
   readonly box: Box;
+  /** The largest x and y of any vertex: box[0] + box[2] may miss them by rounding. */
+  readonly right: number;
+  readonly bottom: number;
   readonly areaPx2: number;
   readonly edgeCount: number;
   /** Five numbers an edge: y of the upper end, y of the lower end, x of the upper end, x of the lower end, dx/dy. */
   readonly edges: Float64Array;
-  /** Heights of the edges' ends, ascending, without repetition. */
-  readonly levels: Float64Array;
 };
 
 const TOP = 0;
@@ -31,9 +32,14 @@ const IN_BOTH = 3;
 /** Makes rings ready to be compared. Rings of fewer than three vertices add nothing. O(n log n). */
 export function prepareRings(rings: Rings): Region {
   const { edges, edgeCount } = sortedEdges(rings);
-  const levels = distinctLevels(edges, edgeCount);
-  const region = { box: boxOfRings(rings), areaPx2: 0, edgeCount, edges, levels };
-  return { ...region, areaPx2: Math.max(0, sweep(region, undefined, undefined)) };
+  let right = -Infinity;
+  let bottom = -Infinity;
+  for (let at = 0; at < edgeCount * STRIDE; at += STRIDE) {
+    right = Math.max(right, edges[at + X_TOP]!, edges[at + X_BOTTOM]!);
+    bottom = Math.max(bottom, edges[at + BOTTOM]!);
+  }
+  const bare = { box: boxOfRings(rings), right, bottom, areaPx2: 0, edgeCount, edges };
+  return { ...bare, areaPx2: Math.max(0, sweep(bare, undefined, undefined)) };
 }
 
 /** Makes a shape ready to be compared. */
@@ -45,9 +51,9 @@ export function prepareShape(shape: Shape): Region {
 export function regionIntersectionArea(a: Region, b: Region): number {
   if (a.edgeCount === 0 || b.edgeCount === 0) return 0;
   const left = Math.max(a.box[0], b.box[0]);
-  const right = Math.min(a.box[0] + a.box[2], b.box[0] + b.box[2]);
+  const right = Math.min(a.right, b.right);
   const top = Math.max(a.box[1], b.box[1]);
-  const bottom = Math.min(a.box[1] + a.box[3], b.box[1] + b.box[3]);
+  const bottom = Math.min(a.bottom, b.bottom);
   if (left >= right || top >= bottom) return 0;
   return Math.min(Math.max(0, sweep(a, b, undefined)), a.areaPx2, b.areaPx2);
 }
@@ -117,31 +123,48 @@ let edgeSlope = new Float64Array(0);
 let edgeBottom = new Float64Array(0);
 let edgeXBottom = new Float64Array(0);
 let edgeOwner = new Uint8Array(0);
-let upperX = new Float64Array(0);
-let lowerX = new Float64Array(0);
-let state = new Uint8Array(0);
-let order = new Int32Array(0);
+let xAtTop = new Float64Array(0);
+let xAtBottom = new Float64Array(0);
+let orderNow = new Int32Array(0);
+let orderNext = new Int32Array(0);
 let orderAbove = new Int32Array(0);
-let rank = new Int32Array(0);
-const crossings: Crossing[] = [];
+let stateLeft = new Uint8Array(0);
+let firstCrossing = new Int32Array(0);
 
-type Crossing = { readonly edge: number; readonly t: number; readonly owner: number };
+// Crossings of one slab: for each edge a list in order of t, linked by number.
+let crossingCapacity = 0;
+let crossingT = new Float64Array(0);
+let crossingOwner = new Uint8Array(0);
+let crossingNext = new Int32Array(0);
 
-function reserve(edges: number): void {
-  if (edges <= capacity) return;
-  capacity = Math.max(256, 2 * edges);
+function reserveEdges(count: number): void {
+  if (count <= capacity) return;
+  capacity = Math.max(256, 2 * count);
   edgeX = new Float64Array(capacity);
   edgeTop = new Float64Array(capacity);
   edgeSlope = new Float64Array(capacity);
   edgeBottom = new Float64Array(capacity);
   edgeXBottom = new Float64Array(capacity);
   edgeOwner = new Uint8Array(capacity);
-  upperX = new Float64Array(capacity);
-  lowerX = new Float64Array(capacity);
-  state = new Uint8Array(capacity);
-  order = new Int32Array(capacity);
+  xAtTop = new Float64Array(capacity);
+  xAtBottom = new Float64Array(capacity);
+  orderNow = new Int32Array(capacity);
+  orderNext = new Int32Array(capacity);
   orderAbove = new Int32Array(capacity);
-  rank = new Int32Array(capacity);
+  stateLeft = new Uint8Array(capacity);
+  firstCrossing = new Int32Array(capacity);
+}
+
+function reserveCrossings(count: number): void {
+  if (count <= crossingCapacity) return;
+  const [t, owner, next] = [crossingT, crossingOwner, crossingNext];
+  crossingCapacity = Math.max(256, 2 * count);
+  crossingT = new Float64Array(crossingCapacity);
+  crossingOwner = new Uint8Array(crossingCapacity);
+  crossingNext = new Int32Array(crossingCapacity);
+  crossingT.set(t);
+  crossingOwner.set(owner);
+  crossingNext.set(next);
 }
 
 /**
@@ -153,172 +176,203 @@ function reserve(edges: number): void {
  */
 function sweep(a: Region, b: Region | undefined, sink: Sink | undefined): number {
   const aEdges = a.edges;
-  const aLevels = a.levels;
   const bEdges = b === undefined ? aEdges : b.edges;
-  const bLevels = b === undefined ? aLevels : b.levels;
-  const aCount = a.edgeCount;
-  const bCount = b === undefined ? 0 : b.edgeCount;
-  if (aCount === 0 || (b !== undefined && bCount === 0)) return 0;
+  const aEnd = a.edgeCount * STRIDE;
+  const bEnd = b === undefined ? 0 : b.edgeCount * STRIDE;
+  if (aEnd === 0 || (b !== undefined && bEnd === 0)) return 0;
   const aOwner = b === undefined ? IN_BOTH : IN_A;
-  reserve(aCount + bCount);
-  // The same for (a, b) and (b, a), so that the result is symmetric to the bit.
-  const originX = b === undefined ? a.box[0] : Math.max(a.box[0], b.box[0]);
-  const first = Math.max(aLevels[0]!, bLevels[0]!);
-  const last = Math.min(aLevels[aLevels.length - 1]!, bLevels[bLevels.length - 1]!);
+  reserveEdges(a.edgeCount + (b === undefined ? 0 : b.edgeCount));
+  const left = a.box[0];
+  const top = aEdges[0]!;
+  // x is taken from an origin that is the same for (a, b) and (b, a), so that the result is symmetric to the bit.
+  const originX = b === undefined ? left : Math.max(left, b.box[0]);
+  // Edges beyond the right end of either region bound nothing that lies in both.
+  const rightEnd = b === undefined ? Infinity : Math.min(a.right, b.right);
+  const last = b === undefined ? Infinity : Math.min(a.bottom, b.bottom);
+  const startX = edgeX;
+  const startY = edgeTop;
+  const slopes = edgeSlope;
+  const ends = edgeBottom;
+  const endX = edgeXBottom;
+  const owners = edgeOwner;
+  let upper = xAtTop;
+  let lower = xAtBottom;
+  let order = orderNow;
+  let following = orderNext;
   let nextA = 0;
   let nextB = 0;
-  let levelA = 0;
-  let levelB = 0;
   let used = 0;
   let active = 0;
   let area = 0;
-  let y = first;
+  let y = b === undefined ? top : Math.max(top, bEdges[0]!);
+  let soonestEnd = Infinity;
   while (y < last) {
-    while (nextA < aCount && aEdges[nextA * STRIDE]! <= y) {
-      const at = nextA++ * STRIDE;
-      if (aEdges[at + BOTTOM]! > y) active = enter(aEdges, at, aOwner, y, originX, used++, active);
+    // Edges that begin here enter in order of x and then of slope.
+    for (;;) {
+      const isA = nextA < aEnd && aEdges[nextA]! <= y;
+      if (!isA && !(nextB < bEnd && bEdges[nextB]! <= y)) break;
+      const source = isA ? aEdges : bEdges;
+      const at = isA ? nextA : nextB;
+      if (isA) nextA += STRIDE;
+      else nextB += STRIDE;
+      const end = source[at + BOTTOM]!;
+      const fromX = source[at + X_TOP]!;
+      const toX = source[at + X_BOTTOM]!;
+      if (end <= y || (fromX > rightEnd && toX > rightEnd)) continue;
+      const edge = used++;
+      const slope = source[at + SLOPE]!;
+      const edgeStart = source[at]!;
+      const x = fromX - originX + (y - edgeStart) * slope;
+      startX[edge] = fromX - originX;
+      startY[edge] = edgeStart;
+      slopes[edge] = slope;
+      ends[edge] = end;
+      endX[edge] = toX - originX;
+      owners[edge] = isA ? aOwner : IN_B;
+      upper[edge] = x;
+      if (end < soonestEnd) soonestEnd = end;
+      let place = active++;
+      while (place > 0) {
+        const other = order[place - 1]!;
+        const otherX = upper[other]!;
+        if (otherX < x || (otherX === x && slopes[other]! <= slope)) break;
+        order[place--] = other;
+      }
+      order[place] = edge;
     }
-    while (nextB < bCount && bEdges[nextB * STRIDE]! <= y) {
-      const at = nextB++ * STRIDE;
-      if (bEdges[at + BOTTOM]! > y) active = enter(bEdges, at, IN_B, y, originX, used++, active);
-    }
-    while (aLevels[levelA]! <= y) levelA++;
-    while (bLevels[levelB]! <= y) levelB++;
-    const next = Math.min(aLevels[levelA]!, bLevels[levelB]!);
+    let next = soonestEnd;
+    if (nextA < aEnd && aEdges[nextA]! < next) next = aEdges[nextA]!;
+    if (nextB < bEnd && bEdges[nextB]! < next) next = bEdges[nextB]!;
+    if (next > last) next = last;
+    if (next === Infinity) break;
 
-    // x at the lower side of the slab, and whether the order still holds there.
+    // One pass finds x at the lower side, the area if no edges cross, and who goes on into the next slab.
     let previous = -Infinity;
-    let ordered = true;
+    let ordered = sink === undefined;
+    let inside = 0;
+    let sum = 0;
+    let kept = 0;
+    soonestEnd = Infinity;
     for (let i = 0; i < active; i++) {
       const edge = order[i]!;
-      const x =
-        edgeBottom[edge]! === next
-          ? edgeXBottom[edge]!
-          : edgeX[edge]! + (next - edgeTop[edge]!) * edgeSlope[edge]!;
-      lowerX[edge] = x;
+      const end = ends[edge]!;
+      let x: number;
+      if (end > next) {
+        x = startX[edge]! + (next - startY[edge]!) * slopes[edge]!;
+        following[kept++] = edge;
+        if (end < soonestEnd) soonestEnd = end;
+      } else x = endX[edge]!;
+      lower[edge] = x;
       if (x < previous) ordered = false;
       previous = x;
+      const after = inside ^ owners[edge]!;
+      if (inside === IN_BOTH) sum += upper[edge]! + x;
+      else if (after === IN_BOTH) sum -= upper[edge]! + x;
+      inside = after;
     }
-
-    if (ordered && sink === undefined) {
-      let inside = 0;
-      let sum = 0;
+    if (ordered) {
+      area += sum * (next - y);
+      const swap = order;
+      order = following;
+      following = swap;
+    } else {
+      area += crossedSlab(order, active, upper, lower, y, next, sink);
+      kept = 0;
       for (let i = 0; i < active; i++) {
         const edge = order[i]!;
-        const after = inside ^ edgeOwner[edge]!;
-        if (inside === IN_BOTH) sum += upperX[edge]! + lowerX[edge]!;
-        else if (after === IN_BOTH) sum -= upperX[edge]! + lowerX[edge]!;
-        inside = after;
-      }
-      area += sum * (next - y);
-    } else {
-      area += crossedSlab(active, y, next, sink);
-    }
-
-    // Edges that end here leave; the others keep their order and enter the next slab where they left this one.
-    let kept = 0;
-    for (let i = 0; i < active; i++) {
-      const edge = order[i]!;
-      if (edgeBottom[edge]! > next) {
-        upperX[edge] = lowerX[edge]!;
-        order[kept++] = edge;
+        if (ends[edge]! > next) order[kept++] = edge;
       }
     }
     active = kept;
+    const swap = upper;
+    upper = lower;
+    lower = swap;
     y = next;
   }
   return area / 2;
 }
 
-/** Puts an edge into the active list at height y, in order of x and then of slope. */
-function enter(
-  edges: Float64Array,
-  at: number,
-  owner: number,
-  y: number,
-  originX: number,
-  edge: number,
-  active: number,
-): number {
-  const top = edges[at + TOP]!;
-  const slope = edges[at + SLOPE]!;
-  const startX = edges[at + X_TOP]! - originX;
-  const x = top === y ? startX : startX + (y - top) * slope;
-  edgeX[edge] = startX;
-  edgeTop[edge] = top;
-  edgeSlope[edge] = slope;
-  edgeBottom[edge] = edges[at + BOTTOM]!;
-  edgeXBottom[edge] = edges[at + X_BOTTOM]! - originX;
-  edgeOwner[edge] = owner;
-  upperX[edge] = x;
-  let place = active;
-  while (place > 0) {
-    const left = order[place - 1]!;
-    const leftX = upperX[left]!;
-    if (leftX < x || (leftX === x && edgeSlope[left]! <= slope)) break;
-    order[place] = left;
-    place--;
-  }
-  order[place] = edge;
-  return active + 1;
-}
-
 /** Twice the common area of a slab in which edges may cross; leaves `order` as it is at the lower side. */
-function crossedSlab(active: number, y: number, next: number, sink: Sink | undefined): number {
+function crossedSlab(
+  order: Int32Array,
+  active: number,
+  upper: Float64Array,
+  lower: Float64Array,
+  y: number,
+  next: number,
+  sink: Sink | undefined,
+): number {
+  const owners = edgeOwner;
+  const states = stateLeft;
+  const above = orderAbove;
+  const first = firstCrossing;
   let inside = 0;
   for (let i = 0; i < active; i++) {
     const edge = order[i]!;
-    orderAbove[i] = edge;
-    rank[edge] = i;
-    state[edge] = inside;
-    inside ^= edgeOwner[edge]!;
+    above[i] = edge;
+    first[edge] = -1;
+    states[edge] = inside;
+    inside ^= owners[edge]!;
   }
   // Insertion sort by the lower x meets every pair that crosses exactly once.
-  crossings.length = 0;
+  let count = 0;
   for (let i = 1; i < active; i++) {
     const right = order[i]!;
-    const x = lowerX[right]!;
+    const x = lower[right]!;
     let place = i;
-    while (place > 0 && lowerX[order[place - 1]!]! > x) {
+    while (place > 0) {
       const left = order[place - 1]!;
-      const above = Math.max(0, upperX[right]! - upperX[left]!);
-      const t = above / (above + (lowerX[left]! - x));
-      crossings.push(
-        { edge: left, t, owner: edgeOwner[right]! },
-        { edge: right, t, owner: edgeOwner[left]! },
-      );
-      order[place] = left;
-      place--;
+      const beyond = lower[left]! - x;
+      if (!(beyond > 0)) break;
+      const gap = upper[right]! - upper[left]!;
+      const t = gap > 0 ? gap / (gap + beyond) : 0;
+      if (count + 2 > crossingCapacity) reserveCrossings(count + 2);
+      addCrossing(left, count++, t, owners[right]!);
+      addCrossing(right, count++, t, owners[left]!);
+      order[place--] = left;
     }
     order[place] = right;
   }
-  crossings.sort((p, q) => rank[p.edge]! - rank[q.edge]! || p.t - q.t);
-  let sum = 0;
-  let cut = 0;
   const height = next - y;
+  let sum = 0;
   for (let i = 0; i < active; i++) {
-    const edge = orderAbove[i]!;
-    const top = upperX[edge]!;
-    const run = lowerX[edge]! - top;
-    const owner = edgeOwner[edge]!;
-    let left = state[edge]!;
+    const edge = above[i]!;
+    const top = upper[edge]!;
+    const run = lower[edge]! - top;
+    const owner = owners[edge]!;
+    let left = states[edge]!;
     let from = 0;
+    let crossing = first[edge]!;
     for (;;) {
-      const crossing = cut < crossings.length ? crossings[cut]! : undefined;
-      const isOwn = crossing !== undefined && crossing.edge === edge;
-      const to = isOwn ? crossing.t : 1;
-      const sign = Number(left === IN_BOTH) - Number((left ^ owner) === IN_BOTH);
-      if (sign !== 0 && to > from) {
+      const to = crossing < 0 ? 1 : crossingT[crossing]!;
+      const after = left ^ owner;
+      if (to > from && (left === IN_BOTH || after === IN_BOTH)) {
+        const sign = left === IN_BOTH ? 1 : -1;
         sum += sign * (to - from) * (2 * top + run * (from + to));
         sink?.(top + run * from, y + height * from, top + run * to, y + height * to, sign);
       }
-      if (!isOwn) break;
-      left ^= crossing.owner;
+      if (crossing < 0) break;
+      left ^= crossingOwner[crossing]!;
       from = to;
-      cut++;
+      crossing = crossingNext[crossing]!;
     }
   }
   return sum * height;
+}
+
+/** Adds a crossing to an edge's list, which stays in order of t. */
+function addCrossing(edge: number, crossing: number, t: number, owner: number): void {
+  crossingT[crossing] = t;
+  crossingOwner[crossing] = owner;
+  let before = -1;
+  let after = firstCrossing[edge]!;
+  while (after >= 0 && crossingT[after]! < t) {
+    before = after;
+    after = crossingNext[after]!;
+  }
+  crossingNext[crossing] = after;
+  if (before < 0) firstCrossing[edge] = crossing;
+  else crossingNext[before] = crossing;
 }
 
 function sameEdges(a: Region, b: Region): boolean {
@@ -331,74 +385,89 @@ function sortedEdges(rings: Rings): { edges: Float64Array; edgeCount: number } {
   let most = 0;
   for (const ring of rings) most += ring.length;
   const edges = new Float64Array(most * STRIDE);
-  let edgeCount = 0;
+  let at = 0;
   for (const ring of rings) {
     if (ring.length < 3) continue;
-    let from = ring[ring.length - 1]!;
+    const end = ring[ring.length - 1]!;
+    let fromX = end[0];
+    let fromY = end[1];
     for (let i = 0; i < ring.length; i++) {
       const to = ring[i]!;
-      if (from[1] !== to[1]) {
-        const [upper, lower] = from[1] < to[1] ? [from, to] : [to, from];
-        const at = edgeCount++ * STRIDE;
-        edges[at + TOP] = upper[1];
-        edges[at + BOTTOM] = lower[1];
-        edges[at + X_TOP] = upper[0];
-        edges[at + X_BOTTOM] = lower[0];
-        edges[at + SLOPE] = (lower[0] - upper[0]) / (lower[1] - upper[1]);
+      const toX = to[0];
+      const toY = to[1];
+      if (fromY !== toY) {
+        const isDown = fromY < toY;
+        edges[at] = isDown ? fromY : toY;
+        edges[at + BOTTOM] = isDown ? toY : fromY;
+        edges[at + X_TOP] = isDown ? fromX : toX;
+        edges[at + X_BOTTOM] = isDown ? toX : fromX;
+        edges[at + SLOPE] = (toX - fromX) / (toY - fromY);
+        at += STRIDE;
       }
-      from = to;
+      fromX = toX;
+      fromY = toY;
     }
   }
+  const edgeCount = at / STRIDE;
   return { edges: sortEdges(edges, edgeCount), edgeCount };
 }
 
+let sortSource = new Int32Array(0);
+let sortTarget = new Int32Array(0);
+
 /** Merge sort by upper end (y, then x), then lower end; a total order, so equal outlines get equal arrays. */
 function sortEdges(edges: Float64Array, count: number): Float64Array {
-  let source = new Int32Array(count);
-  let target = new Int32Array(count);
-  for (let i = 0; i < count; i++) source[i] = i * STRIDE;
-  for (let width = 1; width < count; width *= 2) {
+  if (sortSource.length < count) {
+    sortSource = new Int32Array(2 * count);
+    sortTarget = new Int32Array(2 * count);
+  }
+  let source = sortSource;
+  let target = sortTarget;
+  // Runs of up to eight by insertion, then merged.
+  for (let start = 0; start < count; start += RUN) {
+    const end = Math.min(start + RUN, count);
+    for (let i = start; i < end; i++) {
+      const edge = i * STRIDE;
+      let place = i;
+      while (place > start && isAfter(edges, source[place - 1]!, edge)) {
+        source[place] = source[place - 1]!;
+        place--;
+      }
+      source[place] = edge;
+    }
+  }
+  for (let width = RUN; width < count; width *= 2) {
     for (let start = 0; start < count; start += 2 * width) {
       const middle = Math.min(start + width, count);
       const end = Math.min(start + 2 * width, count);
       let i = start;
       let j = middle;
       for (let k = start; k < end; k++) {
-        target[k] =
-          i < middle && (j >= end || compareEdges(edges, source[i]!, source[j]!) <= 0)
-            ? source[i++]!
-            : source[j++]!;
+        const takesLeft = i < middle && (j >= end || !isAfter(edges, source[i]!, source[j]!));
+        target[k] = takesLeft ? source[i++]! : source[j++]!;
       }
     }
-    [source, target] = [target, source];
+    const swap = source;
+    source = target;
+    target = swap;
   }
   const sorted = new Float64Array(count * STRIDE);
-  for (let i = 0; i < count; i++) {
-    const at = source[i]!;
-    for (let k = 0; k < STRIDE; k++) sorted[i * STRIDE + k] = edges[at + k]!;
+  for (let i = 0, to = 0; i < count; i++) {
+    const from = source[i]!;
+    for (let k = 0; k < STRIDE; k++) sorted[to++] = edges[from + k]!;
   }
   return sorted;
 }
 
-function compareEdges(edges: Float64Array, p: number, q: number): number {
-  return (
-    edges[p + TOP]! - edges[q + TOP]! ||
-    edges[p + X_TOP]! - edges[q + X_TOP]! ||
-    edges[p + BOTTOM]! - edges[q + BOTTOM]! ||
-    edges[p + X_BOTTOM]! - edges[q + X_BOTTOM]!
-  );
+const RUN = 8;
+
+function isAfter(edges: Float64Array, p: number, q: number): boolean {
+  for (let k = 0; k < SLOPE; k++) {
+    const place = KEY_ORDER[k]!;
+    const difference = edges[p + place]! - edges[q + place]!;
+    if (difference !== 0) return difference > 0;
+  }
+  return false;
 }
 
-function distinctLevels(edges: Float64Array, count: number): Float64Array {
-  const levels = new Float64Array(2 * count);
-  for (let i = 0; i < count; i++) {
-    levels[2 * i] = edges[i * STRIDE + TOP]!;
-    levels[2 * i + 1] = edges[i * STRIDE + BOTTOM]!;
-  }
-  levels.sort();
-  let kept = 0;
-  for (let i = 0; i < levels.length; i++) {
-    if (i === 0 || levels[i] !== levels[i - 1]) levels[kept++] = levels[i]!;
-  }
-  return levels.slice(0, kept);
-}
+const KEY_ORDER = [TOP, X_TOP, BOTTOM, X_BOTTOM] as const;
