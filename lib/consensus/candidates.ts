@@ -218,7 +218,12 @@ function explainItem(
     if (!borne) continue;
     const mine = other.members.find((member) => image.items[member]!.annotator === annotator);
     const mySpans = mine === undefined ? undefined : image.items[mine]!.spans;
-    if (heavier && mySpans && drawnIou(spans, mySpans) >= 0.5 && drawnIou(spans, other.spans) >= Math.max(0.5, iouCut)) {
+    if (
+      heavier &&
+      mySpans &&
+      drawnIou(spans, mySpans) >= 0.5 &&
+      drawnIou(spans, other.spans) >= Math.max(0.5, iouCut)
+    ) {
       return { reason: "duplicate", of: [c] };
     }
     // A cap on a bottle is an object of its own; only the same class is divided or united.
@@ -249,8 +254,9 @@ function explainItem(
  */
 function isDivided(image: PreparedImage, item: number, whole: Draft, member: Spans | undefined): boolean {
   const { spans, annotator, instance } = image.items[item]!;
-  const pieces = image.itemsOf[annotator]!
-    .filter((other) => other !== item && image.items[other]!.instance.classId === instance.classId)
+  const pieces = image.itemsOf[annotator]!.filter(
+    (other) => other !== item && image.items[other]!.instance.classId === instance.classId,
+  )
     .map((other) => image.items[other]!.spans)
     .filter((other) => boxesMeet(other.box, whole.spans.box));
   let filled = overlapOf(spans, whole.spans).commonPx2;

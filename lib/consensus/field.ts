@@ -14,13 +14,13 @@ export type Grid = {
 };
 
 /** Nodes along the longer side at most: an outline is then right to half a per cent of the object's size. */
-const NODES_MAX = 224;
+const NODES_MAX = 96;
 
 /** The grid for shapes inside `box`, no finer than the rows of any of them. */
-export function gridFor(box: Box, coarsestStepPx: number): Grid {
+export function gridFor(box: Box, coarsestStepPx: number, nodesMax = NODES_MAX): Grid {
   const longest = Math.max(box[2], box[3], 1e-6);
-  const wanted = 2 ** Math.ceil(Math.log2(longest / NODES_MAX));
-  const cellPx = Math.max(coarsestStepPx, longest < NODES_MAX / 8 ? wanted : Math.max(wanted, 1));
+  const wanted = 2 ** Math.ceil(Math.log2(longest / nodesMax));
+  const cellPx = Math.max(coarsestStepPx, longest < nodesMax / 8 ? wanted : Math.max(wanted, 1));
   const firstColumn = Math.floor(box[0] / cellPx) - 1;
   const firstRow = Math.floor((box[1] - ROW_PHASE) / cellPx) - 1;
   const columns = Math.ceil((box[0] + box[2]) / cellPx) + 1 - firstColumn;

@@ -23,11 +23,11 @@ export type Fused = {
   /** IoU of each contributing annotator's drawing with the shape. */
   readonly iouOf: ReadonlyMap<number, number>;
   /** IoU of an annotator's drawing with what others (no copies of it) alone give; NaN when nobody else drew it. */
-  withoutIou(annotator: number): number;
+  readonly withoutIou: ReadonlyMap<number, number>;
 };
 
 /** Blur of the vote, as a share of the object's size (square root of area); tuned by bench:consensus. */
-export const TUNING = { blurShare: 0.03, boxWeight: 0.3, robust: 2, blurMax: 6 };
+export const TUNING = { blurShare: 0.04, boxWeight: 0.3, robust: 0, blurMax: 6 };
 
 /**
  * One shape from all who drew the object. Outlines: the weighted majority of pixels, its edges softened so that
@@ -134,11 +134,12 @@ function fuseBoxes(drawings: readonly Drawing[]): Fused {
     shape: { kind: "box", box },
     box,
     iouOf: new Map(drawings.map((drawing) => [drawing.annotator, boxIou(drawing.box, box)])),
-    withoutIou(annotator) {
-      const own = drawings.find((drawing) => drawing.annotator === annotator);
-      const others = drawings.filter(({ voter }) => voter !== own?.voter);
-      return own && others.length > 0 ? boxIou(own.box, medianBox(others)) : NaN;
-    },
+    withoutIou: new Map(
+      drawings.map((own) => {
+        const others = drawings.filter(({ voter }) => voter !== own.voter);
+        return [own.annotator, others.length > 0 ? boxIou(own.box, medianBox(others)) : NaN];
+      }),
+    ),
   };
 }
 
@@ -150,157 +151,146 @@ function fuseOutlines(
   image: PreparedImage,
 ): Fused {
   const frame = unionBox(drawings.map(({ box }) => box));
-  const grid = gridFor(
-    frame,
-    Math.max(...drawings.flatMap(({ pieces }) => pieces.map(({ stepPx }) => stepPx))),
-  );
+  const coarsest = Math.max(...drawings.flatMap(({ pieces }) => pieces.map(({ stepPx }) => stepPx)));
+  const grid = gridFor(frame, coarsest);
   const nodes = grid.columns * grid.rows;
-  const coverage = new Map<number, Float32Array>();
-  for (const drawing of drawings) {
-    const cover = new Float32Array(nodes);
+  const coverage = drawings.map((drawing, slot) => {
+    const cover = scratch(slot, nodes);
     for (const spans of drawing.pieces) addCoverage(grid, spans, cover);
     if (drawing.pieces.length > 1) for (let k = 0; k < nodes; k++) if (cover[k]! > 1) cover[k] = 1;
-    coverage.set(drawing.annotator, cover);
-  }
-  const weightOf = memberWeights(outlines, coverage, nodes, settings);
-  const field = voteField(grid, drawings, weightOf, coverage, settings, candidate, image);
+    return cover;
+  });
+  const weights = memberWeights(drawings, outlines, coverage, nodes, settings);
+  const field = voteField(grid, drawings, weights, coverage, settings, candidate, image);
   const area = countInside(field);
   let rings = contours(grid, field, 0.5);
+  let shape: Shape;
+  let spans: Spans;
   if (rings.length === 0) {
     // So scattered that no pixel has a majority: the outline that resembles the others most stands for all.
     const medoid = image.items[candidate.medoid]!;
-    const shape = medoid.instance.shape;
-    return asFused(shape, medoid.spans, drawings, () => NaN);
+    shape = medoid.instance.shape;
+    spans = medoid.spans;
+  } else {
+    rings = simplify(rings, settings.outlineIouLossMax * area * grid.cellPx * grid.cellPx);
+    shape = { kind: "polygon", rings };
+    spans = spansOf(shape);
   }
-  rings = simplify(rings, settings.outlineIouLossMax * area * grid.cellPx * grid.cellPx);
-  const shape: Shape = { kind: "polygon", rings };
-  return asFused(shape, spansOf(shape), drawings, (annotator) => {
-    const own = drawings.find((drawing) => drawing.annotator === annotator);
-    const others = drawings.filter(({ voter }) => voter !== own?.voter);
-    if (!own || others.length === 0) return NaN;
-    if (others.every(({ isBox }) => isBox)) return boxIou(own.box, medianBox(others));
-    return iouWithMask(
-      grid,
-      own,
-      coverage.get(annotator)!,
-      voteFieldPlain(others, weightOf, coverage, nodes),
-    );
-  });
-}
-
-function asFused(
-  shape: Shape,
-  spans: Spans,
-  drawings: readonly Drawing[],
-  withoutIou: (annotator: number) => number,
-): Fused {
   const iouOf = new Map<number, number>();
   for (const drawing of drawings) {
     const single = drawing.pieces.length === 1 ? drawing.pieces[0]! : undefined;
-    const iou = drawing.isBox || !single ? boxIou(drawing.box, spans.box) : regionIou(single, spans);
-    iouOf.set(drawing.annotator, iou);
+    iouOf.set(
+      drawing.annotator,
+      drawing.isBox || !single ? boxIou(drawing.box, spans.box) : regionIou(single, spans),
+    );
   }
-  return { shape, box: spans.box, iouOf, withoutIou };
+  return { shape, box: spans.box, iouOf, withoutIou: iousWithout(grid, drawings, weights, coverage) };
 }
 
-/** Weight of each outline: trust in the person, lowered for an outline that the others do not bear out. */
+/**
+ * Work arrays, kept between calls: an image needs a few per object, and clearing is cheaper than collecting.
+ * Slot k is valid until fuse asks for it again; nothing of it leaves this module.
+ */
+const scratchArrays: Float32Array[] = [];
+
+function scratch(slot: number, length: number): Float32Array {
+  let array = scratchArrays[slot];
+  if (!array || array.length < length) array = scratchArrays[slot] = new Float32Array(2 * length);
+  const part = array.subarray(0, length);
+  part.fill(0);
+  return part;
+}
+
+/** Weight of each drawing: trust in the person, lowered for an outline that the others do not bear out. */
 function memberWeights(
+  drawings: readonly Drawing[],
   outlines: readonly Drawing[],
-  coverage: ReadonlyMap<number, Float32Array>,
+  coverage: readonly Float32Array[],
   nodes: number,
   settings: ConsensusSettings,
-): Map<number, number> {
-  const weights = new Map(outlines.map(({ annotator, weight }) => [annotator, weight]));
+): number[] {
+  const weights = drawings.map(({ weight }) => weight);
   if (settings.fusion !== "weighted" || outlines.length < 3 || TUNING.robust <= 0) return weights;
-  const field = new Float32Array(nodes);
+  const slots = drawings.map((_, slot) => slot).filter((slot) => !drawings[slot]!.isBox);
+  const field = scratch(drawings.length, nodes);
   let total = 0;
-  for (const { annotator, weight } of outlines) {
-    const cover = coverage.get(annotator)!;
-    for (let k = 0; k < nodes; k++) field[k]! += weight * cover[k]!;
-    total += weight;
+  for (const slot of slots) {
+    add(field, coverage[slot]!, weights[slot]!);
+    total += weights[slot]!;
   }
-  const losses = outlines.map(({ annotator, weight }) => {
-    const cover = coverage.get(annotator)!;
-    const level = (total - weight) / 2;
-    let common = 0;
-    let own = 0;
-    let others = 0;
-    for (let k = 0; k < nodes; k++) {
-      const c = cover[k]!;
-      own += c;
-      if (field[k]! - weight * c > level) {
-        others += 1;
-        common += c;
-      }
-    }
-    return 1 - common / Math.max(1e-9, own + others - common);
+  const losses = slots.map((slot) => {
+    const weight = weights[slot]!;
+    const { common, mine, theirs } = overlapWithRest(coverage[slot]!, field, weight, (total - weight) / 2);
+    return 1 - common / Math.max(1e-9, mine + theirs - common);
   });
   const typical = Math.max(0.03, [...losses].sort((a, b) => a - b)[(losses.length - 1) >> 1]!);
-  outlines.forEach(({ annotator, weight }, k) => {
+  slots.forEach((slot, k) => {
     const excess = losses[k]! / typical;
-    weights.set(annotator, weight / (1 + Math.max(0, excess - 1) * TUNING.robust));
+    weights[slot]! /= 1 + Math.max(0, excess - 1) * TUNING.robust;
   });
   return weights;
+}
+
+function add(field: Float32Array, cover: Float32Array, weight: number): void {
+  for (let k = 0; k < field.length; k++) field[k]! += weight * cover[k]!;
 }
 
 function voteField(
   grid: Grid,
   drawings: readonly Drawing[],
-  weightOf: ReadonlyMap<number, number>,
-  coverage: ReadonlyMap<number, Float32Array>,
+  weights: readonly number[],
+  coverage: readonly Float32Array[],
   settings: ConsensusSettings,
   candidate: Candidate,
   image: PreparedImage,
 ): Float32Array {
   const nodes = grid.columns * grid.rows;
-  const outlines = drawings.filter(({ isBox }) => !isBox);
+  const slots = drawings.map((_, slot) => slot).filter((slot) => !drawings[slot]!.isBox);
+  const field = scratch(drawings.length + 1, nodes);
   if (settings.fusion === "medoid") {
-    const medoid = image.items[candidate.medoid]!;
-    const drawing = drawings.find(({ annotator }) => annotator === medoid.annotator) ?? outlines[0]!;
-    return coverage.get(drawing.isBox ? outlines[0]!.annotator : drawing.annotator)!.slice();
+    const medoid = image.items[candidate.medoid]!.annotator;
+    field.set(coverage[slots.find((slot) => drawings[slot]!.annotator === medoid) ?? slots[0]!]!);
+    return field;
   }
-  if (settings.fusion === "staple" && outlines.length >= 2) {
-    const masks = outlines.map(({ annotator }) =>
-      Uint8Array.from(coverage.get(annotator)!, (c) => Number(c >= 0.5)),
-    );
-    return Float32Array.from(staple(masks, { iterationsMax: 100, toleranceMax: 1e-6 }).probability);
+  if (settings.fusion === "staple" && slots.length >= 2) {
+    const masks = slots.map((slot) => Uint8Array.from(coverage[slot]!, (c) => Number(c >= 0.5)));
+    field.set(staple(masks, { iterationsMax: 100, toleranceMax: 1e-6 }).probability);
+    return field;
   }
   if (settings.fusion === "majority") {
-    const equal = new Map(outlines.map(({ annotator }) => [annotator, 1]));
-    return voteFieldPlain(outlines, equal, coverage, nodes);
+    for (const slot of slots) add(field, coverage[slot]!, 1 / slots.length);
+    return field;
   }
-  const field = voteFieldPlain(drawings, weightOf, coverage, nodes);
+  shareInto(field, drawings, weights, coverage);
   const radius = Math.min(TUNING.blurMax, Math.round(TUNING.blurShare * Math.sqrt(countInside(field))));
   if (radius >= 1) blur(grid, field, radius);
   return field;
 }
 
 /** Weighted mean of the coverages; boxes pull down what lies outside them and say little about the inside. */
-function voteFieldPlain(
+function shareInto(
+  field: Float32Array,
   drawings: readonly Drawing[],
-  weightOf: ReadonlyMap<number, number>,
-  coverage: ReadonlyMap<number, Float32Array>,
-  nodes: number,
-): Float32Array {
-  const field = new Float32Array(nodes);
+  weights: readonly number[],
+  coverage: readonly Float32Array[],
+): void {
+  let outlines = 0;
   let total = 0;
-  for (const { annotator, isBox } of drawings) {
-    if (isBox) continue;
-    const weight = weightOf.get(annotator) ?? 1;
-    const cover = coverage.get(annotator)!;
-    for (let k = 0; k < nodes; k++) field[k]! += weight * cover[k]!;
-    total += weight;
-  }
-  for (const { annotator, isBox, weight } of drawings) {
-    if (!isBox || TUNING.boxWeight <= 0) continue;
-    const pull = weight * TUNING.boxWeight;
-    const cover = coverage.get(annotator)!;
-    // Inside, the box votes as the others do; outside, against.
-    for (let k = 0; k < nodes; k++) field[k]! += pull * cover[k]! * (field[k]! / total);
-    total += pull;
-  }
-  for (let k = 0; k < nodes; k++) field[k]! /= total;
-  return field;
+  drawings.forEach(({ isBox }, slot) => {
+    if (!isBox) outlines += weights[slot]!;
+    total += (isBox ? TUNING.boxWeight : 1) * weights[slot]!;
+  });
+  drawings.forEach(({ isBox }, slot) => {
+    if (!isBox) add(field, coverage[slot]!, weights[slot]! / outlines);
+  });
+  if (total === outlines) return;
+  const factor = scratch(drawings.length + 2, field.length);
+  factor.fill(outlines / total);
+  drawings.forEach(({ isBox }, slot) => {
+    // Inside, a box votes as the outlines do; outside, against.
+    if (isBox) add(factor, coverage[slot]!, (TUNING.boxWeight * weights[slot]!) / total);
+  });
+  for (let k = 0; k < field.length; k++) field[k]! *= factor[k]!;
 }
 
 function countInside(field: Float32Array): number {
@@ -330,33 +320,90 @@ function blur(grid: Grid, field: Float32Array, radius: number): void {
   for (let row = 0; row < rows; row++) field[row * columns] = field[row * columns + columns - 1] = 0;
 }
 
-function iouWithMask(grid: Grid, own: Drawing, cover: Float32Array, field: Float32Array): number {
-  const { columns, rows, cellPx, firstColumn, firstRow } = grid;
+/**
+ * IoU of each drawing with the plain weighted majority of the others (nobody who copies the same source), box against
+ * box where either side is boxes. One pass a drawing: the others are the total less the own.
+ */
+function iousWithout(
+  grid: Grid,
+  drawings: readonly Drawing[],
+  weights: readonly number[],
+  coverage: readonly Float32Array[],
+): Map<number, number> {
+  const field = scratch(drawings.length + 1, grid.columns * grid.rows);
+  let total = 0;
+  drawings.forEach(({ isBox }, slot) => {
+    if (isBox) return;
+    add(field, coverage[slot]!, weights[slot]!);
+    total += weights[slot]!;
+  });
+  const result = new Map<number, number>();
+  drawings.forEach((own, slot) => {
+    const others = drawings.filter(({ voter }) => voter !== own.voter);
+    if (others.length === 0) return result.set(own.annotator, NaN);
+    if (others.every(({ isBox }) => isBox))
+      return result.set(own.annotator, boxIou(own.box, medianBox(others)));
+    let rest = field;
+    let level = total;
+    const group = drawings.map((_, other) => other).filter((other) => drawings[other]!.voter === own.voter);
+    const out = group.filter((other) => !drawings[other]!.isBox);
+    for (const other of out) level -= weights[other]!;
+    if (out.length > 1) {
+      rest = scratch(drawings.length + 2, field.length);
+      rest.set(field);
+      for (const other of out) if (other !== slot) add(rest, coverage[other]!, -weights[other]!);
+    }
+    const weight = own.isBox ? 0 : weights[slot]!;
+    const { common, mine, theirs } = overlapWithRest(coverage[slot]!, rest, weight, level / 2);
+    if (theirs === 0) return result.set(own.annotator, 0);
+    if (!own.isBox) return result.set(own.annotator, common / (mine + theirs - common));
+    const box = boxOfRest(grid, rest, level / 2);
+    return result.set(own.annotator, boxIou(own.box, box));
+  });
+  return result;
+}
+
+type OverlapWithRest = { common: number; mine: number; theirs: number };
+
+/** In nodes: the own drawing, where `rest` less `weight` times the own reaches `level`, and what they share. */
+function overlapWithRest(
+  cover: Float32Array,
+  rest: Float32Array,
+  weight: number,
+  level: number,
+): OverlapWithRest {
   let common = 0;
   let mine = 0;
   let theirs = 0;
+  for (let k = 0; k < cover.length; k++) {
+    const all = rest[k]!;
+    const c = cover[k]!;
+    mine += c;
+    if (all > 0 && all - weight * c >= level) {
+      theirs++;
+      common += c;
+    }
+  }
+  return { common, mine, theirs };
+}
+
+function boxOfRest(grid: Grid, rest: Float32Array, level: number): Box {
+  const { columns, rows, cellPx, firstColumn, firstRow } = grid;
   let [minColumn, maxColumn, minRow, maxRow] = [columns, -1, rows, -1];
   for (let row = 0; row < rows; row++) {
     for (let column = 0; column < columns; column++) {
-      const k = row * columns + column;
-      const c = cover[k]!;
-      mine += c;
-      if (field[k]! < 0.5) continue;
-      theirs++;
-      common += c;
-      if (column < minColumn) minColumn = column;
-      if (column > maxColumn) maxColumn = column;
-      if (row < minRow) minRow = row;
-      if (row > maxRow) maxRow = row;
+      const all = rest[row * columns + column]!;
+      if (all <= 0 || all < level) continue;
+      minColumn = Math.min(minColumn, column);
+      maxColumn = Math.max(maxColumn, column);
+      minRow = Math.min(minRow, row);
+      maxRow = row;
     }
   }
-  if (theirs === 0) return 0;
-  if (!own.isBox) return common / (mine + theirs - common);
-  const box: Box = [
+  return [
     (minColumn + firstColumn) * cellPx,
     (minRow + firstRow) * cellPx,
     (maxColumn - minColumn + 1) * cellPx,
     (maxRow - minRow + 1) * cellPx,
   ];
-  return boxIou(own.box, box);
 }

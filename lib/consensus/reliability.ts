@@ -44,7 +44,7 @@ const STRENGTH = { person: 4, row: 6, inventions: 4, pooled: 2, outline: 6, clas
 /** A gold drawing says as much about an outline as this many comparisons with others. */
 const GOLD_WEIGHT = 3;
 const ITERATIONS_MAX = 200;
-const TOLERANCE = 1e-8;
+const TOLERANCE = 1e-7;
 
 /**
  * Estimates, from a whole batch, how far each annotator can be trusted: existence and class by Dawid and Skene's EM

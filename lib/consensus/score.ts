@@ -135,7 +135,7 @@ function judgedByOthers(state: JudgedImage, model: VoteModel, one: Judged, annot
   one.candidate.saidBy.forEach((item, other) => {
     if (item >= 0 && image.voterOf[other] !== voter) supporters.add(image.voterOf[other]!);
   });
-  const iou = one.fused?.withoutIou(annotator) ?? NaN;
+  const iou = one.fused?.withoutIou.get(annotator) ?? NaN;
   return {
     real: 1 - posterior[nothing]!,
     classIndex,

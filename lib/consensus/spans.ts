@@ -34,10 +34,10 @@ export function stepFor(heightPx: number): number {
 
 /**
  * Rows of a shape under the even-odd rule. Vertices that are not finite are left out. A shape without area gets no
- * rows and an area of 0. O(vertices + rows crossed).
+ * rows and an area of 0. `stepMaxPx` is a power of two. O(vertices + rows crossed).
  */
-export function spansOf(shape: Shape): Spans {
-  if (shape.kind === "box") return boxSpans(shape.box);
+export function spansOf(shape: Shape, stepMaxPx = Infinity): Spans {
+  if (shape.kind === "box") return boxSpans(shape.box, stepMaxPx);
   let minX = Infinity;
   let minY = Infinity;
   let maxX = -Infinity;
@@ -54,7 +54,7 @@ export function spansOf(shape: Shape): Spans {
   }
   if (!Number.isFinite(maxX - minX) || !Number.isFinite(maxY - minY)) return boxSpans([0, 0, 0, 0]);
   const box: Box = [minX, minY, maxX - minX, maxY - minY];
-  const stepPx = stepFor(maxY - minY);
+  const stepPx = Math.min(stepMaxPx, stepFor(maxY - minY));
   const firstRow = Math.ceil((minY - ROW_PHASE) / stepPx);
   const rowCount = Math.max(0, Math.ceil((maxY - ROW_PHASE) / stepPx) - firstRow);
   const offsets = new Int32Array(rowCount + 1);
@@ -98,9 +98,9 @@ export function spansOf(shape: Shape): Spans {
   return { stepPx, firstRow, offsets, ends, areaPx2: length * stepPx, box, isBox: false };
 }
 
-function boxSpans(box: Box): Spans {
+function boxSpans(box: Box, stepMaxPx = Infinity): Spans {
   const [x, y, width, height] = box;
-  const stepPx = stepFor(height);
+  const stepPx = Math.min(stepMaxPx, stepFor(height));
   const firstRow = Math.ceil((y - ROW_PHASE) / stepPx);
   const rowCount =
     width > 0 && height > 0 ? Math.max(0, Math.ceil((y + height - ROW_PHASE) / stepPx) - firstRow) : 0;

@@ -171,7 +171,7 @@ export const DEFAULT_SETTINGS: ConsensusSettings = {
   method: "average",
   fusion: "weighted",
   votes: "dawid-skene",
-  iouCut: 0.3,
+  iouCut: 0.25,
   agreementTarget: 0.8,
   kMin: 2,
   kMax: 5,

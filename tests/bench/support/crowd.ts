@@ -1,10 +1,10 @@
-import { FillRule, inflatePaths, intersect, JoinType, EndType, union, type Paths64 } from "clipper2-ts";
 import { boxIou, spansOf } from "@/lib/consensus/spans";
 import { ringArea } from "@/lib/consensus/contour";
 import type { AnnotatorLabels, ImageLabels, LabelledInstance } from "@/lib/consensus/types";
 import type { Box, Point, Ring, Rings } from "@/lib/geometry/types";
 import { Random } from "./random";
-import { toPaths, toRings, type Scene, type TrueObject } from "./scenes";
+import { combine, meet } from "./regions";
+import type { Scene, TrueObject } from "./scenes";
 
 export type Kind =
   | "careful"
@@ -226,50 +226,29 @@ function touch(a: TrueObject, b: TrueObject): boolean {
     return [x - 3, y - 3, width + 6, height + 6];
   };
   if (boxIou(grown(a), grown(b)) === 0) return false;
-  const wide = inflatePaths(toPaths(a.rings), 3 * 16, JoinType.Round, EndType.Polygon);
-  return intersect(wide, toPaths(b.rings), FillRule.NonZero).length > 0;
+  return meet(a.rings, b.rings);
 }
 
 /** Both regions as one drawing, closed across a gap of up to 3 px. */
 function joined(a: Rings, b: Rings): Rings {
-  const both: Paths64 = union([...toPaths(a), ...toPaths(b)], FillRule.NonZero);
-  const grown = inflatePaths(both, 2 * 16, JoinType.Round, EndType.Polygon);
-  return toRings(inflatePaths(union(grown, FillRule.NonZero), -2 * 16, JoinType.Round, EndType.Polygon));
+  return combine([a], [b], "closed");
 }
 
 function halves(rings: Rings, random: Random): Rings[] {
   const [x, y, width, height] = spansOf({ kind: "polygon", rings }).box;
   const cut = random.between(0.35, 0.65);
-  const far = 10_000;
-  const side: Ring =
+  const rectangle = (fromX: number, fromY: number, toX: number, toY: number): Ring => [
+    [fromX, fromY],
+    [toX, fromY],
+    [toX, toY],
+    [fromX, toY],
+  ];
+  const [endX, endY] = [x + width, y + height];
+  const sides =
     width > height
-      ? [
-          [-far, -far],
-          [x + cut * width, -far],
-          [x + cut * width, far],
-          [-far, far],
-        ]
-      : [
-          [-far, -far],
-          [far, -far],
-          [far, y + cut * height],
-          [-far, y + cut * height],
-        ];
-  const other: Ring =
-    width > height
-      ? [
-          [x + cut * width, -far],
-          [far, -far],
-          [far, far],
-          [x + cut * width, far],
-        ]
-      : [
-          [-far, y + cut * height],
-          [far, y + cut * height],
-          [far, far],
-          [-far, far],
-        ];
-  return [side, other].map((half) => toRings(intersect(toPaths(rings), toPaths([half]), FillRule.NonZero)));
+      ? [rectangle(x, y, x + cut * width, endY), rectangle(x + cut * width, y, endX, endY)]
+      : [rectangle(x, y, endX, y + cut * height), rectangle(x, y + cut * height, endX, endY)];
+  return sides.map((side) => combine([rings], [[side]], "common"));
 }
 
 /** What a hand makes of an outline: fewer vertices, a smooth error along it, an error at each click, a habit. */

@@ -1,19 +1,11 @@
 import { readFileSync } from "node:fs";
-import { difference, FillRule, type Path64, type Paths64 } from "clipper2-ts";
 import type { Point, Ring, Rings } from "@/lib/geometry/types";
 import { ringArea } from "@/lib/consensus/contour";
+import { combine } from "./regions";
 import { Random } from "./random";
 
 export type TrueObject = { classId: string; rings: Rings; areaPx2: number };
 export type Scene = { width: number; height: number; objects: TrueObject[] };
-
-const SCALE = 16;
-export const toPaths = (rings: Rings): Paths64 =>
-  rings.map((ring): Path64 => ring.map(([x, y]) => ({ x: Math.round(x * SCALE), y: Math.round(y * SCALE) })));
-export const toRings = (paths: Paths64): Ring[] =>
-  paths
-    .map((path) => path.map(({ x, y }): Point => [Number(x) / SCALE, Number(y) / SCALE]))
-    .filter((r) => r.length >= 3);
 
 export function areaOf(rings: Rings): number {
   return Math.abs(rings.reduce((sum, ring) => sum + ringArea(ring), 0));
@@ -52,10 +44,9 @@ export function syntheticScene(random: Random): Scene {
   }
   const objects: TrueObject[] = [];
   drawn.forEach(({ classId, rings }, k) => {
-    const above = drawn.slice(k + 1).flatMap((other) => toPaths(other.rings));
+    const above = drawn.slice(k + 1).map((other) => other.rings);
     const whole = areaOf(rings);
-    const visible =
-      above.length > 0 ? toRings(difference(toPaths(rings), above, FillRule.NonZero)) : [...rings];
+    const visible = above.length > 0 ? combine([rings], above, "without") : [...rings];
     const kept = visible.filter((ring) => Math.abs(ringArea(ring)) > 20);
     const areaPx2 = areaOf(kept);
     if (areaPx2 > Math.max(100, 0.3 * whole)) objects.push({ classId, rings: kept, areaPx2 });

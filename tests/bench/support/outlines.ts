@@ -1,0 +1,52 @@
+import type { AnnotatorLabels, ImageLabels, LabelledInstance } from "@/lib/consensus/types";
+import type { Point, Rings } from "@/lib/geometry/types";
+import { spansOf } from "@/lib/consensus/spans";
+import { poolOf, POOLS, redrawn, type Person } from "./crowd";
+import { Random } from "./random";
+import type { Scene, TrueObject } from "./scenes";
+
+/** One object, and what each of several people made of its outline when asked for just this object. */
+export type OutlineTask = { object: TrueObject; labels: ImageLabels };
+
+/**
+ * The published setting of crowd outlines: people are shown an object and draw it. Same pool as elsewhere, so there are
+ * boxes, halves, copies and spam among the drawings; nobody overlooks the object. `noise` scales every error.
+ */
+export function outlineTasks(scenes: readonly Scene[], seed: number, people: number, noise: number): OutlineTask[] {
+  const random = new Random(seed * 104_729);
+  const pool = poolOf(POOLS.usual, random, noise);
+  const tasks: OutlineTask[] = [];
+  for (const scene of scenes) {
+    for (const object of scene.objects) {
+      if (object.areaPx2 < 1024) continue;
+      const chosen = random.shuffled(pool).slice(0, people);
+      const done: AnnotatorLabels[] = [];
+      for (const person of chosen.filter(({ kind }) => kind !== "copies")) {
+        done.push({ annotatorId: person.id, instances: [drawing(object, person, scene, random)] });
+      }
+      for (const person of chosen.filter(({ kind }) => kind === "copies")) {
+        const source = done.length > 0 ? random.pick(done) : undefined;
+        const instances = source ? source.instances : [drawing(object, { ...person, kind: "sloppy" }, scene, random)];
+        done.push({ annotatorId: person.id, instances });
+      }
+      tasks.push({ object, labels: { width: scene.width, height: scene.height, annotators: done } });
+    }
+  }
+  return tasks;
+}
+
+function drawing(object: TrueObject, person: Person, scene: Scene, random: Random): LabelledInstance {
+  let rings: Rings = redrawn(object.rings, person, random);
+  if (person.kind === "boxesOnly") {
+    const [x, y, width, height] = spansOf({ kind: "polygon", rings }).box;
+    rings = [[[x, y], [x + width, y], [x + width, y + height], [x, y + height]]];
+  } else if (person.kind === "spams") {
+    const size = Math.sqrt(object.areaPx2);
+    const [x, y] = [random.between(0, scene.width), random.between(0, scene.height)];
+    rings = [Array.from({ length: 8 }, (_, i): Point => [x + size * Math.cos((Math.PI * i) / 4), y + size * Math.sin((Math.PI * i) / 4)])];
+  } else if (person.kind === "splits" && random.chance(0.35)) {
+    const [x, , width] = spansOf({ kind: "polygon", rings }).box;
+    rings = rings.map((ring) => ring.map(([px, py]): Point => [Math.min(px, x + width / 2), py]));
+  }
+  return { id: "drawn", classId: "object", shape: { kind: "polygon", rings } };
+}
