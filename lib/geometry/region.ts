@@ -39,7 +39,8 @@ export function prepareRings(rings: Rings): Region {
     bottom = Math.max(bottom, edges[at + BOTTOM]!);
   }
   const bare = { box: boxOfRings(rings), right, bottom, areaPx2: 0, edgeCount, edges };
-  return { ...bare, areaPx2: Math.max(0, sweep(bare, undefined, undefined)) };
+  const areaPx2 = sweep(bare, undefined, undefined);
+  return { ...bare, areaPx2: areaPx2 > 0 ? areaPx2 : 0 };
 }
 
 /** Makes a shape ready to be compared. */
@@ -55,7 +56,8 @@ export function regionIntersectionArea(a: Region, b: Region): number {
   const top = Math.max(a.box[1], b.box[1]);
   const bottom = Math.min(a.bottom, b.bottom);
   if (left >= right || top >= bottom) return 0;
-  return Math.min(Math.max(0, sweep(a, b, undefined)), a.areaPx2, b.areaPx2);
+  const common = sweep(a, b, undefined);
+  return common > 0 ? Math.min(common, a.areaPx2, b.areaPx2) : 0;
 }
 
 /**
@@ -395,13 +397,15 @@ function sortedEdges(rings: Rings): { edges: Float64Array; edgeCount: number } {
       const to = ring[i]!;
       const toX = to[0];
       const toY = to[1];
-      if (fromY !== toY) {
+      // An edge so flat that its slope overflows bounds no area that a number can hold.
+      const slope = (toX - fromX) / (toY - fromY);
+      if (Number.isFinite(slope)) {
         const isDown = fromY < toY;
         edges[at] = isDown ? fromY : toY;
         edges[at + BOTTOM] = isDown ? toY : fromY;
         edges[at + X_TOP] = isDown ? fromX : toX;
         edges[at + X_BOTTOM] = isDown ? toX : fromX;
-        edges[at + SLOPE] = (toX - fromX) / (toY - fromY);
+        edges[at + SLOPE] = slope;
         at += STRIDE;
       }
       fromX = toX;

@@ -88,9 +88,9 @@ export function pointInRings([x, y]: Point, rings: Rings): boolean {
     let from = ring[ring.length - 1];
     for (const to of ring) {
       if (from !== undefined && from[1] <= y !== to[1] <= y) {
-        // The edge is always taken from its upper end, so both regions beside it find the same crossing.
+        // Taken from its upper end, as rasterising does, so that both regions beside it find the same crossing.
         const [top, bottom] = from[1] < to[1] ? [from, to] : [to, from];
-        const crossX = top[0] + ((y - top[1]) / (bottom[1] - top[1])) * (bottom[0] - top[0]);
+        const crossX = top[0] + (y - top[1]) * ((bottom[0] - top[0]) / (bottom[1] - top[1]));
         if (crossX <= x) inside = !inside;
       }
       from = to;

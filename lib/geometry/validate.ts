@@ -1,8 +1,9 @@
 import { boxArea, boxOfRings, clipBoxToImage } from "./box";
+import { withoutRepeats, withoutSpikes } from "./clean";
 import { clipRingsToImage, normaliseRings } from "./clip";
 import { prepareRings, regionIntersectionArea, ringsArea } from "./region";
 import { signedRingArea } from "./ring";
-import type { Box, Point, Ring, Rings, Shape } from "./types";
+import type { Box, Point, Rings, Shape } from "./types";
 
 /** What was changed to make a shape valid, one entry a kind. */
 export type Repair = "clipped" | "repeated-points" | "spikes" | "self-crossing" | "empty-rings";
@@ -22,6 +23,8 @@ export type ValidationLimits = {
 };
 
 const VERTICES_MAX = 20_000;
+/** No image is larger, so a vertex so far from its middle is a mistake and not an outline that leaves the image. */
+const FAR_PX = 1e7;
 /** Areas by the two fill rules differ by rounding alone below this share. */
 const AREA_TOLERANCE = 1e-9;
 
@@ -58,6 +61,8 @@ function validateRings(input: Rings, limits: ValidationLimits): Validated {
   if (!input.every((ring) => ring.every((point) => point.length === 2 && point.every(Number.isFinite)))) {
     return refuse("the outline has a vertex that is not two finite numbers");
   }
+  const isFar = ([x, y]: Point) => Math.abs(x - width / 2) > FAR_PX || Math.abs(y - height / 2) > FAR_PX;
+  if (input.some((ring) => ring.some(isFar))) return refuse("the outline has a vertex far outside the image");
   if (input.every((ring) => ring.length < 3)) return refuse("the outline has fewer than three vertices");
 
   const repairs: Repair[] = [];
@@ -77,7 +82,7 @@ function validateRings(input: Rings, limits: ValidationLimits): Validated {
 
   const [x, y, boxWidth, boxHeight] = boxOfRings(rings);
   if (x < 0 || y < 0 || x + boxWidth > width || y + boxHeight > height) {
-    rings = clipRingsToImage(rings, width, height).map((ring) => clampRing(ring, width, height));
+    rings = clipRingsToImage(rings, width, height);
     repairs.push("clipped");
     if (rings.length === 0) return refuse("the outline lies outside the image");
   }
@@ -89,56 +94,6 @@ function validateRings(input: Rings, limits: ValidationLimits): Validated {
   if (!(areaPx2 > 0)) return refuse("the outline encloses no area");
   if (areaPx2 < areaPx2Min) return refuse(`the outline covers less than ${areaPx2Min} px²`);
   return { ok: true, shape: { kind: "polygon", rings }, repairs };
-}
-
-/** Rounding of the clipper may leave a corner a hair outside. */
-function clampRing(ring: Ring, width: number, height: number): Ring {
-  return ring.map(([x, y]): Point => [Math.min(width, Math.max(0, x)), Math.min(height, Math.max(0, y))]);
-}
-
-function isSame(a: Point, b: Point): boolean {
-  return a[0] === b[0] && a[1] === b[1];
-}
-
-/** Drops each point that equals the one before it (around the end too). */
-function withoutRepeats(ring: Ring): Ring {
-  return ring.filter((point, i) => {
-    const previous = ring[(i + ring.length - 1) % ring.length];
-    return previous === undefined || ring.length === 1 || !isSame(point, previous);
-  });
-}
-
-/** Drops tips at which the outline turns back on itself, until none is left. Exact: only true reversals count. */
-function withoutSpikes(ring: Ring): Ring {
-  const kept: Point[] = [];
-  for (const point of ring) {
-    kept.push(point);
-    while (
-      kept.length >= 3 &&
-      isSpike(kept[kept.length - 3]!, kept[kept.length - 2]!, kept[kept.length - 1]!)
-    ) {
-      kept.splice(kept.length - 2, 1);
-      if (isSame(kept[kept.length - 1]!, kept[kept.length - 2]!)) kept.pop();
-    }
-  }
-  // The start may sit on a spike as well: look at the two corners where the ring closes.
-  for (let changed = true; changed && kept.length >= 3;) {
-    const n = kept.length;
-    changed = true;
-    if (isSame(kept[0]!, kept[n - 1]!)) kept.pop();
-    else if (isSpike(kept[n - 2]!, kept[n - 1]!, kept[0]!)) kept.pop();
-    else if (isSpike(kept[n - 1]!, kept[0]!, kept[1]!)) kept.shift();
-    else changed = false;
-  }
-  return kept;
-}
-
-function isSpike(a: Point, tip: Point, b: Point): boolean {
-  const inX = tip[0] - a[0];
-  const inY = tip[1] - a[1];
-  const outX = b[0] - tip[0];
-  const outY = b[1] - tip[1];
-  return inX * outY === inY * outX && inX * outX + inY * outY < 0;
 }
 
 /**
