@@ -1,0 +1,293 @@
+"use client";
+
+import { CircleHelp, Redo2, Undo2, ZoomIn, ZoomOut, Scan, ScrollText, SunMedium } from "lucide-react";
+import { useCallback, useEffect, useMemo, useRef, useState, useSyncExternalStore } from "react";
+import { toast } from "sonner";
+import { Button } from "@/components/ui/Button";
+import { ConfirmDialog } from "@/components/ui/ConfirmDialog";
+import { Dialog } from "@/components/ui/Dialog";
+import { Markdown } from "@/components/ui/Markdown";
+import { Money } from "@/components/ui/Money";
+import { Notice } from "@/components/ui/Notice";
+import { StateMark } from "@/components/ui/StateMark";
+import type { DeskDocument, DeskTask } from "@/lib/contracts/desk";
+import { DeskController } from "@/lib/desk/controller";
+import type { ScreenPoint } from "@/lib/desk/viewport";
+import { HelpSheet } from "./HelpSheet";
+import { KeyLegend } from "./KeyLegend";
+import { useOutline } from "./useOutline";
+import { SelectedPanel } from "./SelectedPanel";
+import type { DeskMode, DeskServices } from "./services";
+import { Stage } from "./Stage";
+import { Tray } from "./Tray";
+import { useActivity } from "./useActivity";
+import { useDraft, type SaveState } from "./useDraft";
+import { useKeys } from "./useKeys";
+import { useLease } from "./useLease";
+
+type Props = { task: DeskTask; mode: DeskMode; services: DeskServices };
+
+const newId = () => `s${crypto.randomUUID().replaceAll("-", "").slice(0, 20)}`;
+
+/** The laid-out desk: the sheet in the middle, the key at its side, the tray at its foot. */
+export function DeskSheet({ task, mode, services }: Props) {
+  const draft = useDraft(task.claimId, task.draftVersion, services);
+  const put = useRef(draft.put);
+  useEffect(() => {
+    put.current = draft.put;
+  }, [draft.put]);
+  const [controller] = useState(() => new DeskController({ task, newId, onChange: (document: DeskDocument) => put.current(document) }));
+  const scene = useSyncExternalStore(controller.subscribe, controller.getScene, controller.getScene);
+  const activity = useActivity();
+  const lease = useLease(task.expiresAtMs, services, mode);
+  const screenCursor = useRef<ScreenPoint | null>(null);
+  const [look, setLook] = useState({ brightness: 1, contrast: 1 });
+  const [helpOpen, setHelpOpen] = useState(false);
+  const [briefOpen, setBriefOpen] = useState(false);
+  const [handInOpen, setHandInOpen] = useState(false);
+  const outline = useOutline(task, controller);
+  const isPanning = useKeys(controller, {
+    cursor: screenCursor,
+    onHelp: () => setHelpOpen(true),
+    onBrief: () => setBriefOpen(true),
+    onHandIn: () => setHandInOpen(true),
+    onOutline: () => outline.run(),
+  });
+  const summary = useMemo(() => summarise(task, scene.document), [task, scene.document]);
+  useTwoTabs(task.claimId);
+
+  const handIn = useCallback(async (): Promise<string | undefined> => {
+    try {
+      await services.submit({ document: controller.document, activeSeconds: Math.max(1, activity.activeSeconds()) });
+      if (mode === "annotate") draft.forget();
+      return undefined;
+    } catch (error) {
+      return error instanceof Error ? error.message : "That did not work. Your drawing is kept.";
+    }
+  }, [services, controller, activity, draft, mode]);
+
+  return (
+    <div className="bg-paper text-ink flex h-dvh flex-col overflow-hidden">
+      <header className="border-line flex flex-wrap items-center gap-x-5 gap-y-1 border-b px-3 py-1.5 sm:px-4">
+        <div className="min-w-0 grow basis-40">
+          <h1 className="font-heading truncate text-base leading-tight font-semibold">{task.imageName}</h1>
+          <p className="text-muted truncate text-sm leading-tight">{task.batchTitle}</p>
+        </div>
+        {mode === "annotate" ? <TaskFigures task={task} seconds={activity.seconds} expectedCents={summary.expectedCents} /> : <StateMark state="disputed">redrawing a dispute</StateMark>}
+        <SaveMark state={draft.state} />
+        <div className="flex items-center gap-1.5">
+          <Button size="small" icon={<ScrollText aria-hidden className="size-4" />} onClick={() => setBriefOpen(true)}>
+            Brief
+          </Button>
+          <ConfirmDialog
+            title={mode === "annotate" ? "Give this picture back?" : "Leave without a decision?"}
+            consequence={mode === "annotate" ? "Somebody else can draw it, and what you drew is dropped. It does not count against you." : "The dispute stays on the docket. What you drew is kept in this browser."}
+            confirmLabel={mode === "annotate" ? "Give it back" : "Leave"}
+            trigger={<Button size="small">{mode === "annotate" ? "Give back" : "Leave"}</Button>}
+            onConfirm={async () => {
+              if (mode === "annotate") draft.forget();
+              await services.release();
+            }}
+          />
+          <Button size="small" kind="primary" onClick={() => setHandInOpen(true)}>
+            {mode === "annotate" ? "Hand in" : "Use as decision"}
+          </Button>
+        </div>
+      </header>
+
+      {draft.state === "conflict" ? (
+        <Notice kind="danger" live action={<Button size="small" onClick={() => window.location.reload()}>Reload</Button>}>
+          This picture was changed in another tab or on another device. Reload to go on with the newest drawing.
+        </Notice>
+      ) : null}
+      {draft.state === "lost" || lease.state === "lost" ? (
+        <Notice kind="danger" live>
+          Your claim ended and somebody else has the place. Your drawing is kept in this browser.
+        </Notice>
+      ) : null}
+      {lease.state === "soon" ? (
+        <Notice kind="caution" live>
+          Your claim runs out at {lease.expiresAt}. Go on drawing to keep it.
+        </Notice>
+      ) : null}
+      {activity.restDue ? (
+        <Notice kind="caution" live action={<Button size="small" onClick={activity.dismissRest}>Go on</Button>}>
+          Fifty minutes without a break. Look into the distance and stretch your hands; the picture waits.
+        </Notice>
+      ) : null}
+
+      <div className="grid min-h-0 grow grid-rows-[1fr_auto] md:grid-cols-[1fr_15rem] md:grid-rows-1">
+        <main className="relative min-h-0 p-2 sm:p-3" id="content">
+          <div className="border-ink relative size-full border">
+            <Stage controller={controller} scene={scene} task={task} look={look} isPanning={isPanning} onScreenCursor={(at) => (screenCursor.current = at)} />
+            <SheetCorner scale={scene.viewport.scale} cursor={scene.cursor} />
+            <div className="absolute end-2 bottom-2 flex flex-col gap-1">
+              <CornerButton label="Zoom in" onClick={() => controller.zoomCentre(1.4)} icon={<ZoomIn aria-hidden className="size-4" />} />
+              <CornerButton label="Zoom out" onClick={() => controller.zoomCentre(1 / 1.4)} icon={<ZoomOut aria-hidden className="size-4" />} />
+              <CornerButton label="Whole picture" onClick={() => controller.fit()} icon={<Scan aria-hidden className="size-4" />} />
+              <CornerButton label="Undo" disabled={!scene.canUndo} onClick={() => controller.undo()} icon={<Undo2 aria-hidden className="size-4" />} />
+              <CornerButton label="Redo" disabled={!scene.canRedo} onClick={() => controller.redo()} icon={<Redo2 aria-hidden className="size-4" />} />
+              <CornerButton label="Keys and help" onClick={() => setHelpOpen(true)} icon={<CircleHelp aria-hidden className="size-4" />} />
+            </div>
+            {scene.document.instances.length === 0 && scene.tool.mode === "idle" ? (
+              <p className="bg-paper/92 text-ink pointer-events-none absolute inset-x-0 top-3 mx-auto w-fit max-w-[92%] px-3 py-1.5 text-center text-sm">
+                Drag a box, or click around an object to outline it{scene.dealt.length > 0 ? "; or take what the tray deals" : ""}.
+              </p>
+            ) : null}
+          </div>
+        </main>
+        <aside className="border-line max-h-[34dvh] min-h-0 overflow-y-auto border-t px-3 py-2 md:max-h-none md:border-s md:border-t-0 md:py-3" aria-label="Key and selection">
+          <KeyLegend controller={controller} scene={scene} classes={task.classes} />
+          <SelectedPanel controller={controller} scene={scene} classes={task.classes} onOutline={() => outline.run()} outlining={outline.isRunning} />
+          <details className="mt-4 text-sm">
+            <summary className="flex cursor-pointer items-center gap-2 py-1 font-semibold">
+              <SunMedium aria-hidden className="size-4" /> View
+            </summary>
+            <LookSlider label="Brightness" value={look.brightness} onChange={(brightness) => setLook({ ...look, brightness })} />
+            <LookSlider label="Contrast" value={look.contrast} onChange={(contrast) => setLook({ ...look, contrast })} />
+            <p className="text-muted mt-1">Changes what you see, never the data.</p>
+          </details>
+        </aside>
+      </div>
+      <Tray controller={controller} scene={scene} task={task} />
+      <p aria-live="polite" className="sr-only">
+        {scene.message}
+      </p>
+
+      <HelpSheet open={helpOpen} onOpenChange={setHelpOpen} />
+      <Dialog title={`Brief, version ${task.brief.version}`} open={briefOpen} onOpenChange={setBriefOpen} size="wide">
+        <Markdown>{task.brief.markdown}</Markdown>
+        <ul className="mt-4 grid gap-4 sm:grid-cols-2">
+          {task.brief.examples.map((example) => (
+            <li key={example.url}>
+              <img src={example.url} alt="" className="w-full" />
+              <p className="text-muted mt-1 text-sm">{example.caption}</p>
+            </li>
+          ))}
+        </ul>
+      </Dialog>
+      <ConfirmDialog
+        title={mode === "annotate" ? "Hand this picture in?" : "Use this as the decision?"}
+        open={handInOpen}
+        onOpenChange={setHandInOpen}
+        confirmLabel={mode === "annotate" ? "Hand in" : "Go on to the reason"}
+        consequence={
+          <>
+            <p>
+              {summary.total === 0 ? "You drew nothing: that says there is no object of the key in this picture." : `${summary.total} ${summary.total === 1 ? "object" : "objects"}: ${summary.words}.`}
+            </p>
+            {mode === "annotate" ? (
+              <p className="mt-2">
+                If all of it is agreed, you earn <Money cents={summary.expectedCents} />. You see your score with its reasons when the others have drawn it.
+              </p>
+            ) : null}
+          </>
+        }
+        onConfirm={async () => {
+          if (summary.boxesToOutline.length > 0) {
+            controller.select(summary.boxesToOutline[0] ?? null);
+            return `${summary.boxesToOutline.length} ${summary.boxesToOutline.length === 1 ? "box is" : "boxes are"} in a class that wants an outline. Select ${summary.boxesToOutline.length === 1 ? "it" : "each"} and press O, or draw ${summary.boxesToOutline.length === 1 ? "it" : "them"} anew.`;
+          }
+          await draft.flush();
+          return handIn();
+        }}
+      />
+    </div>
+  );
+}
+
+function TaskFigures({ task, seconds, expectedCents }: { task: DeskTask; seconds: number; expectedCents: number }) {
+  const clock = `${Math.floor(seconds / 60)}:${String(seconds % 60).padStart(2, "0")}`;
+  return (
+    <dl className="font-figures flex gap-x-4 text-sm">
+      <div>
+        <dt className="text-muted font-text text-xs">If all agrees</dt>
+        <dd>
+          <Money cents={expectedCents} />
+        </dd>
+      </div>
+      <div>
+        <dt className="text-muted font-text text-xs">Time{task.medianSeconds === null ? "" : `, median ${Math.round(task.medianSeconds)} s`}</dt>
+        <dd>{clock}</dd>
+      </div>
+    </dl>
+  );
+}
+
+const SAVE_WORD: Record<SaveState, { state: "agreed" | "waits" | "disputed"; word: string }> = {
+  saved: { state: "agreed", word: "saved" },
+  saving: { state: "waits", word: "saving" },
+  offline: { state: "waits", word: "kept here, network away" },
+  conflict: { state: "disputed", word: "changed elsewhere" },
+  lost: { state: "disputed", word: "claim ended" },
+};
+
+function SaveMark({ state }: { state: SaveState }) {
+  return (
+    <span data-save={state} className="hidden sm:inline">
+      <StateMark state={SAVE_WORD[state].state}>{SAVE_WORD[state].word}</StateMark>
+    </span>
+  );
+}
+
+function SheetCorner({ scale, cursor }: { scale: number; cursor: readonly [number, number] | null }) {
+  return (
+    <p aria-hidden className="bg-paper/92 font-figures pointer-events-none absolute start-2 bottom-2 px-1.5 py-0.5 text-xs">
+      {Math.round(scale * 100)} %{cursor ? ` · ${Math.round(cursor[0])}, ${Math.round(cursor[1])}` : ""}
+    </p>
+  );
+}
+
+function CornerButton({ label, icon, onClick, disabled = false }: { label: string; icon: React.ReactNode; onClick: () => void; disabled?: boolean }) {
+  return (
+    <button type="button" aria-label={label} title={label} disabled={disabled} onClick={onClick} className="bg-paper border-rule hover:border-ink rounded-sheet grid size-9 place-items-center border disabled:opacity-50">
+      {icon}
+    </button>
+  );
+}
+
+function LookSlider({ label, value, onChange }: { label: string; value: number; onChange: (value: number) => void }) {
+  return (
+    <label className="mt-2 grid gap-1">
+      <span>
+        {label} <span className="font-figures">{Math.round(value * 100)} %</span>
+      </span>
+      <input type="range" min={40} max={250} value={Math.round(value * 100)} onChange={(event) => onChange(Number(event.currentTarget.value) / 100)} onDoubleClick={() => onChange(1)} className="accent-agreed" />
+    </label>
+  );
+}
+
+/** What is handed in, in words, and what it earns if all of it agrees. */
+function summarise(task: DeskTask, document: DeskDocument) {
+  const geometryOf = new Map(task.classes.map((kind) => [kind.id, kind.geometry]));
+  const count = (origin: string) => document.instances.filter((instance) => instance.origin === origin).length;
+  const outlines = document.instances.filter((instance) => geometryOf.get(instance.classId) === "polygon");
+  const boxes = document.instances.length - outlines.length;
+  const { baseCents, boxCents, polygonCents, capCents } = task.pay;
+  const parts = [
+    [count("drawn"), "drawn"],
+    [count("taken"), "taken as dealt"],
+    [count("adjusted"), "adjusted"],
+  ] as const;
+  return {
+    total: document.instances.length,
+    words: parts.filter(([number]) => number > 0).map(([number, word]) => `${number} ${word}`).join(", "),
+    expectedCents: Math.min(capCents, baseCents + boxes * boxCents + outlines.length * polygonCents),
+    boxesToOutline: outlines.filter((instance) => instance.shape.kind === "box").map((instance) => instance.id),
+  };
+}
+
+/** Tells when the same picture is open in another tab of this browser. */
+function useTwoTabs(claimId: string): void {
+  useEffect(() => {
+    if (typeof BroadcastChannel === "undefined") return;
+    const channel = new BroadcastChannel(`merestone-desk-${claimId}`);
+    const warn = () => toast.warning("This picture is open in another tab too. Draw in one of them only.");
+    channel.onmessage = (event: MessageEvent<string>) => {
+      if (event.data === "here?") channel.postMessage("here");
+      warn();
+    };
+    channel.postMessage("here?");
+    return () => channel.close();
+  }, [claimId]);
+}

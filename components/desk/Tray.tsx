@@ -1,0 +1,78 @@
+"use client";
+
+import { useEffect, useRef } from "react";
+import { Button } from "@/components/ui/Button";
+import { cn } from "@/components/ui/cn";
+import { KeyCap } from "@/components/ui/KeyCap";
+import type { DeskProposal, DeskTask } from "@/lib/contracts/desk";
+import type { DeskController, Scene } from "@/lib/desk/controller";
+import { bounds } from "@/lib/desk/shapes";
+
+type Props = { controller: DeskController; scene: Scene; task: DeskTask };
+
+const CARD_PX = 64;
+
+/** The strip of dealt proposals at the foot of the sheet: look at one, take it, adjust it, or send it away. */
+export function Tray({ controller, scene, task }: Props) {
+  const current = useRef<HTMLButtonElement>(null);
+  useEffect(() => {
+    current.current?.scrollIntoView({ block: "nearest", inline: "nearest" });
+  }, [scene.dealtIndex, scene.dealt]);
+  return (
+    <section aria-label="Tray of proposals" className="border-line flex items-center gap-3 border-t px-3 py-1.5">
+      {scene.dealt.length === 0 ? (
+        <p className="text-muted py-2 text-sm">{task.proposals.length === 0 ? "No proposal is worth your time here: draw what you see." : "The tray is empty. Draw what is missing."}</p>
+      ) : (
+        <>
+          <ol className="flex min-w-0 grow gap-1.5 overflow-x-auto py-0.5" aria-label={`${scene.dealt.length} proposals, the most useful first`}>
+            {scene.dealt.map((proposal, index) => (
+              <li key={proposal.id}>
+                <button
+                  ref={index === scene.dealtIndex ? current : null}
+                  type="button"
+                  aria-label={`Proposal ${index + 1} of ${scene.dealt.length}, ${Math.round(proposal.score * 100)} percent likely`}
+                  aria-current={index === scene.dealtIndex}
+                  onClick={() => controller.showDealt(index)}
+                  className={cn("bg-stage relative block overflow-hidden border-2", index === scene.dealtIndex ? "border-waits" : "border-transparent opacity-80 hover:opacity-100")}
+                  style={{ width: CARD_PX, height: CARD_PX }}
+                >
+                  <Cutting proposal={proposal} task={task} />
+                </button>
+              </li>
+            ))}
+          </ol>
+          <div className="flex shrink-0 flex-wrap gap-1.5 max-sm:w-28">
+            <Button size="small" onClick={() => controller.take(false)}>
+              Take <KeyCap>J</KeyCap>
+            </Button>
+            <Button size="small" onClick={() => controller.take(true)}>
+              Adjust <KeyCap>K</KeyCap>
+            </Button>
+            <Button size="small" onClick={() => controller.sendAway()}>
+              Not one <KeyCap>L</KeyCap>
+            </Button>
+          </div>
+        </>
+      )}
+    </section>
+  );
+}
+
+/** The part of the picture that a proposal is about, with its outline. */
+function Cutting({ proposal, task }: { proposal: DeskProposal; task: DeskTask }) {
+  const [x, y, width, height] = bounds(proposal.shape);
+  const side = Math.max(width, height) * 1.3;
+  const left = x + width / 2 - side / 2;
+  const top = y + height / 2 - side / 2;
+  const path =
+    proposal.shape.kind === "box"
+      ? `M${x} ${y}h${width}v${height}h${-width}z`
+      : proposal.shape.rings.map((ring) => `M${ring.map(([px, py]) => `${px} ${py}`).join("L")}z`).join("");
+  return (
+    <svg aria-hidden viewBox={`${left} ${top} ${side} ${side}`} className="size-full" preserveAspectRatio="xMidYMid slice">
+      <image href={task.imageUrl} width={task.width} height={task.height} />
+      <path d={path} fill="none" stroke="#0b1116" strokeWidth="4" vectorEffect="non-scaling-stroke" />
+      <path d={path} fill="none" stroke="#ffffff" strokeWidth="1.8" vectorEffect="non-scaling-stroke" />
+    </svg>
+  );
+}
