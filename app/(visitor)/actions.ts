@@ -34,7 +34,10 @@ export const setNewPassword = action({ role: "public", input: ResetInput }, asyn
   return {};
 });
 
-const AcceptInput = z.object({ secret: z.string().min(20).max(100), name: z.string().trim().max(80).default("") });
+const AcceptInput = z.object({
+  secret: z.string().min(20).max(100),
+  name: z.string().trim().max(80).default(""),
+});
 
 /** Joins a team; the answer carries a one-time secret that signs the new colleague in. */
 export const joinTeam = action({ role: "public", input: AcceptInput }, ({ input }) => ({

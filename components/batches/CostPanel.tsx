@@ -40,7 +40,10 @@ export function CostPanel({ cost, imageCount, feeBps }: Props) {
           </dd>
         </dl>
       )}
-      <p className="text-muted mt-4 text-sm">The worst case is held when you fund the batch: every picture drawn by the most people, each at the cap. What is not spent goes back to your wallet.</p>
+      <p className="text-muted mt-4 text-sm">
+        The worst case is held when you fund the batch: every picture drawn by the most people, each at the
+        cap. What is not spent goes back to your wallet.
+      </p>
     </Sheet>
   );
 }

@@ -3,7 +3,7 @@
 import dynamic from "next/dynamic";
 import { useEffect, useState } from "react";
 import type { DeskTask } from "@/lib/contracts/desk";
-import { findKeptDraft } from "./useDraft";
+import { findKeptDraft } from "./draftKeeper";
 import type { DeskMode, DeskServices } from "./services";
 
 const DeskSheet = dynamic(() => import("./DeskSheet").then((module) => module.DeskSheet), { ssr: false });

@@ -21,7 +21,8 @@ import type { DeskMode, DeskServices } from "./services";
 import { Stage } from "./Stage";
 import { Tray } from "./Tray";
 import { useActivity } from "./useActivity";
-import { useDraft, type SaveState } from "./useDraft";
+import type { SaveState } from "./draftKeeper";
+import { useDraft } from "./useDraft";
 import { useKeys } from "./useKeys";
 import { useLease } from "./useLease";
 
@@ -32,11 +33,9 @@ const newId = () => `s${crypto.randomUUID().replaceAll("-", "").slice(0, 20)}`;
 /** The laid-out desk: the sheet in the middle, the key at its side, the tray at its foot. */
 export function DeskSheet({ task, mode, services }: Props) {
   const draft = useDraft(task.claimId, task.draftVersion, services);
-  const put = useRef(draft.put);
-  useEffect(() => {
-    put.current = draft.put;
-  }, [draft.put]);
-  const [controller] = useState(() => new DeskController({ task, newId, onChange: (document: DeskDocument) => put.current(document) }));
+  const [controller] = useState(
+    () => new DeskController({ task, newId, onChange: (document) => draft.keeper.put(document) }),
+  );
   const scene = useSyncExternalStore(controller.subscribe, controller.getScene, controller.getScene);
   const activity = useActivity();
   const lease = useLease(task.expiresAtMs, services, mode);
@@ -58,8 +57,11 @@ export function DeskSheet({ task, mode, services }: Props) {
 
   const handIn = useCallback(async (): Promise<string | undefined> => {
     try {
-      await services.submit({ document: controller.document, activeSeconds: Math.max(1, activity.activeSeconds()) });
-      if (mode === "annotate") draft.forget();
+      await services.submit({
+        document: controller.document,
+        activeSeconds: Math.max(1, activity.activeSeconds()),
+      });
+      if (mode === "annotate") draft.keeper.forget();
       return undefined;
     } catch (error) {
       return error instanceof Error ? error.message : "That did not work. Your drawing is kept.";
@@ -73,19 +75,31 @@ export function DeskSheet({ task, mode, services }: Props) {
           <h1 className="font-heading truncate text-base leading-tight font-semibold">{task.imageName}</h1>
           <p className="text-muted truncate text-sm leading-tight">{task.batchTitle}</p>
         </div>
-        {mode === "annotate" ? <TaskFigures task={task} seconds={activity.seconds} expectedCents={summary.expectedCents} /> : <StateMark state="disputed">redrawing a dispute</StateMark>}
+        {mode === "annotate" ? (
+          <TaskFigures task={task} seconds={activity.seconds} expectedCents={summary.expectedCents} />
+        ) : (
+          <StateMark state="disputed">redrawing a dispute</StateMark>
+        )}
         <SaveMark state={draft.state} />
         <div className="flex items-center gap-1.5">
-          <Button size="small" icon={<ScrollText aria-hidden className="size-4" />} onClick={() => setBriefOpen(true)}>
+          <Button
+            size="small"
+            icon={<ScrollText aria-hidden className="size-4" />}
+            onClick={() => setBriefOpen(true)}
+          >
             Brief
           </Button>
           <ConfirmDialog
             title={mode === "annotate" ? "Give this picture back?" : "Leave without a decision?"}
-            consequence={mode === "annotate" ? "Somebody else can draw it, and what you drew is dropped. It does not count against you." : "The dispute stays on the docket. What you drew is kept in this browser."}
+            consequence={
+              mode === "annotate"
+                ? "Somebody else can draw it, and what you drew is dropped. It does not count against you."
+                : "The dispute stays on the docket. What you drew is kept in this browser."
+            }
             confirmLabel={mode === "annotate" ? "Give it back" : "Leave"}
             trigger={<Button size="small">{mode === "annotate" ? "Give back" : "Leave"}</Button>}
             onConfirm={async () => {
-              if (mode === "annotate") draft.forget();
+              if (mode === "annotate") draft.keeper.forget();
               await services.release();
             }}
           />
@@ -96,8 +110,17 @@ export function DeskSheet({ task, mode, services }: Props) {
       </header>
 
       {draft.state === "conflict" ? (
-        <Notice kind="danger" live action={<Button size="small" onClick={() => window.location.reload()}>Reload</Button>}>
-          This picture was changed in another tab or on another device. Reload to go on with the newest drawing.
+        <Notice
+          kind="danger"
+          live
+          action={
+            <Button size="small" onClick={() => window.location.reload()}>
+              Reload
+            </Button>
+          }
+        >
+          This picture was changed in another tab or on another device. Reload to go on with the newest
+          drawing.
         </Notice>
       ) : null}
       {draft.state === "lost" || lease.state === "lost" ? (
@@ -111,7 +134,15 @@ export function DeskSheet({ task, mode, services }: Props) {
         </Notice>
       ) : null}
       {activity.restDue ? (
-        <Notice kind="caution" live action={<Button size="small" onClick={activity.dismissRest}>Go on</Button>}>
+        <Notice
+          kind="caution"
+          live
+          action={
+            <Button size="small" onClick={activity.dismissRest}>
+              Go on
+            </Button>
+          }
+        >
           Fifty minutes without a break. Look into the distance and stretch your hands; the picture waits.
         </Notice>
       ) : null}
@@ -119,32 +150,83 @@ export function DeskSheet({ task, mode, services }: Props) {
       <div className="grid min-h-0 grow grid-rows-[1fr_auto] md:grid-cols-[1fr_15rem] md:grid-rows-1">
         <main className="relative min-h-0 p-2 sm:p-3" id="content">
           <div className="border-ink relative size-full border">
-            <Stage controller={controller} scene={scene} task={task} look={look} isPanning={isPanning} onScreenCursor={(at) => (screenCursor.current = at)} />
+            <Stage
+              controller={controller}
+              scene={scene}
+              task={task}
+              look={look}
+              isPanning={isPanning}
+              onScreenCursor={(at) => (screenCursor.current = at)}
+            />
             <SheetCorner scale={scene.viewport.scale} cursor={scene.cursor} />
             <div className="absolute end-2 bottom-2 flex flex-col gap-1">
-              <CornerButton label="Zoom in" onClick={() => controller.zoomCentre(1.4)} icon={<ZoomIn aria-hidden className="size-4" />} />
-              <CornerButton label="Zoom out" onClick={() => controller.zoomCentre(1 / 1.4)} icon={<ZoomOut aria-hidden className="size-4" />} />
-              <CornerButton label="Whole picture" onClick={() => controller.fit()} icon={<Scan aria-hidden className="size-4" />} />
-              <CornerButton label="Undo" disabled={!scene.canUndo} onClick={() => controller.undo()} icon={<Undo2 aria-hidden className="size-4" />} />
-              <CornerButton label="Redo" disabled={!scene.canRedo} onClick={() => controller.redo()} icon={<Redo2 aria-hidden className="size-4" />} />
-              <CornerButton label="Keys and help" onClick={() => setHelpOpen(true)} icon={<CircleHelp aria-hidden className="size-4" />} />
+              <CornerButton
+                label="Zoom in"
+                onClick={() => controller.zoomCentre(1.4)}
+                icon={<ZoomIn aria-hidden className="size-4" />}
+              />
+              <CornerButton
+                label="Zoom out"
+                onClick={() => controller.zoomCentre(1 / 1.4)}
+                icon={<ZoomOut aria-hidden className="size-4" />}
+              />
+              <CornerButton
+                label="Whole picture"
+                onClick={() => controller.fit()}
+                icon={<Scan aria-hidden className="size-4" />}
+              />
+              <CornerButton
+                label="Undo"
+                disabled={!scene.canUndo}
+                onClick={() => controller.undo()}
+                icon={<Undo2 aria-hidden className="size-4" />}
+              />
+              <CornerButton
+                label="Redo"
+                disabled={!scene.canRedo}
+                onClick={() => controller.redo()}
+                icon={<Redo2 aria-hidden className="size-4" />}
+              />
+              <CornerButton
+                label="Keys and help"
+                onClick={() => setHelpOpen(true)}
+                icon={<CircleHelp aria-hidden className="size-4" />}
+              />
             </div>
             {scene.document.instances.length === 0 && scene.tool.mode === "idle" ? (
               <p className="bg-paper/92 text-ink pointer-events-none absolute inset-x-0 top-3 mx-auto w-fit max-w-[92%] px-3 py-1.5 text-center text-sm">
-                Drag a box, or click around an object to outline it{scene.dealt.length > 0 ? "; or take what the tray deals" : ""}.
+                Drag a box, or click around an object to outline it
+                {scene.dealt.length > 0 ? "; or take what the tray deals" : ""}.
               </p>
             ) : null}
           </div>
         </main>
-        <aside className="border-line max-h-[34dvh] min-h-0 overflow-y-auto border-t px-3 py-2 md:max-h-none md:border-s md:border-t-0 md:py-3" aria-label="Key and selection">
+        <aside
+          className="border-line max-h-[34dvh] min-h-0 overflow-y-auto border-t px-3 py-2 md:max-h-none md:border-s md:border-t-0 md:py-3"
+          aria-label="Key and selection"
+        >
           <KeyLegend controller={controller} scene={scene} classes={task.classes} />
-          <SelectedPanel controller={controller} scene={scene} classes={task.classes} onOutline={() => outline.run()} outlining={outline.isRunning} />
+          <SelectedPanel
+            controller={controller}
+            scene={scene}
+            classes={task.classes}
+            onOutline={() => outline.run()}
+            outlining={outline.isRunning}
+          />
           <details className="mt-4 text-sm">
             <summary className="flex cursor-pointer items-center gap-2 py-1 font-semibold">
               <SunMedium aria-hidden className="size-4" /> View
             </summary>
-            <LookSlider label="Brightness" value={look.brightness} onChange={(brightness) => setLook({ ...look, brightness })} />
-            <LookSlider label="Contrast" value={look.contrast} onChange={(contrast) => setLook({ ...look, contrast })} />
+            <LookSlider
+              label="Brightness"
+              value={look.brightness}
+              onChange={(brightness) => setLook({ ...look, brightness })}
+            />
+            <LookSlider
+              label="Contrast"
+              value={look.contrast}
+              onChange={(contrast) => setLook({ ...look, contrast })}
+            />
             <p className="text-muted mt-1">Changes what you see, never the data.</p>
           </details>
         </aside>
@@ -155,7 +237,12 @@ export function DeskSheet({ task, mode, services }: Props) {
       </p>
 
       <HelpSheet open={helpOpen} onOpenChange={setHelpOpen} />
-      <Dialog title={`Brief, version ${task.brief.version}`} open={briefOpen} onOpenChange={setBriefOpen} size="wide">
+      <Dialog
+        title={`Brief, version ${task.brief.version}`}
+        open={briefOpen}
+        onOpenChange={setBriefOpen}
+        size="wide"
+      >
         <Markdown>{task.brief.markdown}</Markdown>
         <ul className="mt-4 grid gap-4 sm:grid-cols-2">
           {task.brief.examples.map((example) => (
@@ -174,11 +261,14 @@ export function DeskSheet({ task, mode, services }: Props) {
         consequence={
           <>
             <p>
-              {summary.total === 0 ? "You drew nothing: that says there is no object of the key in this picture." : `${summary.total} ${summary.total === 1 ? "object" : "objects"}: ${summary.words}.`}
+              {summary.total === 0
+                ? "You drew nothing: that says there is no object of the key in this picture."
+                : `${summary.total} ${summary.total === 1 ? "object" : "objects"}: ${summary.words}.`}
             </p>
             {mode === "annotate" ? (
               <p className="mt-2">
-                If all of it is agreed, you earn <Money cents={summary.expectedCents} />. You see your score with its reasons when the others have drawn it.
+                If all of it is agreed, you earn <Money cents={summary.expectedCents} />. You see your score
+                with its reasons when the others have drawn it.
               </p>
             ) : null}
           </>
@@ -188,7 +278,7 @@ export function DeskSheet({ task, mode, services }: Props) {
             controller.select(summary.boxesToOutline[0] ?? null);
             return `${summary.boxesToOutline.length} ${summary.boxesToOutline.length === 1 ? "box is" : "boxes are"} in a class that wants an outline. Select ${summary.boxesToOutline.length === 1 ? "it" : "each"} and press O, or draw ${summary.boxesToOutline.length === 1 ? "it" : "them"} anew.`;
           }
-          await draft.flush();
+          await draft.keeper.flush();
           return handIn();
         }}
       />
@@ -196,7 +286,15 @@ export function DeskSheet({ task, mode, services }: Props) {
   );
 }
 
-function TaskFigures({ task, seconds, expectedCents }: { task: DeskTask; seconds: number; expectedCents: number }) {
+function TaskFigures({
+  task,
+  seconds,
+  expectedCents,
+}: {
+  task: DeskTask;
+  seconds: number;
+  expectedCents: number;
+}) {
   const clock = `${Math.floor(seconds / 60)}:${String(seconds % 60).padStart(2, "0")}`;
   return (
     <dl className="font-figures flex gap-x-4 text-sm">
@@ -207,7 +305,9 @@ function TaskFigures({ task, seconds, expectedCents }: { task: DeskTask; seconds
         </dd>
       </div>
       <div>
-        <dt className="text-muted font-text text-xs">Time{task.medianSeconds === null ? "" : `, median ${Math.round(task.medianSeconds)} s`}</dt>
+        <dt className="text-muted font-text text-xs">
+          Time{task.medianSeconds === null ? "" : `, median ${Math.round(task.medianSeconds)} s`}
+        </dt>
         <dd>{clock}</dd>
       </div>
     </dl>
@@ -232,27 +332,63 @@ function SaveMark({ state }: { state: SaveState }) {
 
 function SheetCorner({ scale, cursor }: { scale: number; cursor: readonly [number, number] | null }) {
   return (
-    <p aria-hidden className="bg-paper/92 font-figures pointer-events-none absolute start-2 bottom-2 px-1.5 py-0.5 text-xs">
+    <p
+      aria-hidden
+      className="bg-paper/92 font-figures pointer-events-none absolute start-2 bottom-2 px-1.5 py-0.5 text-xs"
+    >
       {Math.round(scale * 100)} %{cursor ? ` · ${Math.round(cursor[0])}, ${Math.round(cursor[1])}` : ""}
     </p>
   );
 }
 
-function CornerButton({ label, icon, onClick, disabled = false }: { label: string; icon: React.ReactNode; onClick: () => void; disabled?: boolean }) {
+function CornerButton({
+  label,
+  icon,
+  onClick,
+  disabled = false,
+}: {
+  label: string;
+  icon: React.ReactNode;
+  onClick: () => void;
+  disabled?: boolean;
+}) {
   return (
-    <button type="button" aria-label={label} title={label} disabled={disabled} onClick={onClick} className="bg-paper border-rule hover:border-ink rounded-sheet grid size-9 place-items-center border disabled:opacity-50">
+    <button
+      type="button"
+      aria-label={label}
+      title={label}
+      disabled={disabled}
+      onClick={onClick}
+      className="bg-paper border-rule hover:border-ink rounded-sheet grid size-9 place-items-center border disabled:opacity-50"
+    >
       {icon}
     </button>
   );
 }
 
-function LookSlider({ label, value, onChange }: { label: string; value: number; onChange: (value: number) => void }) {
+function LookSlider({
+  label,
+  value,
+  onChange,
+}: {
+  label: string;
+  value: number;
+  onChange: (value: number) => void;
+}) {
   return (
     <label className="mt-2 grid gap-1">
       <span>
         {label} <span className="font-figures">{Math.round(value * 100)} %</span>
       </span>
-      <input type="range" min={40} max={250} value={Math.round(value * 100)} onChange={(event) => onChange(Number(event.currentTarget.value) / 100)} onDoubleClick={() => onChange(1)} className="accent-agreed" />
+      <input
+        type="range"
+        min={40}
+        max={250}
+        value={Math.round(value * 100)}
+        onChange={(event) => onChange(Number(event.currentTarget.value) / 100)}
+        onDoubleClick={() => onChange(1)}
+        className="accent-agreed"
+      />
     </label>
   );
 }
@@ -260,7 +396,8 @@ function LookSlider({ label, value, onChange }: { label: string; value: number; 
 /** What is handed in, in words, and what it earns if all of it agrees. */
 function summarise(task: DeskTask, document: DeskDocument) {
   const geometryOf = new Map(task.classes.map((kind) => [kind.id, kind.geometry]));
-  const count = (origin: string) => document.instances.filter((instance) => instance.origin === origin).length;
+  const count = (origin: string) =>
+    document.instances.filter((instance) => instance.origin === origin).length;
   const outlines = document.instances.filter((instance) => geometryOf.get(instance.classId) === "polygon");
   const boxes = document.instances.length - outlines.length;
   const { baseCents, boxCents, polygonCents, capCents } = task.pay;
@@ -271,9 +408,14 @@ function summarise(task: DeskTask, document: DeskDocument) {
   ] as const;
   return {
     total: document.instances.length,
-    words: parts.filter(([number]) => number > 0).map(([number, word]) => `${number} ${word}`).join(", "),
+    words: parts
+      .filter(([number]) => number > 0)
+      .map(([number, word]) => `${number} ${word}`)
+      .join(", "),
     expectedCents: Math.min(capCents, baseCents + boxes * boxCents + outlines.length * polygonCents),
-    boxesToOutline: outlines.filter((instance) => instance.shape.kind === "box").map((instance) => instance.id),
+    boxesToOutline: outlines
+      .filter((instance) => instance.shape.kind === "box")
+      .map((instance) => instance.id),
   };
 }
 

@@ -7,9 +7,15 @@ type Line = { keys: string[]; does: string };
 
 const POINTER: Line[] = [
   { keys: ["press, drag"], does: "on open ground: a box" },
-  { keys: ["click", "click", "click"], does: "points of an outline; close on the first point, by Enter or by double click" },
+  {
+    keys: ["click", "click", "click"],
+    does: "points of an outline; close on the first point, by Enter or by double click",
+  },
   { keys: ["drag between clicks"], does: "a freehand stretch of the outline" },
-  { keys: ["4 clicks", "X"], does: "the extreme points (top, left, bottom, right): a tight box and a first outline" },
+  {
+    keys: ["4 clicks", "X"],
+    does: "the extreme points (top, left, bottom, right): a tight box and a first outline",
+  },
   { keys: ["click"], does: "on a shape: select it; then drag a point, an edge or the shape" },
   { keys: ["wheel", "pinch"], does: "zoom to the pointer" },
   { keys: ["Space, drag", "two fingers", "middle button"], does: "move the sheet" },
@@ -23,7 +29,10 @@ const KEYS: Line[] = [
   { keys: [",", "."], does: "look at the one before, the one after" },
   { keys: ["O"], does: "outline what is in the selected box" },
   { keys: ["R"], does: "mend an outline that crosses itself" },
-  { keys: ["Delete"], does: "the point under the pointer, or the selected shape; while plotting, the last point" },
+  {
+    keys: ["Delete"],
+    does: "the point under the pointer, or the selected shape; while plotting, the last point",
+  },
   { keys: ["[", "]"], does: "select the shape before, the next one" },
   { keys: ["arrows"], does: "move the selected shape by 1 px, with Shift by 10" },
   { keys: ["Ctrl Z", "Ctrl Shift Z"], does: "undo, redo" },

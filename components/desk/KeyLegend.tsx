@@ -21,16 +21,37 @@ export function KeyLegend({ controller, scene, classes }: Props) {
           const isHidden = scene.hiddenClassIds.has(kind.id);
           const isCurrent = scene.currentClassId === kind.id;
           return (
-            <li key={kind.id} className={cn("flex items-center", isCurrent && "bg-ink/8 shadow-[inset_3px_0_0_var(--ink)]")}>
-              <button type="button" aria-pressed={isCurrent} onClick={() => controller.setClass(kind.id)} className="flex min-h-10 min-w-0 grow items-center justify-between gap-2 px-2 text-start text-sm">
+            <li
+              key={kind.id}
+              className={cn("flex items-center", isCurrent && "bg-ink/8 shadow-[inset_3px_0_0_var(--ink)]")}
+            >
+              <button
+                type="button"
+                aria-pressed={isCurrent}
+                onClick={() => controller.setClass(kind.id)}
+                className="flex min-h-10 min-w-0 grow items-center justify-between gap-2 px-2 text-start text-sm"
+              >
                 <ClassSwatch number={kind.number} colour={kind.colour} name={kind.name} />
                 <span className="text-muted font-figures">
                   {count}
-                  <span className="sr-only"> drawn, {kind.geometry === "box" ? "as boxes" : "as outlines"}</span>
+                  <span className="sr-only">
+                    {" "}
+                    drawn, {kind.geometry === "box" ? "as boxes" : "as outlines"}
+                  </span>
                 </span>
               </button>
-              <button type="button" aria-label={isHidden ? `Show ${kind.name}` : `Hide ${kind.name}`} aria-pressed={isHidden} onClick={() => controller.toggleClass(kind.id)} className="text-muted hover:text-ink hidden size-9 place-items-center md:grid">
-                {isHidden ? <EyeOff aria-hidden className="size-4" /> : <Eye aria-hidden className="size-4" />}
+              <button
+                type="button"
+                aria-label={isHidden ? `Show ${kind.name}` : `Hide ${kind.name}`}
+                aria-pressed={isHidden}
+                onClick={() => controller.toggleClass(kind.id)}
+                className="text-muted hover:text-ink hidden size-9 place-items-center md:grid"
+              >
+                {isHidden ? (
+                  <EyeOff aria-hidden className="size-4" />
+                ) : (
+                  <Eye aria-hidden className="size-4" />
+                )}
               </button>
             </li>
           );

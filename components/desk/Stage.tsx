@@ -70,7 +70,8 @@ export function Stage({ controller, scene, task, look, isPanning, onScreenCursor
     const rect = event.currentTarget.getBoundingClientRect();
     return [event.clientX - rect.left, event.clientY - rect.top];
   };
-  const kindOf = (event: ReactPointerEvent): PointerKind => (event.pointerType === "touch" ? "touch" : event.pointerType === "pen" ? "pen" : "mouse");
+  const kindOf = (event: ReactPointerEvent): PointerKind =>
+    event.pointerType === "touch" ? "touch" : event.pointerType === "pen" ? "pen" : "mouse";
 
   function onPointerDown(event: ReactPointerEvent<HTMLDivElement>): void {
     event.currentTarget.focus({ preventScroll: true });
@@ -123,7 +124,11 @@ export function Stage({ controller, scene, task, look, isPanning, onScreenCursor
     if (event.button === 0) controller.pointerUp(at(event), kindOf(event));
   }
 
-  const placing = scene.tool.mode === "plotting" || scene.tool.mode === "plotting-press" || scene.tool.mode === "boxing" || scene.tool.mode === "shaping";
+  const placing =
+    scene.tool.mode === "plotting" ||
+    scene.tool.mode === "plotting-press" ||
+    scene.tool.mode === "boxing" ||
+    scene.tool.mode === "shaping";
   const cursorOnScreen = scene.cursor ? toScreen(viewport, scene.cursor) : null;
   return (
     <div
@@ -164,7 +169,8 @@ export function Stage({ controller, scene, task, look, isPanning, onScreenCursor
         onLoad={() => setImageState("ready")}
         onError={() => setImageState("failed")}
         ref={(element) => {
-          if (element?.complete && element.naturalWidth > 0 && imageState === "loading") setImageState("ready");
+          if (element?.complete && element.naturalWidth > 0 && imageState === "loading")
+            setImageState("ready");
         }}
         className="pointer-events-none absolute top-0 left-0 max-w-none origin-top-left"
         style={{
@@ -172,7 +178,10 @@ export function Stage({ controller, scene, task, look, isPanning, onScreenCursor
           height: task.height,
           transform: `translate(${viewport.x}px, ${viewport.y}px) scale(${viewport.scale})`,
           imageRendering: viewport.scale >= PIXELS_FROM ? "pixelated" : "auto",
-          filter: look.brightness === 1 && look.contrast === 1 ? "none" : `brightness(${look.brightness}) contrast(${look.contrast})`,
+          filter:
+            look.brightness === 1 && look.contrast === 1
+              ? "none"
+              : `brightness(${look.brightness}) contrast(${look.contrast})`,
         }}
       />
       {viewport.scale >= GRID_FROM ? (
@@ -180,7 +189,8 @@ export function Stage({ controller, scene, task, look, isPanning, onScreenCursor
           aria-hidden
           className="pointer-events-none absolute inset-0 opacity-30"
           style={{
-            backgroundImage: "linear-gradient(to right, #fff 1px, transparent 1px), linear-gradient(to bottom, #fff 1px, transparent 1px)",
+            backgroundImage:
+              "linear-gradient(to right, #fff 1px, transparent 1px), linear-gradient(to bottom, #fff 1px, transparent 1px)",
             backgroundSize: `${viewport.scale}px ${viewport.scale}px`,
             backgroundPosition: `${viewport.x}px ${viewport.y}px`,
           }}
@@ -195,8 +205,14 @@ export function Stage({ controller, scene, task, look, isPanning, onScreenCursor
           <div className="absolute inset-y-0 w-px bg-white/55" style={{ left: cursorOnScreen[0] }} />
         </div>
       ) : null}
-      {placing && scene.cursor && cursorOnScreen ? <Magnifier task={task} at={scene.cursor} on={cursorOnScreen} scale={viewport.scale} /> : null}
-      {imageState === "loading" ? <p className="text-stage-ink absolute inset-0 grid place-items-center">The picture is on its way ...</p> : null}
+      {placing && scene.cursor && cursorOnScreen ? (
+        <Magnifier task={task} at={scene.cursor} on={cursorOnScreen} scale={viewport.scale} />
+      ) : null}
+      {imageState === "loading" ? (
+        <p className="text-stage-ink absolute inset-0 grid place-items-center">
+          The picture is on its way ...
+        </p>
+      ) : null}
       {imageState === "failed" ? (
         <p role="alert" className="text-stage-ink absolute inset-0 grid place-items-center p-6 text-center">
           The picture could not be loaded. Your drawing is safe; reload the page to try again.
@@ -212,14 +228,29 @@ function pinchOf(points: readonly ScreenPoint[]): { distance: number; middle: Sc
 }
 
 /** What lies under the pointer, larger, on the side where the hand is not. */
-function Magnifier({ task, at, on, scale }: { task: DeskTask; at: readonly [number, number]; on: ScreenPoint; scale: number }) {
+function Magnifier({
+  task,
+  at,
+  on,
+  scale,
+}: {
+  task: DeskTask;
+  at: readonly [number, number];
+  on: ScreenPoint;
+  scale: number;
+}) {
   const zoom = Math.max(2, Math.min(16, scale * MAGNIFIER_ZOOM));
   const half = MAGNIFIER_PX / 2;
   return (
     <div
       aria-hidden
       className="pointer-events-none absolute overflow-hidden rounded-full border-2 border-white shadow-lg"
-      style={{ width: MAGNIFIER_PX, height: MAGNIFIER_PX, left: on[0] > MAGNIFIER_PX + 60 ? on[0] - MAGNIFIER_PX - 36 : on[0] + 36, top: on[1] > MAGNIFIER_PX + 60 ? on[1] - MAGNIFIER_PX - 36 : on[1] + 36 }}
+      style={{
+        width: MAGNIFIER_PX,
+        height: MAGNIFIER_PX,
+        left: on[0] > MAGNIFIER_PX + 60 ? on[0] - MAGNIFIER_PX - 36 : on[0] + 36,
+        top: on[1] > MAGNIFIER_PX + 60 ? on[1] - MAGNIFIER_PX - 36 : on[1] + 36,
+      }}
     >
       <div
         className="absolute inset-0"

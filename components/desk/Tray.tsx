@@ -19,12 +19,22 @@ export function Tray({ controller, scene, task }: Props) {
     current.current?.scrollIntoView({ block: "nearest", inline: "nearest" });
   }, [scene.dealtIndex, scene.dealt]);
   return (
-    <section aria-label="Tray of proposals" className="border-line flex items-center gap-3 border-t px-3 py-1.5">
+    <section
+      aria-label="Tray of proposals"
+      className="border-line flex items-center gap-3 border-t px-3 py-1.5"
+    >
       {scene.dealt.length === 0 ? (
-        <p className="text-muted py-2 text-sm">{task.proposals.length === 0 ? "No proposal is worth your time here: draw what you see." : "The tray is empty. Draw what is missing."}</p>
+        <p className="text-muted py-2 text-sm">
+          {task.proposals.length === 0
+            ? "No proposal is worth your time here: draw what you see."
+            : "The tray is empty. Draw what is missing."}
+        </p>
       ) : (
         <>
-          <ol className="flex min-w-0 grow gap-1.5 overflow-x-auto py-0.5" aria-label={`${scene.dealt.length} proposals, the most useful first`}>
+          <ol
+            className="flex min-w-0 grow gap-1.5 overflow-x-auto py-0.5"
+            aria-label={`${scene.dealt.length} proposals, the most useful first`}
+          >
             {scene.dealt.map((proposal, index) => (
               <li key={proposal.id}>
                 <button
@@ -33,7 +43,12 @@ export function Tray({ controller, scene, task }: Props) {
                   aria-label={`Proposal ${index + 1} of ${scene.dealt.length}, ${Math.round(proposal.score * 100)} percent likely`}
                   aria-current={index === scene.dealtIndex}
                   onClick={() => controller.showDealt(index)}
-                  className={cn("bg-stage relative block overflow-hidden border-2", index === scene.dealtIndex ? "border-waits" : "border-transparent opacity-80 hover:opacity-100")}
+                  className={cn(
+                    "bg-stage relative block overflow-hidden border-2",
+                    index === scene.dealtIndex
+                      ? "border-waits"
+                      : "border-transparent opacity-80 hover:opacity-100",
+                  )}
                   style={{ width: CARD_PX, height: CARD_PX }}
                 >
                   <Cutting proposal={proposal} task={task} />
@@ -69,7 +84,12 @@ function Cutting({ proposal, task }: { proposal: DeskProposal; task: DeskTask })
       ? `M${x} ${y}h${width}v${height}h${-width}z`
       : proposal.shape.rings.map((ring) => `M${ring.map(([px, py]) => `${px} ${py}`).join("L")}z`).join("");
   return (
-    <svg aria-hidden viewBox={`${left} ${top} ${side} ${side}`} className="size-full" preserveAspectRatio="xMidYMid slice">
+    <svg
+      aria-hidden
+      viewBox={`${left} ${top} ${side} ${side}`}
+      className="size-full"
+      preserveAspectRatio="xMidYMid slice"
+    >
       <image href={task.imageUrl} width={task.width} height={task.height} />
       <path d={path} fill="none" stroke="#0b1116" strokeWidth="4" vectorEffect="non-scaling-stroke" />
       <path d={path} fill="none" stroke="#ffffff" strokeWidth="1.8" vectorEffect="non-scaling-stroke" />

@@ -24,7 +24,9 @@ self.onmessage = (event: MessageEvent<OutlineQuestion>) => {
   const { rings, confidence } = outlineInBox({ width, height, data }, box);
   const answer: OutlineAnswer = {
     confidence,
-    rings: rings.map((ring) => ring.map(([x, y]) => [x / toImage.scaleX + toImage.left, y / toImage.scaleY + toImage.top] as const)),
+    rings: rings.map((ring) =>
+      ring.map(([x, y]) => [x / toImage.scaleX + toImage.left, y / toImage.scaleY + toImage.top] as const),
+    ),
   };
   self.postMessage(answer);
 };

@@ -28,8 +28,10 @@ function patternFill(pattern: string, colour: string): Pattern | string {
     ink.lineTo(x2, y2);
     ink.stroke();
   };
-  if (pattern === "rising" || pattern === "crossed") for (const shift of [-n, 0, n]) line(shift, n, shift + n, 0);
-  if (pattern === "falling" || pattern === "crossed") for (const shift of [-n, 0, n]) line(shift, 0, shift + n, n);
+  if (pattern === "rising" || pattern === "crossed")
+    for (const shift of [-n, 0, n]) line(shift, n, shift + n, 0);
+  if (pattern === "falling" || pattern === "crossed")
+    for (const shift of [-n, 0, n]) line(shift, 0, shift + n, n);
   if (pattern === "dots") ink.fillRect(n / 2 - 1, n / 2 - 1, 2.5, 2.5);
   if (pattern === "level") line(0, n / 2, n, n / 2);
   if (pattern === "upright") line(n / 2, 0, n / 2, n);
@@ -48,7 +50,13 @@ function pathText(shape: Shape): string {
   return shape.rings.map((ring) => `M${ring.map(([x, y]) => `${x} ${y}`).join("L")}z`).join("");
 }
 
-const common = { objectCaching: false, selectable: false, evented: false, originX: "left", originY: "top" } as const;
+const common = {
+  objectCaching: false,
+  selectable: false,
+  evented: false,
+  originX: "left",
+  originY: "top",
+} as const;
 
 /** Paints a scene's shapes on a fabric canvas. Objects are kept while their instance is the same. */
 export class ShapePainter {
@@ -104,16 +112,48 @@ export class ShapePainter {
     const px = 1 / scale;
     const path = pathText(instance.shape);
     const parts: FabricObject[] = [
-      new Path(path, { ...common, fill: this.fillOf(kind), fillRule: "evenodd", stroke: CASING, strokeWidth: (isSelected ? 5 : 3.4) * px }),
-      new Path(path, { ...common, fill: "", stroke: colour, strokeWidth: (isSelected ? 3 : 1.8) * px, ...(instance.occluded && { strokeDashArray: [8 * px, 5 * px] }) }),
+      new Path(path, {
+        ...common,
+        fill: this.fillOf(kind),
+        fillRule: "evenodd",
+        stroke: CASING,
+        strokeWidth: (isSelected ? 5 : 3.4) * px,
+      }),
+      new Path(path, {
+        ...common,
+        fill: "",
+        stroke: colour,
+        strokeWidth: (isSelected ? 3 : 1.8) * px,
+        ...(instance.occluded && { strokeDashArray: [8 * px, 5 * px] }),
+      }),
     ];
-    const [x, y] = instance.shape.kind === "box" ? instance.shape.box : (instance.shape.rings[0]?.[0] ?? [0, 0]);
+    const [x, y] =
+      instance.shape.kind === "box" ? instance.shape.box : (instance.shape.rings[0]?.[0] ?? [0, 0]);
     if (kind) {
       parts.push(
         new Group(
           [
-            new Rect({ ...common, left: 0, top: 0, width: 16, height: 16, fill: colour, stroke: CASING, strokeWidth: 1 }),
-            new FabricText(String(kind.number), { ...common, left: 8, top: 8, originX: "center", originY: "center", fontSize: 11, fontWeight: 700, fontFamily: "monospace", fill: inkOn(colour) }),
+            new Rect({
+              ...common,
+              left: 0,
+              top: 0,
+              width: 16,
+              height: 16,
+              fill: colour,
+              stroke: CASING,
+              strokeWidth: 1,
+            }),
+            new FabricText(String(kind.number), {
+              ...common,
+              left: 8,
+              top: 8,
+              originX: "center",
+              originY: "center",
+              fontSize: 11,
+              fontWeight: 700,
+              fontFamily: "monospace",
+              fill: inkOn(colour),
+            }),
           ],
           { ...common, left: x, top: y, scaleX: px, scaleY: px },
         ),
@@ -125,7 +165,20 @@ export class ShapePainter {
 
   private handles(shape: Shape, colour: string, px: number): FabricObject[] {
     const points: readonly Point[] = shape.kind === "box" ? corners(shape.box) : shape.rings.flat();
-    return points.map(([x, y]) => new Circle({ ...common, left: x, top: y, originX: "center", originY: "center", radius: 4.5 * px, fill: "#ffffff", stroke: colour, strokeWidth: 2 * px }));
+    return points.map(
+      ([x, y]) =>
+        new Circle({
+          ...common,
+          left: x,
+          top: y,
+          originX: "center",
+          originY: "center",
+          radius: 4.5 * px,
+          fill: "#ffffff",
+          stroke: colour,
+          strokeWidth: 2 * px,
+        }),
+    );
   }
 
   private makeDraft(scene: Scene): FabricObject[] {
@@ -139,13 +192,36 @@ export class ShapePainter {
       const own = this.classes.get(proposal.classId ?? "")?.colour ?? "#ffffff";
       const path = pathText(proposal.shape);
       parts.push(
-        new Path(path, { ...common, fill: "rgba(255,255,255,0.14)", fillRule: "evenodd", stroke: CASING, strokeWidth: 4 * px }),
-        new Path(path, { ...common, fill: "", stroke: own, strokeWidth: 2 * px, strokeDashArray: [3 * px, 4 * px] }),
+        new Path(path, {
+          ...common,
+          fill: "rgba(255,255,255,0.14)",
+          fillRule: "evenodd",
+          stroke: CASING,
+          strokeWidth: 4 * px,
+        }),
+        new Path(path, {
+          ...common,
+          fill: "",
+          stroke: own,
+          strokeWidth: 2 * px,
+          strokeDashArray: [3 * px, 4 * px],
+        }),
       );
     }
     if (draft?.kind === "box") {
       const [left, top, width, height] = draft.box;
-      parts.push(new Rect({ ...common, left, top, width, height, fill: `${colour}22`, stroke: colour, strokeWidth: 2 * px }));
+      parts.push(
+        new Rect({
+          ...common,
+          left,
+          top,
+          width,
+          height,
+          fill: `${colour}22`,
+          stroke: colour,
+          strokeWidth: 2 * px,
+        }),
+      );
     } else if (draft?.kind === "shape") {
       const instance = scene.document.instances.find((entry) => entry.id === draft.id);
       if (instance) parts.push(...this.make({ ...instance, shape: draft.shape }, true, scene.viewport.scale));
@@ -155,7 +231,20 @@ export class ShapePainter {
       parts.push(
         new Path(path, { ...common, fill: "", stroke: CASING, strokeWidth: 3.6 * px }),
         new Path(path, { ...common, fill: "", stroke: colour, strokeWidth: 1.8 * px }),
-        ...draft.points.map(([x, y], index) => new Circle({ ...common, left: x, top: y, originX: "center", originY: "center", radius: (index === 0 ? 6 : 4) * px, fill: index === 0 ? colour : "#ffffff", stroke: CASING, strokeWidth: 1.5 * px })),
+        ...draft.points.map(
+          ([x, y], index) =>
+            new Circle({
+              ...common,
+              left: x,
+              top: y,
+              originX: "center",
+              originY: "center",
+              radius: (index === 0 ? 6 : 4) * px,
+              fill: index === 0 ? colour : "#ffffff",
+              stroke: CASING,
+              strokeWidth: 1.5 * px,
+            }),
+        ),
       );
     }
     return parts;

@@ -14,5 +14,7 @@ export type DeskMode = "annotate" | "redraw";
 
 /** The status of a failed call, 0 when the network was away. */
 export function statusOf(error: unknown): number {
-  return typeof error === "object" && error !== null && "status" in error && typeof error.status === "number" ? error.status : 0;
+  return typeof error === "object" && error !== null && "status" in error && typeof error.status === "number"
+    ? error.status
+    : 0;
 }

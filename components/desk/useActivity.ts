@@ -36,5 +36,10 @@ export function useActivity() {
       for (const event of events) window.removeEventListener(event, sign);
     };
   }, []);
-  return { seconds, restDue, dismissRest: () => setRestDue(false), activeSeconds: () => activeMs.current / 1000 };
+  return {
+    seconds,
+    restDue,
+    dismissRest: () => setRestDue(false),
+    activeSeconds: () => activeMs.current / 1000,
+  };
 }

@@ -43,7 +43,12 @@ export function useKeys(controller: DeskController, actions: Actions): boolean {
   return isPanning;
 }
 
-const ARROWS: Record<string, readonly [number, number]> = { ArrowLeft: [-1, 0], ArrowRight: [1, 0], ArrowUp: [0, -1], ArrowDown: [0, 1] };
+const ARROWS: Record<string, readonly [number, number]> = {
+  ArrowLeft: [-1, 0],
+  ArrowRight: [1, 0],
+  ArrowUp: [0, -1],
+  ArrowDown: [0, 1],
+};
 
 /** Carries out a key. Answers whether it was one of the desk's. */
 function press(event: KeyboardEvent, controller: DeskController, actions: Actions): boolean {
@@ -54,64 +59,64 @@ function press(event: KeyboardEvent, controller: DeskController, actions: Action
       else controller.undo();
       return true;
     }
-    if (key.toLowerCase() === "y") return controller.redo(), true;
-    if (key.toLowerCase() === "d") return controller.duplicate(), true;
-    if (key === "Enter") return actions.onHandIn(), true;
+    if (key.toLowerCase() === "y") return (controller.redo(), true);
+    if (key.toLowerCase() === "d") return (controller.duplicate(), true);
+    if (key === "Enter") return (actions.onHandIn(), true);
     return false;
   }
   if (event.altKey) return false;
   const arrow = ARROWS[key];
   if (arrow) {
     const by = event.shiftKey ? 10 : 1;
-    return controller.nudge(arrow[0] * by, arrow[1] * by), true;
+    return (controller.nudge(arrow[0] * by, arrow[1] * by), true);
   }
-  if (/^[0-9]$/.test(key)) return controller.setClassByNumber(key === "0" ? 10 : Number(key)), true;
+  if (/^[0-9]$/.test(key)) return (controller.setClassByNumber(key === "0" ? 10 : Number(key)), true);
   switch (key) {
     case "Enter":
-      return controller.finish(), true;
+      return (controller.finish(), true);
     case "Escape":
-      return controller.cancel(), true;
+      return (controller.cancel(), true);
     case "Delete":
-      return controller.deleteAt(actions.cursor.current), true;
+      return (controller.deleteAt(actions.cursor.current), true);
     case "Backspace":
-      return controller.deleteAt(actions.cursor.current), true;
+      return (controller.deleteAt(actions.cursor.current), true);
     case "+":
     case "=":
-      return controller.zoomCentre(1.25), true;
+      return (controller.zoomCentre(1.25), true);
     case "-":
-      return controller.zoomCentre(0.8), true;
+      return (controller.zoomCentre(0.8), true);
     case "[":
-      return controller.selectNext(-1), true;
+      return (controller.selectNext(-1), true);
     case "]":
-      return controller.selectNext(1), true;
+      return (controller.selectNext(1), true);
     case ",":
-      return controller.showDealt(controller.getScene().dealtIndex - 1), true;
+      return (controller.showDealt(controller.getScene().dealtIndex - 1), true);
     case ".":
-      return controller.showDealt(controller.getScene().dealtIndex + 1), true;
+      return (controller.showDealt(controller.getScene().dealtIndex + 1), true);
     case "?":
-      return actions.onHelp(), true;
+      return (actions.onHelp(), true);
   }
   switch (key.toLowerCase()) {
     case "j":
-      return controller.take(false), true;
+      return (controller.take(false), true);
     case "k":
-      return controller.take(true), true;
+      return (controller.take(true), true);
     case "l":
-      return controller.sendAway(), true;
+      return (controller.sendAway(), true);
     case "x":
-      return controller.extremes(), true;
+      return (controller.extremes(), true);
     case "r":
-      return controller.repair(), true;
+      return (controller.repair(), true);
     case "o":
-      return actions.onOutline(), true;
+      return (actions.onOutline(), true);
     case "n":
-      return controller.plotAtCursor(), true;
+      return (controller.plotAtCursor(), true);
     case "m":
-      return controller.boxAtCursor(), true;
+      return (controller.boxAtCursor(), true);
     case "w":
-      return (event.shiftKey ? controller.fitSelection() : controller.fit()), true;
+      return (event.shiftKey ? controller.fitSelection() : controller.fit(), true);
     case "i":
-      return actions.onBrief(), true;
+      return (actions.onBrief(), true);
   }
   return false;
 }

@@ -33,6 +33,8 @@ export function useLease(firstExpiryMs: number, services: DeskServices, mode: De
     const timer = setInterval(() => setSoon(expiresAtMs - Date.now() < SOON_MS), 5000);
     return () => clearInterval(timer);
   }, [expiresAtMs]);
-  const expiresAt = new Intl.DateTimeFormat(undefined, { hour: "2-digit", minute: "2-digit" }).format(new Date(Math.min(expiresAtMs, 8.64e15)));
+  const expiresAt = new Intl.DateTimeFormat(undefined, { hour: "2-digit", minute: "2-digit" }).format(
+    new Date(Math.min(expiresAtMs, 8.64e15)),
+  );
   return { state: isLost ? ("lost" as const) : isSoon ? ("soon" as const) : ("held" as const), expiresAt };
 }

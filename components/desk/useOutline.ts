@@ -48,7 +48,10 @@ function cut(picture: ImageBitmap, box: readonly [number, number, number, number
   const right = Math.min(picture.width, Math.ceil(x + width + margin));
   const bottom = Math.min(picture.height, Math.ceil(y + height + margin));
   const scale = Math.min(1, SIDE_MAX_PX / Math.max(right - left, bottom - top));
-  const canvas = new OffscreenCanvas(Math.max(8, Math.round((right - left) * scale)), Math.max(8, Math.round((bottom - top) * scale)));
+  const canvas = new OffscreenCanvas(
+    Math.max(8, Math.round((right - left) * scale)),
+    Math.max(8, Math.round((bottom - top) * scale)),
+  );
   const ink = canvas.getContext("2d");
   if (!ink) throw new Error("no canvas");
   ink.drawImage(picture, left, top, right - left, bottom - top, 0, 0, canvas.width, canvas.height);

@@ -2,10 +2,24 @@ import { Money } from "@/components/ui/Money";
 import { Cell, HeadCell, Row, RowHead, Table, TableBody, TableHead } from "@/components/ui/Table";
 import { When } from "@/components/ui/When";
 
-export type MovementRow = { entryId: number; memo: string; cents: number; balanceCents: number; postedAtMs: number };
+export type MovementRow = {
+  entryId: number;
+  memo: string;
+  cents: number;
+  balanceCents: number;
+  postedAtMs: number;
+};
 
 /** Entries of one account with the balance after each, latest first. */
-export function Movements({ caption, rows, empty }: { caption: string; rows: readonly MovementRow[]; empty: string }) {
+export function Movements({
+  caption,
+  rows,
+  empty,
+}: {
+  caption: string;
+  rows: readonly MovementRow[];
+  empty: string;
+}) {
   if (rows.length === 0) return <p className="text-muted mt-6">{empty}</p>;
   return (
     <div className="mt-6">

@@ -50,8 +50,14 @@ export function Uploader({ batchId, onSent }: Props) {
   const isActive = count("reading", "waiting", "sending") > 0;
   const isPaused = count("paused") > 0;
   useLeaveGuard(isActive);
-  const total = items.reduce((sum, item) => sum + (item.state === "refused" || item.state === "duplicate" ? 0 : item.byteSize), 0);
-  const sent = items.reduce((sum, item) => sum + (item.state === "refused" || item.state === "duplicate" ? 0 : item.sentBytes), 0);
+  const total = items.reduce(
+    (sum, item) => sum + (item.state === "refused" || item.state === "duplicate" ? 0 : item.byteSize),
+    0,
+  );
+  const sent = items.reduce(
+    (sum, item) => sum + (item.state === "refused" || item.state === "duplicate" ? 0 : item.sentBytes),
+    0,
+  );
   const problems = items.filter((item) => ["failed", "refused", "duplicate"].includes(item.state));
   const others = items.filter((item) => !["failed", "refused", "duplicate", "sent"].includes(item.state));
   return (
@@ -70,12 +76,14 @@ export function Uploader({ batchId, onSent }: Props) {
           Choose files
         </Button>
         <p className="text-muted max-w-prose text-sm">
-          JPEG, PNG, WebP, AVIF or TIFF, up to 50 MB and 50 megapixels each, {FILES_PER_DROP_MAX} at a time. Place and camera data are removed from every stored copy.
+          JPEG, PNG, WebP, AVIF or TIFF, up to 50 MB and 50 megapixels each, {FILES_PER_DROP_MAX} at a time.
+          Place and camera data are removed from every stored copy.
         </p>
       </div>
       {tooMany > 0 ? (
         <Notice kind="caution" live>
-          {FILES_PER_DROP_MAX} files at a time: the last {tooMany} were left out. Drop them again once these are up.
+          {FILES_PER_DROP_MAX} files at a time: the last {tooMany} were left out. Drop them again once these
+          are up.
         </Notice>
       ) : null}
       {restored > 0 && isActive ? (
@@ -93,17 +101,29 @@ export function Uploader({ batchId, onSent }: Props) {
           />
           <div className="flex flex-wrap gap-2">
             {isActive ? (
-              <Button size="small" icon={<Pause aria-hidden className="size-4" />} onClick={() => queue.pause()}>
+              <Button
+                size="small"
+                icon={<Pause aria-hidden className="size-4" />}
+                onClick={() => queue.pause()}
+              >
                 Pause
               </Button>
             ) : null}
             {isPaused ? (
-              <Button size="small" icon={<Play aria-hidden className="size-4" />} onClick={() => queue.resume()}>
+              <Button
+                size="small"
+                icon={<Play aria-hidden className="size-4" />}
+                onClick={() => queue.resume()}
+              >
                 Go on
               </Button>
             ) : null}
             {count("failed") > 0 ? (
-              <Button size="small" icon={<RotateCcw aria-hidden className="size-4" />} onClick={() => queue.retry()}>
+              <Button
+                size="small"
+                icon={<RotateCcw aria-hidden className="size-4" />}
+                onClick={() => queue.retry()}
+              >
                 Try the {count("failed")} failed again
               </Button>
             ) : null}
@@ -130,7 +150,12 @@ function UploadRow({ item, queue }: { item: UploadItem; queue: UploadQueue }) {
     <li className="flex flex-wrap items-center gap-x-4 gap-y-1 py-2 text-sm">
       <span className="min-w-0 grow basis-48 truncate font-semibold">{item.name}</span>
       {item.state === "sending" ? (
-        <Progress label={`Upload of ${item.name}`} labelHidden value={item.sentBytes / item.byteSize} className="w-40" />
+        <Progress
+          label={`Upload of ${item.name}`}
+          labelHidden
+          value={item.sentBytes / item.byteSize}
+          className="w-40"
+        />
       ) : null}
       <span className={cn(isBad ? "text-disputed-ink" : "text-muted", "basis-auto")}>
         {WORD[item.state]}
@@ -141,7 +166,12 @@ function UploadRow({ item, queue }: { item: UploadItem; queue: UploadQueue }) {
           Try again
         </Button>
       ) : null}
-      <button type="button" aria-label={`Take ${item.name} off the list`} className="hover:bg-ink/8 rounded-sheet grid size-8 place-items-center" onClick={() => queue.drop(item.key)}>
+      <button
+        type="button"
+        aria-label={`Take ${item.name} off the list`}
+        className="hover:bg-ink/8 rounded-sheet grid size-8 place-items-center"
+        onClick={() => queue.drop(item.key)}
+      >
         <X aria-hidden className="size-4" />
       </button>
     </li>

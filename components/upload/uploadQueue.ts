@@ -2,7 +2,8 @@ import { createStore, del, entries, set, type UseStore } from "idb-keyval";
 import type { UploadPlan } from "@/lib/contracts/batches";
 import { IMAGE_BYTES_MAX, IMAGE_TYPES } from "@/lib/contracts/batches";
 
-export type UploadState = "reading" | "waiting" | "sending" | "paused" | "sent" | "failed" | "duplicate" | "refused";
+export type UploadState =
+  "reading" | "waiting" | "sending" | "paused" | "sent" | "failed" | "duplicate" | "refused";
 
 export type UploadItem = {
   readonly key: string;
@@ -92,7 +93,8 @@ export class UploadQueue {
   pause(): void {
     this.isPaused = true;
     for (const entry of this.entries) {
-      if (entry.state === "reading" || entry.state === "waiting" || entry.state === "sending") entry.state = "paused";
+      if (entry.state === "reading" || entry.state === "waiting" || entry.state === "sending")
+        entry.state = "paused";
       entry.abort?.abort();
     }
     this.changed();
@@ -150,7 +152,8 @@ export class UploadQueue {
         try {
           entry.sha256 = await sha256Of(entry.file);
           if (entry.state === "reading") entry.state = "waiting";
-          if (this.store) await set(`${this.batchId}/${entry.sha256}`, entry.file, this.store).catch(() => undefined);
+          if (this.store)
+            await set(`${this.batchId}/${entry.sha256}`, entry.file, this.store).catch(() => undefined);
         } catch {
           fail(entry, "The file cannot be read any more. Choose it again.");
         }
@@ -168,14 +171,20 @@ export class UploadQueue {
     this.isPlanning = true;
     try {
       for (;;) {
-        const fresh = this.entries.filter((entry) => entry.state === "waiting" && !entry.plan).slice(0, PLANS_AT_ONCE);
+        const fresh = this.entries
+          .filter((entry) => entry.state === "waiting" && !entry.plan)
+          .slice(0, PLANS_AT_ONCE);
         if (fresh.length === 0 || this.isPaused) break;
         const plans = await this.askForPlans(fresh);
         fresh.forEach((entry, index) => {
           const plan = plans?.[index];
           if (!plan) fail(entry, "The server did not answer. Try again.");
           else if (plan.kind === "refused") [entry.state, entry.reason] = ["refused", plan.reason];
-          else if (plan.kind === "duplicate") [entry.state, entry.reason] = ["duplicate", `The same picture is here already as ${plan.fileName}.`];
+          else if (plan.kind === "duplicate")
+            [entry.state, entry.reason] = [
+              "duplicate",
+              `The same picture is here already as ${plan.fileName}.`,
+            ];
           else entry.plan = plan;
           if (entry.state === "refused" || entry.state === "duplicate") void this.forget(entry);
         });
@@ -219,7 +228,14 @@ export class UploadQueue {
     try {
       const plan = entry.plan;
       if (plan?.kind === "put") {
-        await put(plan.url, entry.file, plan.headers, abort.signal, (bytes) => this.progress(entry, bytes), [412]);
+        await put(
+          plan.url,
+          entry.file,
+          plan.headers,
+          abort.signal,
+          (bytes) => this.progress(entry, bytes),
+          [412],
+        );
         await this.report(plan.imageId, []);
       } else if (plan?.kind === "parts") {
         await this.report(plan.imageId, await this.sendParts(entry, plan, abort.signal));
@@ -229,7 +245,8 @@ export class UploadQueue {
       void this.forget(entry);
       this.onSent();
     } catch (error) {
-      if (!abort.signal.aborted) fail(entry, error instanceof Error ? error.message : "The upload broke off.");
+      if (!abort.signal.aborted)
+        fail(entry, error instanceof Error ? error.message : "The upload broke off.");
     } finally {
       entry.abort = null;
       this.changed();
@@ -257,7 +274,8 @@ export class UploadQueue {
   }
 
   private async forget(entry: Entry): Promise<void> {
-    if (this.store && entry.sha256) await del(`${this.batchId}/${entry.sha256}`, this.store).catch(() => undefined);
+    if (this.store && entry.sha256)
+      await del(`${this.batchId}/${entry.sha256}`, this.store).catch(() => undefined);
   }
 
   private progress(entry: Entry, bytes: number): void {
@@ -266,7 +284,14 @@ export class UploadQueue {
   }
 
   private changed(): void {
-    this.items = this.entries.map(({ key, name, byteSize, state, sentBytes, reason }) => ({ key, name, byteSize, state, sentBytes, reason }));
+    this.items = this.entries.map(({ key, name, byteSize, state, sentBytes, reason }) => ({
+      key,
+      name,
+      byteSize,
+      state,
+      sentBytes,
+      reason,
+    }));
     for (const listener of this.listeners) listener();
   }
 }
@@ -284,7 +309,8 @@ function mediaTypeOf(file: File): string {
 function refusalOf(file: File): string | null {
   if (file.size === 0) return "The file is empty.";
   if (file.size > IMAGE_BYTES_MAX) return "Over 50 MB.";
-  if (!(IMAGE_TYPES as readonly string[]).includes(mediaTypeOf(file))) return "Not a JPEG, PNG, WebP, AVIF or TIFF picture.";
+  if (!(IMAGE_TYPES as readonly string[]).includes(mediaTypeOf(file)))
+    return "Not a JPEG, PNG, WebP, AVIF or TIFF picture.";
   return null;
 }
 
@@ -294,7 +320,11 @@ async function sha256Of(file: File): Promise<string> {
 }
 
 function postJson(url: string, body: unknown): Promise<Response> {
-  return fetch(url, { method: "POST", headers: { "content-type": "application/json" }, body: JSON.stringify(body) });
+  return fetch(url, {
+    method: "POST",
+    headers: { "content-type": "application/json" },
+    body: JSON.stringify(body),
+  });
 }
 
 /** PUTs a body with progress (fetch has none for uploads) and answers with the entity tag. */
@@ -313,7 +343,8 @@ function put(
     request.upload.onprogress = (event) => onProgress(event.loaded);
     request.onload = () => {
       // 412: the very same object arrived before, and only the answer was lost.
-      if (request.status < 300 || alsoFine.includes(request.status)) resolve(request.getResponseHeader("etag") ?? "");
+      if (request.status < 300 || alsoFine.includes(request.status))
+        resolve(request.getResponseHeader("etag") ?? "");
       else reject(new Error(`The store refused the file (${request.status}).`));
     };
     request.onerror = () => reject(new Error("The network broke off."));

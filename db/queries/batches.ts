@@ -32,17 +32,37 @@ export function listBatchesOf(db: Reader, teamIds: string[]) {
     .orderBy(desc(batches.createdAtMs), desc(batches.id))
     .limit(200)
     .all();
-  const progress = progressOf(db, rows.map((row) => row.id));
+  const progress = progressOf(
+    db,
+    rows.map((row) => row.id),
+  );
   return rows.map((row) => ({ ...row, progress: progress.get(row.id) ?? NO_PROGRESS }));
 }
 
-export type BatchProgress = { images: number; refused: number; settled: number; short: number; split: number; submissions: number; agreement: number | null };
-const NO_PROGRESS: BatchProgress = { images: 0, refused: 0, settled: 0, short: 0, split: 0, submissions: 0, agreement: null };
+export type BatchProgress = {
+  images: number;
+  refused: number;
+  settled: number;
+  short: number;
+  split: number;
+  submissions: number;
+  agreement: number | null;
+};
+const NO_PROGRESS: BatchProgress = {
+  images: 0,
+  refused: 0,
+  settled: 0,
+  short: 0,
+  split: 0,
+  submissions: 0,
+  agreement: null,
+};
 
 /** Counts of images by state, submissions, and mean agreement of the settled, for each batch. */
 export function progressOf(db: Reader, batchIds: string[]): Map<string, BatchProgress> {
   if (batchIds.length === 0) return new Map();
-  const total = (condition: ReturnType<typeof sql>) => sql<number>`coalesce(sum(case when ${condition} then 1 else 0 end), 0)`;
+  const total = (condition: ReturnType<typeof sql>) =>
+    sql<number>`coalesce(sum(case when ${condition} then 1 else 0 end), 0)`;
   const states = db
     .select({
       batchId: images.batchId,
@@ -51,7 +71,9 @@ export function progressOf(db: Reader, batchIds: string[]): Map<string, BatchPro
       settled: total(sql`${images.consensusState} = 'settled'`),
       short: total(sql`${images.consensusState} = 'short'`),
       split: total(sql`${images.consensusState} = 'split'`),
-      agreement: sql<number | null>`avg(case when ${images.consensusState} = 'settled' then ${consensusRuns.agreement} end)`,
+      agreement: sql<
+        number | null
+      >`avg(case when ${images.consensusState} = 'settled' then ${consensusRuns.agreement} end)`,
     })
     .from(images)
     .leftJoin(consensusRuns, eq(consensusRuns.id, images.currentRunId))
@@ -67,7 +89,9 @@ export function progressOf(db: Reader, batchIds: string[]): Map<string, BatchPro
       .all()
       .map((row) => [row.batchId, row.count]),
   );
-  return new Map(states.map(({ batchId, ...row }) => [batchId, { ...row, submissions: handedIn.get(batchId) ?? 0 }]));
+  return new Map(
+    states.map(({ batchId, ...row }) => [batchId, { ...row, submissions: handedIn.get(batchId) ?? 0 }]),
+  );
 }
 
 /** The key of a batch, by number. */
@@ -80,14 +104,24 @@ export function findBrief(db: Reader, batchId: string, version?: number) {
   return db
     .select()
     .from(briefVersions)
-    .where(and(eq(briefVersions.batchId, batchId), version === undefined ? undefined : eq(briefVersions.version, version)))
+    .where(
+      and(
+        eq(briefVersions.batchId, batchId),
+        version === undefined ? undefined : eq(briefVersions.version, version),
+      ),
+    )
     .orderBy(desc(briefVersions.version))
     .limit(1)
     .get();
 }
 
 export function listBriefExamples(db: Reader, batchId: string) {
-  return db.select().from(briefExamples).where(eq(briefExamples.batchId, batchId)).orderBy(asc(briefExamples.ordinal)).all();
+  return db
+    .select()
+    .from(briefExamples)
+    .where(eq(briefExamples.batchId, batchId))
+    .orderBy(asc(briefExamples.ordinal))
+    .all();
 }
 
 export function findImage(db: Reader, imageId: string): ImageRow | undefined {
@@ -117,7 +151,13 @@ export function listImages(
 
 /** Images that were checked and can be drawn. */
 export function countReadyImages(db: Reader, batchId: string): number {
-  return db.select({ count: count() }).from(images).where(and(eq(images.batchId, batchId), eq(images.status, "ready"))).get()?.count ?? 0;
+  return (
+    db
+      .select({ count: count() })
+      .from(images)
+      .where(and(eq(images.batchId, batchId), eq(images.status, "ready")))
+      .get()?.count ?? 0
+  );
 }
 
 /** Images that are still on their way: announced, or being checked. */

@@ -17,5 +17,11 @@ export function findModel(db: Reader, batchId: string): ModelRow | undefined {
 
 /** The latest training of a batch, useful or not. */
 export function findLatestTraining(db: Reader, batchId: string): ModelRow | undefined {
-  return db.select().from(exemplarModels).where(eq(exemplarModels.batchId, batchId)).orderBy(desc(exemplarModels.version)).limit(1).get();
+  return db
+    .select()
+    .from(exemplarModels)
+    .where(eq(exemplarModels.batchId, batchId))
+    .orderBy(desc(exemplarModels.version))
+    .limit(1)
+    .get();
 }

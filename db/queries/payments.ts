@@ -4,7 +4,13 @@ import { payouts, users } from "@/db/schema";
 
 /** An annotator's payouts, latest first. */
 export function listPayoutsOf(db: Reader, annotatorId: string, limit = 50) {
-  return db.select().from(payouts).where(eq(payouts.annotatorId, annotatorId)).orderBy(desc(payouts.createdAtMs), desc(payouts.id)).limit(limit).all();
+  return db
+    .select()
+    .from(payouts)
+    .where(eq(payouts.annotatorId, annotatorId))
+    .orderBy(desc(payouts.createdAtMs), desc(payouts.id))
+    .limit(limit)
+    .all();
 }
 
 /** All payouts with names, latest first. */

@@ -49,7 +49,10 @@ export function listTeamMembers(db: Reader, teamId: string) {
     .from(teamMembers)
     .innerJoin(users, eq(users.id, teamMembers.userId))
     .where(eq(teamMembers.teamId, teamId))
-    .orderBy(sql`case ${teamMembers.role} when 'owner' then 0 when 'editor' then 1 else 2 end`, asc(users.name))
+    .orderBy(
+      sql`case ${teamMembers.role} when 'owner' then 0 when 'editor' then 1 else 2 end`,
+      asc(users.name),
+    )
     .all();
 }
 
@@ -96,7 +99,10 @@ export function findLiveToken(
 }
 
 /** All people for the admin's page, newest first. */
-export function listPeople(db: Reader, { limit, search = "" }: { limit: number; search?: string }): UserRow[] {
+export function listPeople(
+  db: Reader,
+  { limit, search = "" }: { limit: number; search?: string },
+): UserRow[] {
   const like = `%${search.replace(/[%_]/g, "")}%`;
   return db
     .select()

@@ -4,7 +4,13 @@ import { auditLog, jobs, users } from "@/db/schema";
 
 /** Jobs in one state, latest first. */
 export function listRecentJobs(db: Reader, status: (typeof jobs.$inferSelect)["status"], limit: number) {
-  return db.select().from(jobs).where(eq(jobs.status, status)).orderBy(desc(jobs.createdAtMs), desc(jobs.id)).limit(limit).all();
+  return db
+    .select()
+    .from(jobs)
+    .where(eq(jobs.status, status))
+    .orderBy(desc(jobs.createdAtMs), desc(jobs.id))
+    .limit(limit)
+    .all();
 }
 
 /** The audit log, latest first, with who did it. */

@@ -1,6 +1,16 @@
 import { and, asc, count, desc, eq, gt, inArray, lt, ne, sql } from "drizzle-orm";
 import type { Reader } from "@/db/client";
-import { batches, claims, consensusRuns, disputes, drafts, images, submissions, teams, users } from "@/db/schema";
+import {
+  batches,
+  claims,
+  consensusRuns,
+  disputes,
+  drafts,
+  images,
+  submissions,
+  teams,
+  users,
+} from "@/db/schema";
 
 export type ClaimRow = typeof claims.$inferSelect;
 export type SubmissionRow = typeof submissions.$inferSelect;
@@ -66,7 +76,9 @@ export function findNextImage(db: Reader, batchId: string, annotatorId: string, 
   return db
     .select()
     .from(images)
-    .where(and(eq(images.batchId, batchId), imageId ? eq(images.id, imageId) : undefined, openTo(annotatorId)))
+    .where(
+      and(eq(images.batchId, batchId), imageId ? eq(images.id, imageId) : undefined, openTo(annotatorId)),
+    )
     .orderBy(
       asc(gaveBack),
       desc(sql`${images.consensusState} = 'short'`),
@@ -91,7 +103,13 @@ export function listBoard(db: Reader, annotatorId: string, acceptsSensitive: boo
     .all();
 }
 
-export type Measured = { tasks: number; medianSeconds: number | null; medianPayCents: number | null; hourlyCents: number | null; p10HourlyCents: number | null };
+export type Measured = {
+  tasks: number;
+  medianSeconds: number | null;
+  medianPayCents: number | null;
+  hourlyCents: number | null;
+  p10HourlyCents: number | null;
+};
 
 /**
  * What work on a batch measured so far: median active seconds and pay of one task, and the median and tenth
@@ -101,19 +119,33 @@ export function measureBatch(db: Reader, batchId: string): Measured {
   const rows = db
     .select({ seconds: submissions.activeSeconds, cents: submissions.payCents })
     .from(submissions)
-    .where(and(eq(submissions.batchId, batchId), sql`${submissions.payCents} is not null`, gt(submissions.activeSeconds, 0)))
+    .where(
+      and(
+        eq(submissions.batchId, batchId),
+        sql`${submissions.payCents} is not null`,
+        gt(submissions.activeSeconds, 0),
+      ),
+    )
     .orderBy(desc(submissions.submittedAtMs))
     .limit(2000)
     .all();
   const quantile = (values: number[], share: number) => {
     const sorted = [...values].sort((a, b) => a - b);
-    return sorted.length === 0 ? null : (sorted[Math.min(sorted.length - 1, Math.floor(share * sorted.length))] ?? null);
+    return sorted.length === 0
+      ? null
+      : (sorted[Math.min(sorted.length - 1, Math.floor(share * sorted.length))] ?? null);
   };
   const hourly = rows.map((row) => ((row.cents ?? 0) / row.seconds) * 3600);
   return {
     tasks: rows.length,
-    medianSeconds: quantile(rows.map((row) => row.seconds), 0.5),
-    medianPayCents: quantile(rows.map((row) => row.cents ?? 0), 0.5),
+    medianSeconds: quantile(
+      rows.map((row) => row.seconds),
+      0.5,
+    ),
+    medianPayCents: quantile(
+      rows.map((row) => row.cents ?? 0),
+      0.5,
+    ),
     hourlyCents: quantile(hourly, 0.5),
     p10HourlyCents: quantile(hourly, 0.1),
   };
@@ -125,11 +157,20 @@ export function findSubmission(db: Reader, submissionId: string): SubmissionRow 
 
 /** All submissions for an image, in the order they came. */
 export function listSubmissionsOf(db: Reader, imageId: string): SubmissionRow[] {
-  return db.select().from(submissions).where(eq(submissions.imageId, imageId)).orderBy(asc(submissions.submittedAtMs), asc(submissions.id)).all();
+  return db
+    .select()
+    .from(submissions)
+    .where(eq(submissions.imageId, imageId))
+    .orderBy(asc(submissions.submittedAtMs), asc(submissions.id))
+    .all();
 }
 
 /** An annotator's work, newest first, with the image and batch it belongs to. */
-export function listWorkOf(db: Reader, annotatorId: string, { limit, beforeMs }: { limit: number; beforeMs?: number }) {
+export function listWorkOf(
+  db: Reader,
+  annotatorId: string,
+  { limit, beforeMs }: { limit: number; beforeMs?: number },
+) {
   return db
     .select({
       submission: submissions,
@@ -141,7 +182,12 @@ export function listWorkOf(db: Reader, annotatorId: string, { limit, beforeMs }:
     .from(submissions)
     .innerJoin(images, eq(images.id, submissions.imageId))
     .innerJoin(batches, eq(batches.id, submissions.batchId))
-    .where(and(eq(submissions.annotatorId, annotatorId), beforeMs ? lt(submissions.submittedAtMs, beforeMs) : undefined))
+    .where(
+      and(
+        eq(submissions.annotatorId, annotatorId),
+        beforeMs ? lt(submissions.submittedAtMs, beforeMs) : undefined,
+      ),
+    )
     .orderBy(desc(submissions.submittedAtMs), desc(submissions.id))
     .limit(limit)
     .all();
@@ -153,7 +199,12 @@ export function findRun(db: Reader, runId: string): RunRow | undefined {
 
 /** Every run of an image, oldest first. */
 export function listRuns(db: Reader, imageId: string): RunRow[] {
-  return db.select().from(consensusRuns).where(eq(consensusRuns.imageId, imageId)).orderBy(asc(consensusRuns.createdAtMs), asc(consensusRuns.id)).all();
+  return db
+    .select()
+    .from(consensusRuns)
+    .where(eq(consensusRuns.imageId, imageId))
+    .orderBy(asc(consensusRuns.createdAtMs), asc(consensusRuns.id))
+    .all();
 }
 
 /** The current runs of a batch's images with their image, in upload order. */
@@ -191,26 +242,45 @@ export function findDispute(db: Reader, disputeId: string): DisputeRow | undefin
 }
 
 export function findOpenDispute(db: Reader, imageId: string): DisputeRow | undefined {
-  return db.select().from(disputes).where(and(eq(disputes.imageId, imageId), eq(disputes.status, "open"))).limit(1).get();
+  return db
+    .select()
+    .from(disputes)
+    .where(and(eq(disputes.imageId, imageId), eq(disputes.status, "open")))
+    .limit(1)
+    .get();
 }
 
 /** The docket: open disputes by due time (then money), or decided ones, newest first. */
 export function listDocket(db: Reader, status: "open" | "decided", limit = 200) {
   return db
-    .select({ dispute: disputes, fileName: images.fileName, batchTitle: batches.title, openerName: users.name })
+    .select({
+      dispute: disputes,
+      fileName: images.fileName,
+      batchTitle: batches.title,
+      openerName: users.name,
+    })
     .from(disputes)
     .innerJoin(images, eq(images.id, disputes.imageId))
     .innerJoin(batches, eq(batches.id, disputes.batchId))
     .leftJoin(users, eq(users.id, disputes.openedBy))
     .where(eq(disputes.status, status))
-    .orderBy(...(status === "open" ? [asc(disputes.dueAtMs), desc(disputes.stakeCents)] : [desc(disputes.decidedAtMs)]))
+    .orderBy(
+      ...(status === "open"
+        ? [asc(disputes.dueAtMs), desc(disputes.stakeCents)]
+        : [desc(disputes.decidedAtMs)]),
+    )
     .limit(limit)
     .all();
 }
 
 /** Disputes of a batch, newest first. */
 export function listDisputesOf(db: Reader, batchId: string): DisputeRow[] {
-  return db.select().from(disputes).where(eq(disputes.batchId, batchId)).orderBy(desc(disputes.openedAtMs)).all();
+  return db
+    .select()
+    .from(disputes)
+    .where(eq(disputes.batchId, batchId))
+    .orderBy(desc(disputes.openedAtMs))
+    .all();
 }
 
 /** Decided disputes like this one (same batch first, then the same kind), newest first. */

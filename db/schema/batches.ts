@@ -9,8 +9,12 @@ export const batches = sqliteTable(
   "batches",
   {
     id: text("id").primaryKey(),
-    teamId: text("team_id").notNull().references(() => teams.id),
-    createdBy: text("created_by").notNull().references(() => users.id),
+    teamId: text("team_id")
+      .notNull()
+      .references(() => teams.id),
+    createdBy: text("created_by")
+      .notNull()
+      .references(() => users.id),
     title: text("title").notNull(),
     status: text("status", { enum: BATCH_STATUSES }).notNull().default("draft"),
     briefVersion: integer("brief_version").notNull().default(0),
@@ -39,16 +43,23 @@ export const batches = sqliteTable(
     openedAtMs: integer("opened_at_ms"),
     closedAtMs: integer("closed_at_ms"),
   },
-  (t) => [index("batches_team").on(t.teamId, t.createdAtMs), index("batches_status").on(t.status, t.openedAtMs)],
+  (t) => [
+    index("batches_team").on(t.teamId, t.createdAtMs),
+    index("batches_status").on(t.status, t.openedAtMs),
+  ],
 );
 
 export const briefVersions = sqliteTable(
   "brief_versions",
   {
-    batchId: text("batch_id").notNull().references(() => batches.id),
+    batchId: text("batch_id")
+      .notNull()
+      .references(() => batches.id),
     version: integer("version").notNull(),
     markdown: text("markdown").notNull(),
-    createdBy: text("created_by").notNull().references(() => users.id),
+    createdBy: text("created_by")
+      .notNull()
+      .references(() => users.id),
     createdAtMs: integer("created_at_ms").notNull(),
   },
   (t) => [uniqueIndex("brief_versions_key").on(t.batchId, t.version)],
@@ -58,7 +69,9 @@ export const briefExamples = sqliteTable(
   "brief_examples",
   {
     id: text("id").primaryKey(),
-    batchId: text("batch_id").notNull().references(() => batches.id),
+    batchId: text("batch_id")
+      .notNull()
+      .references(() => batches.id),
     /** An image of the batch shown as example. */
     imageId: text("image_id").notNull(),
     caption: text("caption").notNull().default(""),
@@ -71,21 +84,28 @@ export const classes = sqliteTable(
   "classes",
   {
     id: text("id").primaryKey(),
-    batchId: text("batch_id").notNull().references(() => batches.id),
+    batchId: text("batch_id")
+      .notNull()
+      .references(() => batches.id),
     number: integer("number").notNull(),
     name: text("name").notNull(),
     colour: text("colour").notNull(), // #rrggbb of the published palette
     pattern: text("pattern").notNull().default("solid"),
     geometry: text("geometry", { enum: ["box", "polygon"] }).notNull(),
   },
-  (t) => [uniqueIndex("classes_number").on(t.batchId, t.number), uniqueIndex("classes_name").on(t.batchId, t.name)],
+  (t) => [
+    uniqueIndex("classes_number").on(t.batchId, t.number),
+    uniqueIndex("classes_name").on(t.batchId, t.name),
+  ],
 );
 
 export const images = sqliteTable(
   "images",
   {
     id: text("id").primaryKey(),
-    batchId: text("batch_id").notNull().references(() => batches.id),
+    batchId: text("batch_id")
+      .notNull()
+      .references(() => batches.id),
     fileName: text("file_name").notNull(),
     byteSize: integer("byte_size").notNull(),
     /** SHA-256 of the bytes as uploaded, hex: said by the browser, verified by the check job. */
@@ -101,7 +121,9 @@ export const images = sqliteTable(
     width: integer("width"),
     height: integer("height"),
     exifOrientation: integer("exif_orientation"),
-    proposalState: text("proposal_state", { enum: ["none", "queued", "done", "failed"] }).notNull().default("none"),
+    proposalState: text("proposal_state", { enum: ["none", "queued", "done", "failed"] })
+      .notNull()
+      .default("none"),
     consensusState: text("consensus_state", { enum: CONSENSUS_STATES }).notNull().default("none"),
     /** How many submissions the image wants now; rises from kMin to kMax while it is short. */
     slotsWanted: integer("slots_wanted").notNull().default(0),
@@ -128,8 +150,12 @@ export type StoredProposal = {
 
 /** The latest proposals of one image; a new run replaces the row. */
 export const proposalSets = sqliteTable("proposal_sets", {
-  imageId: text("image_id").primaryKey().references(() => images.id),
-  batchId: text("batch_id").notNull().references(() => batches.id),
+  imageId: text("image_id")
+    .primaryKey()
+    .references(() => images.id),
+  batchId: text("batch_id")
+    .notNull()
+    .references(() => batches.id),
   model: text("model").notNull(),
   proposals: text("proposals", { mode: "json" }).$type<StoredProposal[]>().notNull(),
   millis: integer("millis").notNull(),
@@ -140,10 +166,14 @@ export const releases = sqliteTable(
   "releases",
   {
     id: text("id").primaryKey(),
-    batchId: text("batch_id").notNull().references(() => batches.id),
+    batchId: text("batch_id")
+      .notNull()
+      .references(() => batches.id),
     number: integer("number").notNull(),
     status: text("status", { enum: ["building", "ready", "failed"] }).notNull(),
-    requestedBy: text("requested_by").notNull().references(() => users.id),
+    requestedBy: text("requested_by")
+      .notNull()
+      .references(() => users.id),
     storageKey: text("storage_key"),
     sha256: text("sha256"),
     byteSize: integer("byte_size"),

@@ -25,21 +25,31 @@ export const ledgerPostings = sqliteTable(
     memo: text("memo").notNull(),
     postedAtMs: integer("posted_at_ms").notNull(),
   },
-  (t) => [uniqueIndex("ledger_postings_cause").on(t.source, t.sourceId, t.kind), index("ledger_postings_time").on(t.postedAtMs)],
+  (t) => [
+    uniqueIndex("ledger_postings_cause").on(t.source, t.sourceId, t.kind),
+    index("ledger_postings_time").on(t.postedAtMs),
+  ],
 );
 
 export const ledgerEntries = sqliteTable(
   "ledger_entries",
   {
     id: integer("id").primaryKey({ autoIncrement: true }),
-    postingId: text("posting_id").notNull().references(() => ledgerPostings.id),
-    accountId: text("account_id").notNull().references(() => ledgerAccounts.id),
+    postingId: text("posting_id")
+      .notNull()
+      .references(() => ledgerPostings.id),
+    accountId: text("account_id")
+      .notNull()
+      .references(() => ledgerAccounts.id),
     cents: integer("cents").notNull(),
     /** The account's balance after this entry. */
     balanceCents: integer("balance_cents").notNull(),
     postedAtMs: integer("posted_at_ms").notNull(),
   },
-  (t) => [index("ledger_entries_account").on(t.accountId, t.id), index("ledger_entries_posting").on(t.postingId)],
+  (t) => [
+    index("ledger_entries_account").on(t.accountId, t.id),
+    index("ledger_entries_posting").on(t.postingId),
+  ],
 );
 
 /** What does not match and wants a person. */

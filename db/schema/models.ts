@@ -7,7 +7,9 @@ export const exemplarModels = sqliteTable(
   "exemplar_models",
   {
     id: text("id").primaryKey(),
-    batchId: text("batch_id").notNull().references(() => batches.id),
+    batchId: text("batch_id")
+      .notNull()
+      .references(() => batches.id),
     version: integer("version").notNull(),
     settledImages: integer("settled_images").notNull(),
     instances: integer("instances").notNull(),

@@ -6,8 +6,12 @@ export const topUps = sqliteTable(
   "top_ups",
   {
     id: text("id").primaryKey(),
-    teamId: text("team_id").notNull().references(() => teams.id),
-    createdBy: text("created_by").notNull().references(() => users.id),
+    teamId: text("team_id")
+      .notNull()
+      .references(() => teams.id),
+    createdBy: text("created_by")
+      .notNull()
+      .references(() => users.id),
     amountCents: integer("amount_cents").notNull(),
     status: text("status", { enum: ["open", "paid", "expired", "disputed"] }).notNull(),
     stripeSessionId: text("stripe_session_id").unique(),
@@ -17,7 +21,10 @@ export const topUps = sqliteTable(
     createdAtMs: integer("created_at_ms").notNull(),
     paidAtMs: integer("paid_at_ms"),
   },
-  (t) => [index("top_ups_team").on(t.teamId, t.createdAtMs), index("top_ups_intent").on(t.stripePaymentIntentId)],
+  (t) => [
+    index("top_ups_team").on(t.teamId, t.createdAtMs),
+    index("top_ups_intent").on(t.stripePaymentIntentId),
+  ],
 );
 
 /** Money on its way back to a card. */
@@ -25,8 +32,12 @@ export const refunds = sqliteTable(
   "refunds",
   {
     id: text("id").primaryKey(),
-    topUpId: text("top_up_id").notNull().references(() => topUps.id),
-    teamId: text("team_id").notNull().references(() => teams.id),
+    topUpId: text("top_up_id")
+      .notNull()
+      .references(() => topUps.id),
+    teamId: text("team_id")
+      .notNull()
+      .references(() => teams.id),
     amountCents: integer("amount_cents").notNull(),
     status: text("status", { enum: ["queued", "sent", "failed"] }).notNull(),
     stripeRefundId: text("stripe_refund_id").unique(),
@@ -41,7 +52,9 @@ export const payouts = sqliteTable(
   "payouts",
   {
     id: text("id").primaryKey(),
-    annotatorId: text("annotator_id").notNull().references(() => users.id),
+    annotatorId: text("annotator_id")
+      .notNull()
+      .references(() => users.id),
     amountCents: integer("amount_cents").notNull(),
     status: text("status", { enum: ["queued", "sent", "paid", "failed"] }).notNull(),
     attempt: integer("attempt").notNull().default(1),

@@ -9,7 +9,9 @@ export const users = sqliteTable("users", {
   name: text("name").notNull(),
   passwordHash: text("password_hash"), // null: signs in by mail link only
   role: text("role", { enum: ROLES }).notNull(),
-  status: text("status", { enum: ["active", "suspended"] }).notNull().default("active"),
+  status: text("status", { enum: ["active", "suspended"] })
+    .notNull()
+    .default("active"),
   emailVerifiedAtMs: integer("email_verified_at_ms"),
   /** Raised by "sign out everywhere" and by a password change: older sessions stop at once. */
   sessionEpoch: integer("session_epoch").notNull().default(0),
@@ -28,8 +30,12 @@ export const teams = sqliteTable("teams", {
 export const teamMembers = sqliteTable(
   "team_members",
   {
-    teamId: text("team_id").notNull().references(() => teams.id),
-    userId: text("user_id").notNull().references(() => users.id),
+    teamId: text("team_id")
+      .notNull()
+      .references(() => teams.id),
+    userId: text("user_id")
+      .notNull()
+      .references(() => users.id),
     role: text("role", { enum: TEAM_ROLES }).notNull(),
     joinedAtMs: integer("joined_at_ms").notNull(),
   },
@@ -40,10 +46,14 @@ export const teamInvites = sqliteTable(
   "team_invites",
   {
     id: text("id").primaryKey(),
-    teamId: text("team_id").notNull().references(() => teams.id),
+    teamId: text("team_id")
+      .notNull()
+      .references(() => teams.id),
     email: text("email").notNull(),
     role: text("role", { enum: TEAM_ROLES }).notNull(),
-    invitedBy: text("invited_by").notNull().references(() => users.id),
+    invitedBy: text("invited_by")
+      .notNull()
+      .references(() => users.id),
     createdAtMs: integer("created_at_ms").notNull(),
     expiresAtMs: integer("expires_at_ms").notNull(),
     acceptedAtMs: integer("accepted_at_ms"),
@@ -66,5 +76,8 @@ export const mailTokens = sqliteTable(
     expiresAtMs: integer("expires_at_ms").notNull(),
     usedAtMs: integer("used_at_ms"),
   },
-  (t) => [uniqueIndex("mail_tokens_secret").on(t.secretHash), index("mail_tokens_email").on(t.email, t.purpose)],
+  (t) => [
+    uniqueIndex("mail_tokens_secret").on(t.secretHash),
+    index("mail_tokens_email").on(t.email, t.purpose),
+  ],
 );

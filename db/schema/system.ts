@@ -26,7 +26,9 @@ export const jobs = sqliteTable(
   (t) => [
     index("jobs_due").on(t.status, t.priority, t.runAtMs),
     index("jobs_subject").on(t.subject, t.kind),
-    uniqueIndex("jobs_unique").on(t.uniqueKey).where(sql`status in ('queued', 'running')`),
+    uniqueIndex("jobs_unique")
+      .on(t.uniqueKey)
+      .where(sql`status in ('queued', 'running')`),
   ],
 );
 

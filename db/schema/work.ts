@@ -9,9 +9,15 @@ export const claims = sqliteTable(
   "claims",
   {
     id: text("id").primaryKey(),
-    batchId: text("batch_id").notNull().references(() => batches.id),
-    imageId: text("image_id").notNull().references(() => images.id),
-    annotatorId: text("annotator_id").notNull().references(() => users.id),
+    batchId: text("batch_id")
+      .notNull()
+      .references(() => batches.id),
+    imageId: text("image_id")
+      .notNull()
+      .references(() => images.id),
+    annotatorId: text("annotator_id")
+      .notNull()
+      .references(() => users.id),
     slot: integer("slot").notNull(), // 1..kMax
     status: text("status", { enum: ["live", "submitted", "released", "expired"] }).notNull(),
     /** The brief that was shown when the claim was made: a dispute is judged by it. */
@@ -22,8 +28,12 @@ export const claims = sqliteTable(
     endedAtMs: integer("ended_at_ms"),
   },
   (t) => [
-    uniqueIndex("claims_slot").on(t.imageId, t.slot).where(sql`status in ('live', 'submitted')`),
-    uniqueIndex("claims_person").on(t.imageId, t.annotatorId).where(sql`status in ('live', 'submitted')`),
+    uniqueIndex("claims_slot")
+      .on(t.imageId, t.slot)
+      .where(sql`status in ('live', 'submitted')`),
+    uniqueIndex("claims_person")
+      .on(t.imageId, t.annotatorId)
+      .where(sql`status in ('live', 'submitted')`),
     index("claims_annotator").on(t.annotatorId, t.status),
     index("claims_expiry").on(t.status, t.expiresAtMs),
     index("claims_batch").on(t.batchId, t.status),
@@ -31,7 +41,9 @@ export const claims = sqliteTable(
 );
 
 export const drafts = sqliteTable("drafts", {
-  claimId: text("claim_id").primaryKey().references(() => claims.id),
+  claimId: text("claim_id")
+    .primaryKey()
+    .references(() => claims.id),
   version: integer("version").notNull(),
   document: text("document", { mode: "json" }).$type<DeskDocument>().notNull(),
   savedAtMs: integer("saved_at_ms").notNull(),
@@ -41,10 +53,19 @@ export const submissions = sqliteTable(
   "submissions",
   {
     id: text("id").primaryKey(),
-    claimId: text("claim_id").notNull().unique().references(() => claims.id),
-    batchId: text("batch_id").notNull().references(() => batches.id),
-    imageId: text("image_id").notNull().references(() => images.id),
-    annotatorId: text("annotator_id").notNull().references(() => users.id),
+    claimId: text("claim_id")
+      .notNull()
+      .unique()
+      .references(() => claims.id),
+    batchId: text("batch_id")
+      .notNull()
+      .references(() => batches.id),
+    imageId: text("image_id")
+      .notNull()
+      .references(() => images.id),
+    annotatorId: text("annotator_id")
+      .notNull()
+      .references(() => users.id),
     document: text("document", { mode: "json" }).$type<DeskDocument>().notNull(),
     /** SHA-256 of the document as stored, hex. */
     sha256: text("sha256").notNull(),
@@ -69,8 +90,12 @@ export const consensusRuns = sqliteTable(
   "consensus_runs",
   {
     id: text("id").primaryKey(),
-    batchId: text("batch_id").notNull().references(() => batches.id),
-    imageId: text("image_id").notNull().references(() => images.id),
+    batchId: text("batch_id")
+      .notNull()
+      .references(() => batches.id),
+    imageId: text("image_id")
+      .notNull()
+      .references(() => images.id),
     origin: text("origin", { enum: ["engine", "decision"] }).notNull(),
     disputeId: text("dispute_id"),
     verdict: text("verdict", { enum: ["settled", "short", "split"] }).notNull(),
@@ -82,7 +107,10 @@ export const consensusRuns = sqliteTable(
     millis: integer("millis").notNull(),
     createdAtMs: integer("created_at_ms").notNull(),
   },
-  (t) => [index("consensus_runs_image").on(t.imageId, t.createdAtMs), index("consensus_runs_batch").on(t.batchId, t.createdAtMs)],
+  (t) => [
+    index("consensus_runs_image").on(t.imageId, t.createdAtMs),
+    index("consensus_runs_batch").on(t.batchId, t.createdAtMs),
+  ],
 );
 
 export type DisputeDecision =
@@ -94,8 +122,12 @@ export const disputes = sqliteTable(
   "disputes",
   {
     id: text("id").primaryKey(),
-    batchId: text("batch_id").notNull().references(() => batches.id),
-    imageId: text("image_id").notNull().references(() => images.id),
+    batchId: text("batch_id")
+      .notNull()
+      .references(() => batches.id),
+    imageId: text("image_id")
+      .notNull()
+      .references(() => images.id),
     /** The contested submission; null when the whole image is contested. */
     submissionId: text("submission_id").references(() => submissions.id),
     /** What is contested: the submission's id, else the image's. At most one open dispute a subject. */
@@ -119,6 +151,8 @@ export const disputes = sqliteTable(
   (t) => [
     index("disputes_docket").on(t.status, t.dueAtMs),
     index("disputes_image").on(t.imageId),
-    uniqueIndex("disputes_one_open").on(t.subject).where(sql`status = 'open'`),
+    uniqueIndex("disputes_one_open")
+      .on(t.subject)
+      .where(sql`status = 'open'`),
   ],
 );

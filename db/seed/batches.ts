@@ -40,7 +40,17 @@ export async function until(what: string, holds: () => boolean): Promise<void> {
 }
 
 /** Puts money on a team's wallet through Checkout, as a person would, and waits for the webhook. */
-export async function topUpWallet({ actor, teamId, amountCents, nowMs }: { actor: Actor; teamId: string; amountCents: number; nowMs: number }): Promise<void> {
+export async function topUpWallet({
+  actor,
+  teamId,
+  amountCents,
+  nowMs,
+}: {
+  actor: Actor;
+  teamId: string;
+  amountCents: number;
+  nowMs: number;
+}): Promise<void> {
   const wallet = accountId("wallet", teamId);
   const before = balanceOf(getDb(), wallet);
   const { url } = await startTopUp({ actor, nowMs, teamId, amountCents, returnPath: "/wallet" });
@@ -55,7 +65,17 @@ export async function topUpWallet({ actor, teamId, amountCents, nowMs }: { actor
 }
 
 /** Posts a batch by the same steps as a requester: draft, pictures, key and brief, pay, fund. Returns its id. */
-export async function postBatch({ actor, teamId, plan, nowMs }: { actor: Actor; teamId: string; plan: BatchPlan; nowMs: number }): Promise<string> {
+export async function postBatch({
+  actor,
+  teamId,
+  plan,
+  nowMs,
+}: {
+  actor: Actor;
+  teamId: string;
+  plan: BatchPlan;
+  nowMs: number;
+}): Promise<string> {
   const db = getDb();
   const batchId = createBatch({ actor, nowMs, teamId, title: plan.title });
   await uploadPictures({ actor, batchId, pictures: plan.pictures, nowMs });
@@ -70,7 +90,9 @@ export async function postBatch({ actor, teamId, plan, nowMs }: { actor: Actor; 
       classes: plan.classes.map((entry) => ({ id: null, ...entry })),
       brief: plan.brief,
       examples: [
-        ...(first ? [{ imageId: first.id, caption: "Outline what you can see, not what you guess under the weed." }] : []),
+        ...(first
+          ? [{ imageId: first.id, caption: "Outline what you can see, not what you guess under the weed." }]
+          : []),
         ...(second ? [{ imageId: second.id, caption: "Small things count too: look along the edge." }] : []),
       ],
       sensitive: false,
@@ -84,13 +106,22 @@ export async function postBatch({ actor, teamId, plan, nowMs }: { actor: Actor; 
     actor,
     nowMs,
     batchId,
-    input: { kMin, kMax, agreementTarget, expectedInstances, ...pay, floorHourlyCents: 1200, versionSeen: version() },
+    input: {
+      kMin,
+      kMax,
+      agreementTarget,
+      expectedInstances,
+      ...pay,
+      floorHourlyCents: 1200,
+      versionSeen: version(),
+    },
   });
   await until("every picture is checked", () => countPendingImages(db, batchId) === 0);
   const batch = findBatch(db, batchId);
   if (!batch) throw new Error("the batch is gone");
   const ready = listImages(db, batchId, { limit: 1000 }).filter((image) => image.status === "ready").length;
-  if (ready !== plan.pictures.length) throw new Error(`${plan.pictures.length - ready} pictures of ${plan.title} were refused`);
+  if (ready !== plan.pictures.length)
+    throw new Error(`${plan.pictures.length - ready} pictures of ${plan.title} were refused`);
   const cost = quoteOf(batch, listClasses(db, batchId), ready);
   const worstCentsSeen = cost.worstCents + cost.worstFeeCents;
   const missing = worstCentsSeen - balanceOf(db, accountId("wallet", teamId));
@@ -99,7 +130,17 @@ export async function postBatch({ actor, teamId, plan, nowMs }: { actor: Actor; 
   return batchId;
 }
 
-async function uploadPictures({ actor, batchId, pictures, nowMs }: { actor: Actor; batchId: string; pictures: PictureFile[]; nowMs: number }): Promise<void> {
+async function uploadPictures({
+  actor,
+  batchId,
+  pictures,
+  nowMs,
+}: {
+  actor: Actor;
+  batchId: string;
+  pictures: PictureFile[];
+  nowMs: number;
+}): Promise<void> {
   const files = pictures.map(({ name, bytes }) => ({
     name,
     byteSize: bytes.byteLength,
@@ -110,8 +151,13 @@ async function uploadPictures({ actor, batchId, pictures, nowMs }: { actor: Acto
   for (const [index, plan] of plans.entries()) {
     const picture = pictures[index];
     if (plan.kind !== "put" || !picture) throw new Error(`no upload was planned for ${picture?.name}`);
-    const answer = await fetch(plan.url, { method: "PUT", headers: plan.headers, body: new Uint8Array(picture.bytes) });
-    if (!answer.ok) throw new Error(`the store refused ${picture.name}: ${answer.status} ${await answer.text()}`);
+    const answer = await fetch(plan.url, {
+      method: "PUT",
+      headers: plan.headers,
+      body: new Uint8Array(picture.bytes),
+    });
+    if (!answer.ok)
+      throw new Error(`the store refused ${picture.name}: ${answer.status} ${await answer.text()}`);
     await completeUpload({ actor, nowMs, imageId: plan.imageId, parts: [] });
   }
 }

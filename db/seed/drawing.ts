@@ -11,7 +11,13 @@ import { sceneOf } from "./pictures";
 import { annotate } from "./scenes/annotate";
 
 type Annotator = { actor: Actor; care: (typeof CARE)[keyof typeof CARE] };
-type Input = { batchId: string; actors: Record<string, Actor>; annotators: Annotator[]; fromMs: number; share: number };
+type Input = {
+  batchId: string;
+  actors: Record<string, Actor>;
+  annotators: Annotator[];
+  fromMs: number;
+  share: number;
+};
 
 /** Seconds that an instance and a picture take by care; careful people are slower. */
 const SECONDS: Record<Annotator["care"], { image: number; instance: number }> = {
@@ -35,7 +41,8 @@ export function drawBatch({ batchId, annotators, fromMs, share }: Input): void {
     for (let turn = 0; turn < annotators.length; turn++) {
       const annotator = annotators[(index + turn) % annotators.length];
       const state = findImage(db, image.id);
-      if (!annotator || !state || state.consensusState === "settled" || state.consensusState === "split") break;
+      if (!annotator || !state || state.consensusState === "settled" || state.consensusState === "split")
+        break;
       try {
         const claim = claimTask({ actor: annotator.actor, nowMs: clockMs, batchId, imageId: image.id });
         const document = draw(image.fileName, annotator, key, index * 31 + turn);
@@ -52,7 +59,12 @@ export function drawBatch({ batchId, annotators, fromMs, share }: Input): void {
   });
 }
 
-function draw(fileName: string, { care }: Annotator, key: Map<string, { id: string; geometry: "box" | "polygon" }>, seed: number): DeskDocument {
+function draw(
+  fileName: string,
+  { care }: Annotator,
+  key: Map<string, { id: string; geometry: "box" | "polygon" }>,
+  seed: number,
+): DeskDocument {
   const scene = sceneOf(fileName);
   const drawn = annotate(scene, care, seed);
   const instances = drawn.flatMap((instance, index) => {
@@ -63,7 +75,9 @@ function draw(fileName: string, { care }: Annotator, key: Map<string, { id: stri
       {
         id: `drawn-${index}`,
         classId: kind.id,
-        shape: wantsBox ? ({ kind: "box", box: instance.box } as const) : ({ kind: "polygon", rings: instance.rings } as const),
+        shape: wantsBox
+          ? ({ kind: "box", box: instance.box } as const)
+          : ({ kind: "polygon", rings: instance.rings } as const),
         origin: "drawn" as const,
         proposalId: null,
         crowd: false,

@@ -52,12 +52,16 @@ export async function seedPeople(db: Db, nowMs: number): Promise<Cast> {
     tx.insert(teams).values({ id: teamId, name: "Skerrow Bay Shore Trust", createdAtMs: nowMs }).run();
     for (const [key, { name, email, role }] of Object.entries(PEOPLE)) {
       const id = newId("usr");
-      tx.insert(users).values({ id, email, name, role, passwordHash, emailVerifiedAtMs: nowMs, createdAtMs: nowMs }).run();
+      tx.insert(users)
+        .values({ id, email, name, role, passwordHash, emailVerifiedAtMs: nowMs, createdAtMs: nowMs })
+        .run();
       actors[key as PersonKey] = { id, role, name, email };
     }
     const members = { ines: "owner", rowan: "editor", petra: "viewer" } as const;
     for (const [key, role] of Object.entries(members)) {
-      tx.insert(teamMembers).values({ teamId, userId: actors[key as PersonKey]?.id ?? "", role, joinedAtMs: nowMs }).run();
+      tx.insert(teamMembers)
+        .values({ teamId, userId: actors[key as PersonKey]?.id ?? "", role, joinedAtMs: nowMs })
+        .run();
     }
   });
   return { actors: actors as Record<PersonKey, Actor>, teamId };

@@ -30,27 +30,56 @@ async function main(): Promise<void> {
   say("people and wallet");
 
   const springPictures = await renderPlan(SPRING_TIDE);
-  const springId = await postBatch({ actor: actors.ines, teamId, plan: { ...SPRING_TIDE, pictures: springPictures }, nowMs: now - 6 * DAY_MS });
+  const springId = await postBatch({
+    actor: actors.ines,
+    teamId,
+    plan: { ...SPRING_TIDE, pictures: springPictures },
+    nowMs: now - 6 * DAY_MS,
+  });
   say("spring tide posted");
-  drawBatch({ batchId: springId, actors, annotators: annotators("tomas", "maren", "kofi", "lioba", "jory", "bram"), fromMs: now - 2 * DAY_MS, share: 1 });
+  drawBatch({
+    batchId: springId,
+    actors,
+    annotators: annotators("tomas", "maren", "kofi", "lioba", "jory", "bram"),
+    fromMs: now - 2 * DAY_MS,
+    share: 1,
+  });
   say("spring tide drawn");
   decideOpen(now - DAY_MS);
   contestOne();
   say("spring tide settled, a dispute decided");
 
   const neapPictures = await renderPlan(NEAP_TIDE);
-  await postBatch({ actor: actors.ines, teamId, plan: { ...NEAP_TIDE, pictures: neapPictures }, nowMs: now - DAY_MS / 2 });
+  await postBatch({
+    actor: actors.ines,
+    teamId,
+    plan: { ...NEAP_TIDE, pictures: neapPictures },
+    nowMs: now - DAY_MS / 2,
+  });
   say("neap tide posted");
   const glassPictures = await renderPlan(GLASSHOUSE);
-  const glassId = await postBatch({ actor: actors.rowan, teamId, plan: { ...GLASSHOUSE, pictures: glassPictures }, nowMs: now - DAY_MS });
+  const glassId = await postBatch({
+    actor: actors.rowan,
+    teamId,
+    plan: { ...GLASSHOUSE, pictures: glassPictures },
+    nowMs: now - DAY_MS,
+  });
   say("glasshouse posted");
-  drawBatch({ batchId: glassId, actors, annotators: annotators("sanna", "elin", "tomas", "bram", "maren"), fromMs: now - DAY_MS / 2, share: 0.5 });
+  drawBatch({
+    batchId: glassId,
+    actors,
+    annotators: annotators("sanna", "elin", "tomas", "bram", "maren"),
+    fromMs: now - DAY_MS / 2,
+    share: 0.5,
+  });
   openOne();
   say("glasshouse half drawn");
 
   await payTomas();
   const releaseId = requestRelease({ actor: actors.ines, nowMs: Date.now(), batchId: springId });
-  await until("the release is built", () => listReleases(db, springId).some((release) => release.id === releaseId && release.status !== "building"));
+  await until("the release is built", () =>
+    listReleases(db, springId).some((release) => release.id === releaseId && release.status !== "building"),
+  );
   say("release built, payout made");
 
   function annotators(...keys: AnnotatorKey[]) {
@@ -67,7 +96,12 @@ async function main(): Promise<void> {
         actor: actors.ada,
         nowMs: atMs,
         disputeId: dispute.id,
-        decision: { outcome: "pick", submissionId: best.id, reason: "This submission follows the visible edges as the brief asks and misses nothing; the others differ by what they left out." },
+        decision: {
+          outcome: "pick",
+          submissionId: best.id,
+          reason:
+            "This submission follows the visible edges as the brief asks and misses nothing; the others differ by what they left out.",
+        },
       });
     }
   }
@@ -76,24 +110,50 @@ async function main(): Promise<void> {
   function contestOne(): void {
     const settled = findSceneCopy(db, springId);
     const list = settled ? listSubmissionsOf(db, settled.id) : [];
-    const contested = [...list].filter((submission) => submission.quality !== null).sort((a, b) => (a.quality ?? 0) - (b.quality ?? 0))[0];
+    const contested = [...list]
+      .filter((submission) => submission.quality !== null)
+      .sort((a, b) => (a.quality ?? 0) - (b.quality ?? 0))[0];
     const annotator = contested && Object.values(actors).find((actor) => actor.id === contested.annotatorId);
     if (!contested || !annotator) return;
-    const disputeId = contestScore({ actor: annotator, nowMs: now - DAY_MS, submissionId: contested.id, reason: "I drew the rope under the weed as well, because one can see where it goes. Please count it." });
-    decideDispute({ actor: actors.ada, nowMs: now - DAY_MS / 2, disputeId, decision: { outcome: "keep", reason: "The brief asks for the visible part only. The outline goes on under the weed, so it is rightly not counted; the rest of your work was." } });
+    const disputeId = contestScore({
+      actor: annotator,
+      nowMs: now - DAY_MS,
+      submissionId: contested.id,
+      reason: "I drew the rope under the weed as well, because one can see where it goes. Please count it.",
+    });
+    decideDispute({
+      actor: actors.ada,
+      nowMs: now - DAY_MS / 2,
+      disputeId,
+      decision: {
+        outcome: "keep",
+        reason:
+          "The brief asks for the visible part only. The outline goes on under the weed, so it is rightly not counted; the rest of your work was.",
+      },
+    });
   }
 
   /** One picture of the second batch waits on the docket for the visitor. */
   function openOne(): void {
     if (listDocket(db, "open").length > 0) return;
     const image = findSceneCopy(db, glassId);
-    if (image) contestImage({ actor: actors.rowan, nowMs: Date.now(), imageId: image.id, reason: "Two seedlings that touch were merged into one in the second row. Please look again." });
+    if (image)
+      contestImage({
+        actor: actors.rowan,
+        nowMs: Date.now(),
+        imageId: image.id,
+        reason: "Two seedlings that touch were merged into one in the second row. Please look again.",
+      });
   }
 
   async function payTomas(): Promise<void> {
     await startOnboarding({ actor: actors.tomas, nowMs: Date.now() });
     const account = findUser(db, actors.tomas.id)?.stripeAccountId;
-    const answer = await fetch(`${env().STRIPE_API_BASE}/_control/complete-onboarding`, { method: "POST", headers: { "content-type": "application/json" }, body: JSON.stringify({ account }) });
+    const answer = await fetch(`${env().STRIPE_API_BASE}/_control/complete-onboarding`, {
+      method: "POST",
+      headers: { "content-type": "application/json" },
+      body: JSON.stringify({ account }),
+    });
     if (!answer.ok) throw new Error(`onboarding failed: ${answer.status} ${await answer.text()}`);
     await until("the payout account is ready", () => findUser(db, actors.tomas.id)?.payoutsEnabled === true);
     requestPayout({ actor: actors.tomas, nowMs: Date.now() });

@@ -38,7 +38,8 @@ export async function requireActor(spec: RoleSpec): Promise<Actor> {
   if (spec === "public") return (await findActor()) ?? ANONYMOUS;
   const actor = await findActor();
   if (!actor) throw new AppError("unauthenticated", "Please sign in.");
-  const allowed = spec === "any" || (typeof spec === "string" ? actor.role === spec : spec.includes(actor.role as Role));
+  const allowed =
+    spec === "any" || (typeof spec === "string" ? actor.role === spec : spec.includes(actor.role as Role));
   if (!allowed) throw new AppError("forbidden", "Your account cannot do this.");
   return actor;
 }

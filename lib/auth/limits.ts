@@ -12,6 +12,9 @@ export async function spendAllowance(what: keyof typeof LIMITS, who: string): Pr
     await LIMITS[what].consume(who);
   } catch (refusal) {
     const waitMs = (refusal as { msBeforeNext?: number }).msBeforeNext ?? 60_000;
-    throw new AppError("rate_limited", `Too many tries. Wait ${Math.ceil(waitMs / 60_000)} min and try again.`);
+    throw new AppError(
+      "rate_limited",
+      `Too many tries. Wait ${Math.ceil(waitMs / 60_000)} min and try again.`,
+    );
   }
 }

@@ -36,7 +36,8 @@ export function authOptions(): NextAuthOptions {
           const user = findUserByEmail(getDb(), email);
           if (!(await isPassword(given?.password ?? "", user?.passwordHash ?? null)) || !user) return null;
           if (user.status !== "active") throw new Error("This account is suspended. Write to us to appeal.");
-          if (user.emailVerifiedAtMs === null) throw new Error("Confirm your e-mail first: open the link we sent.");
+          if (user.emailVerifiedAtMs === null)
+            throw new Error("Confirm your e-mail first: open the link we sent.");
           return toSessionUser(user);
         },
       }),

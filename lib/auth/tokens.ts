@@ -18,7 +18,13 @@ function hashOf(secret: string): string {
   return createHash("sha256").update(secret).digest("hex");
 }
 
-type NewToken = { purpose: Purpose; email: string; userId?: string | null; inviteId?: string | null; nowMs: number };
+type NewToken = {
+  purpose: Purpose;
+  email: string;
+  userId?: string | null;
+  inviteId?: string | null;
+  nowMs: number;
+};
 
 /** Makes a one-time link secret (256 random bits, base64url) and ends older ones of the same purpose. */
 export function issueToken(tx: Reader, { purpose, email, userId, inviteId, nowMs }: NewToken): string {
@@ -45,12 +51,22 @@ export function issueToken(tx: Reader, { purpose, email, userId, inviteId, nowMs
 }
 
 /** The live token of a secret without using it up, or undefined. */
-export function peekToken(db: Reader, purpose: Purpose, secret: string, nowMs: number): MailTokenRow | undefined {
+export function peekToken(
+  db: Reader,
+  purpose: Purpose,
+  secret: string,
+  nowMs: number,
+): MailTokenRow | undefined {
   return findLiveToken(db, hashOf(secret), purpose, nowMs);
 }
 
 /** Uses the token up; undefined when it is unknown, used or expired. Works once, whoever is first. */
-export function redeemToken(tx: Reader, purpose: Purpose, secret: string, nowMs: number): MailTokenRow | undefined {
+export function redeemToken(
+  tx: Reader,
+  purpose: Purpose,
+  secret: string,
+  nowMs: number,
+): MailTokenRow | undefined {
   const token = findLiveToken(tx, hashOf(secret), purpose, nowMs);
   if (!token) return undefined;
   const used = tx

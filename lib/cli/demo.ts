@@ -1,6 +1,18 @@
 import { existsSync } from "node:fs";
 import path from "node:path";
-import { ensureBuilt, isPortTaken, runToEnd, stackEnv, startFakes, startWeb, startWorker, stopParts, waitFor, type Part, type StackPlan } from "./stack";
+import {
+  ensureBuilt,
+  isPortTaken,
+  runToEnd,
+  stackEnv,
+  startFakes,
+  startWeb,
+  startWorker,
+  stopParts,
+  waitFor,
+  type Part,
+  type StackPlan,
+} from "./stack";
 
 const webPort = Number(process.env.PORT ?? 3000);
 const plan: StackPlan = {
@@ -35,20 +47,34 @@ function watch(part: Part): Part {
 async function main(): Promise<void> {
   process.on("SIGINT", () => void stop(0));
   process.on("SIGTERM", () => void stop(0));
-  for (const [name, port] of Object.entries({ PORT: plan.webPort, S3_PORT: plan.s3Port, STRIPE_PORT: plan.stripePort, RESEND_PORT: plan.resendPort })) {
+  for (const [name, port] of Object.entries({
+    PORT: plan.webPort,
+    S3_PORT: plan.s3Port,
+    STRIPE_PORT: plan.stripePort,
+    RESEND_PORT: plan.resendPort,
+  })) {
     if (await isPortTaken(port)) throw new Error(`Port ${port} is taken. Set ${name} to a free one.`);
   }
   const isFirst = !existsSync(path.join(plan.folder, "merestone.sqlite"));
   await ensureBuilt(say);
   const fakes = watch(startFakes(plan));
-  await Promise.all([plan.s3Port, plan.stripePort, plan.resendPort].map((port) => waitFor(`http://127.0.0.1:${port}/`, fakes)));
+  await Promise.all(
+    [plan.s3Port, plan.stripePort, plan.resendPort].map((port) =>
+      waitFor(`http://127.0.0.1:${port}/`, fakes),
+    ),
+  );
   await runToEnd("node", ["--import", "tsx", "lib/cli/migrate.ts"], stackEnv(plan));
   const web = watch(startWeb(plan));
   await waitFor(`http://127.0.0.1:${plan.webPort}/api/health`, web);
   watch(startWorker(plan));
   if (isFirst) {
     say("Rendering the demo's pictures and playing its first weeks (about a minute) ...");
-    await runToEnd("node", ["--import", "tsx", "db/seed/run.ts"], stackEnv(plan), path.join(plan.folder, "logs", "seed.log"));
+    await runToEnd(
+      "node",
+      ["--import", "tsx", "db/seed/run.ts"],
+      stackEnv(plan),
+      path.join(plan.folder, "logs", "seed.log"),
+    );
   }
   say(banner());
 }

@@ -1,5 +1,15 @@
 import path from "node:path";
-import { runToEnd, stackEnv, startFakes, startPart, startWorker, stopParts, waitFor, type Part, type StackPlan } from "./stack";
+import {
+  runToEnd,
+  stackEnv,
+  startFakes,
+  startPart,
+  startWorker,
+  stopParts,
+  waitFor,
+  type Part,
+  type StackPlan,
+} from "./stack";
 
 /** Everything for work on the code: stand-ins, worker, and the web application rebuilt as files change. */
 const plan: StackPlan = {
@@ -27,7 +37,14 @@ async function main(): Promise<void> {
   }
   await runToEnd("node", ["--import", "tsx", "lib/cli/migrate.ts"], stackEnv(plan));
   parts.push(startWorker(plan));
-  parts.push(startPart("web", ["node_modules/next/dist/bin/next", "dev", "-H", "127.0.0.1", "-p", String(plan.webPort)], plan, { NODE_ENV: "development" }));
+  parts.push(
+    startPart(
+      "web",
+      ["node_modules/next/dist/bin/next", "dev", "-H", "127.0.0.1", "-p", String(plan.webPort)],
+      plan,
+      { NODE_ENV: "development" },
+    ),
+  );
   console.log(`http://127.0.0.1:${plan.webPort} (logs in ${path.join(plan.folder, "logs")})`);
 }
 

@@ -6,7 +6,8 @@ const folder = path.resolve(process.env.DEMO_DIR ?? ".demo");
 
 /** Deletes the demo's data. Refuses while the demo runs. */
 async function main(): Promise<void> {
-  if (await isPortTaken(Number(process.env.PORT ?? 3000))) throw new Error("The demo is running. Stop it first.");
+  if (await isPortTaken(Number(process.env.PORT ?? 3000)))
+    throw new Error("The demo is running. Stop it first.");
   if (existsSync(folder)) rmSync(folder, { recursive: true });
   console.log("The demo's data is gone; the next start makes it anew.");
 }

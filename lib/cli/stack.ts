@@ -43,7 +43,19 @@ export function stackEnv(plan: StackPlan): NodeJS.ProcessEnv {
   };
 }
 
-const SOURCES = ["app", "components", "lib", "db", "fonts", "public", "next.config.mjs", "tailwind.config.ts", "package-lock.json", "tsconfig.json", "postcss.config.mjs"];
+const SOURCES = [
+  "app",
+  "components",
+  "lib",
+  "db",
+  "fonts",
+  "public",
+  "next.config.mjs",
+  "tailwind.config.ts",
+  "package-lock.json",
+  "tsconfig.json",
+  "postcss.config.mjs",
+];
 
 /** SHA-256 over the names and bytes of everything that the build reads. */
 export function sourcesHash(): string {
@@ -65,15 +77,28 @@ export function sourcesHash(): string {
 export async function ensureBuilt(say: (line: string) => void): Promise<void> {
   const stamp = path.join(ROOT, ".next", "merestone-sources");
   const wanted = sourcesHash();
-  const isFresh = existsSync(path.join(ROOT, ".next", "BUILD_ID")) && existsSync(stamp) && readFileSync(stamp, "utf8") === wanted;
+  const isFresh =
+    existsSync(path.join(ROOT, ".next", "BUILD_ID")) &&
+    existsSync(stamp) &&
+    readFileSync(stamp, "utf8") === wanted;
   if (isFresh) return;
   say("Building (about half a minute) ...");
-  await runToEnd("node", ["node_modules/next/dist/bin/next", "build"], { ...process.env, NODE_ENV: "production", NEXT_TELEMETRY_DISABLED: "1" }, path.join(ROOT, ".next", "build.log"));
+  await runToEnd(
+    "node",
+    ["node_modules/next/dist/bin/next", "build"],
+    { ...process.env, NODE_ENV: "production", NEXT_TELEMETRY_DISABLED: "1" },
+    path.join(ROOT, ".next", "build.log"),
+  );
   writeFileSync(stamp, wanted);
 }
 
 /** Runs a command to its end; throws with the last lines of its output when it fails. */
-export async function runToEnd(command: string, args: string[], environment: NodeJS.ProcessEnv, logFile?: string): Promise<void> {
+export async function runToEnd(
+  command: string,
+  args: string[],
+  environment: NodeJS.ProcessEnv,
+  logFile?: string,
+): Promise<void> {
   const child = spawn(command, args, { cwd: ROOT, env: environment, stdio: ["ignore", "pipe", "pipe"] });
   let output = "";
   child.stdout.on("data", (chunk: Buffer) => (output += chunk.toString()));
@@ -83,16 +108,28 @@ export async function runToEnd(command: string, args: string[], environment: Nod
     mkdirSync(path.dirname(logFile), { recursive: true });
     writeFileSync(logFile, output);
   }
-  if (code !== 0) throw new Error(`${command} ${args.join(" ")} ended with ${code}:\n${output.split("\n").slice(-40).join("\n")}`);
+  if (code !== 0)
+    throw new Error(
+      `${command} ${args.join(" ")} ended with ${code}:\n${output.split("\n").slice(-40).join("\n")}`,
+    );
 }
 
 export type Part = { name: string; process: ChildProcess };
 
 /** Starts a TypeScript entry as a child of its own, its output in `folder`/logs/`name`.log. */
-export function startPart(name: string, args: string[], plan: StackPlan, extra: Partial<NodeJS.ProcessEnv> = {}): Part {
+export function startPart(
+  name: string,
+  args: string[],
+  plan: StackPlan,
+  extra: Partial<NodeJS.ProcessEnv> = {},
+): Part {
   const logs = path.join(plan.folder, "logs");
   mkdirSync(logs, { recursive: true });
-  const child = spawn("node", args, { cwd: ROOT, env: { ...stackEnv(plan), ...extra }, stdio: ["ignore", "pipe", "pipe"] });
+  const child = spawn("node", args, {
+    cwd: ROOT,
+    env: { ...stackEnv(plan), ...extra },
+    stdio: ["ignore", "pipe", "pipe"],
+  });
   const file = path.join(logs, `${name}.log`);
   writeFileSync(file, "", { flag: "a" });
   const append = (chunk: Buffer) => writeFileSync(file, chunk, { flag: "a" });
@@ -101,16 +138,23 @@ export function startPart(name: string, args: string[], plan: StackPlan, extra: 
   return { name, process: child };
 }
 
-export const startFakes = (plan: StackPlan) => startPart("fakes", ["--import", "tsx", "fakes/start.ts"], plan);
-export const startWorker = (plan: StackPlan) => startPart("worker", ["--import", "tsx", "lib/cli/worker.ts"], plan);
+export const startFakes = (plan: StackPlan) =>
+  startPart("fakes", ["--import", "tsx", "fakes/start.ts"], plan);
+export const startWorker = (plan: StackPlan) =>
+  startPart("worker", ["--import", "tsx", "lib/cli/worker.ts"], plan);
 export const startWeb = (plan: StackPlan) =>
-  startPart("web", ["node_modules/next/dist/bin/next", "start", "-H", "127.0.0.1", "-p", String(plan.webPort)], plan);
+  startPart(
+    "web",
+    ["node_modules/next/dist/bin/next", "start", "-H", "127.0.0.1", "-p", String(plan.webPort)],
+    plan,
+  );
 
 /** Waits until the address answers with any HTTP status below 500. */
 export async function waitFor(url: string, part: Part, timeoutMs = 30_000): Promise<void> {
   const deadline = Date.now() + timeoutMs;
   while (Date.now() < deadline) {
-    if (part.process.exitCode !== null) throw new Error(`${part.name} ended with ${part.process.exitCode}; see its log`);
+    if (part.process.exitCode !== null)
+      throw new Error(`${part.name} ended with ${part.process.exitCode}; see its log`);
     const answer = await fetch(url).catch(() => null);
     if (answer && answer.status < 500) return;
     await sleep(100);
@@ -124,7 +168,8 @@ export async function stopParts(parts: Part[]): Promise<void> {
   const gone = live.map((part) => new Promise<void>((resolve) => part.process.once("exit", () => resolve())));
   for (const part of live) part.process.kill("SIGTERM");
   await Promise.race([Promise.all(gone), sleep(8000)]);
-  for (const part of live) if (part.process.exitCode === null && part.process.signalCode === null) part.process.kill("SIGKILL");
+  for (const part of live)
+    if (part.process.exitCode === null && part.process.signalCode === null) part.process.kill("SIGKILL");
 }
 
 /** Whether something listens on a loopback port. */

@@ -27,7 +27,10 @@ async function runJob(job: JobRow): Promise<void> {
   // A long handler that reports nothing still lives: its lease is extended while it runs.
   const pulse = setInterval(() => reportProgress(db, job, job.progress, job.progressNote, nowMs()), 20_000);
   try {
-    const handler = HANDLERS[job.kind as keyof typeof HANDLERS] as (payload: unknown, context: JobContext) => Promise<void>;
+    const handler = HANDLERS[job.kind as keyof typeof HANDLERS] as (
+      payload: unknown,
+      context: JobContext,
+    ) => Promise<void>;
     if (!handler) throw new JobRefused(`no handler for ${job.kind}`);
     await handler(job.payload, context);
     finishJob(db, job, nowMs());
@@ -52,7 +55,13 @@ async function sweepRegularly(): Promise<void> {
   while (!stopping) {
     enqueue(getDb(), { kind: "claims.sweep", payload: {}, uniqueKey: "claims.sweep", nowMs: nowMs() });
     if (nowMs() >= nextReconcileMs) {
-      enqueue(getDb(), { kind: "ledger.reconcile", payload: {}, uniqueKey: "ledger.reconcile", nowMs: nowMs(), priority: -10 });
+      enqueue(getDb(), {
+        kind: "ledger.reconcile",
+        payload: {},
+        uniqueKey: "ledger.reconcile",
+        nowMs: nowMs(),
+        priority: -10,
+      });
       nextReconcileMs = nowMs() + 24 * 3_600_000;
     }
     for (let waited = 0; waited < SWEEP_EVERY_MS && !stopping; waited += 500) await sleep(500);

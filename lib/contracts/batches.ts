@@ -24,8 +24,14 @@ export const KeyAndBriefInput = z.object({
     .array(ClassInput)
     .min(1, "Name at least one class.")
     .max(40, "40 classes at most.")
-    .refine((list) => new Set(list.map((c) => c.number)).size === list.length, "Two classes have the same number.")
-    .refine((list) => new Set(list.map((c) => c.name.toLowerCase())).size === list.length, "Two classes have the same name."),
+    .refine(
+      (list) => new Set(list.map((c) => c.number)).size === list.length,
+      "Two classes have the same number.",
+    )
+    .refine(
+      (list) => new Set(list.map((c) => c.name.toLowerCase())).size === list.length,
+      "Two classes have the same name.",
+    ),
   brief: z.string().trim().min(1, "Write the brief: what counts, what does not.").max(20_000),
   examples: z.array(z.object({ imageId: z.string(), caption: z.string().trim().max(200) })).max(12),
   sensitive: z.boolean(),
@@ -55,7 +61,10 @@ export const QualityAndPayInput = PayFields.extend({
   versionSeen: z.int(),
 })
   .refine((v) => v.kMax >= v.kMin, { path: ["kMax"], message: "The most cannot be below the fewest." })
-  .refine((v) => v.capCents >= v.baseCents, { path: ["capCents"], message: "The cap cannot be below the base." });
+  .refine((v) => v.capCents >= v.baseCents, {
+    path: ["capCents"],
+    message: "The cap cannot be below the base.",
+  });
 export type QualityAndPayInput = z.output<typeof QualityAndPayInput>;
 
 export const VersionSeen = z.object({ versionSeen: z.int() });
@@ -82,7 +91,12 @@ export const PlanUploadsInput = z.object({
 
 /** What the browser is to do with one file. */
 export const UploadPlan = z.discriminatedUnion("kind", [
-  z.object({ kind: z.literal("put"), imageId: z.string(), url: z.string(), headers: z.record(z.string(), z.string()) }),
+  z.object({
+    kind: z.literal("put"),
+    imageId: z.string(),
+    url: z.string(),
+    headers: z.record(z.string(), z.string()),
+  }),
   z.object({
     kind: z.literal("parts"),
     imageId: z.string(),

@@ -40,7 +40,12 @@ export const DeskClass = z.object({
 });
 export type DeskClass = z.output<typeof DeskClass>;
 
-export const DeskProposal = z.object({ id: z.string(), classId: z.string().nullable(), shape: ShapeSchema, score: z.number() });
+export const DeskProposal = z.object({
+  id: z.string(),
+  classId: z.string().nullable(),
+  shape: ShapeSchema,
+  score: z.number(),
+});
 export type DeskProposal = z.output<typeof DeskProposal>;
 
 /** Everything that the desk needs to open one image. */

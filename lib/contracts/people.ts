@@ -29,7 +29,10 @@ export const ResetInput = z.object({ secret: z.string().min(20).max(100), passwo
 
 export const AccountInput = z.object({
   name: Name,
-  acceptsSensitive: z.preprocess((value) => value === "on" || value === true || value === "true", z.boolean()),
+  acceptsSensitive: z.preprocess(
+    (value) => value === "on" || value === true || value === "true",
+    z.boolean(),
+  ),
 });
 
 export const PasswordInput = z.object({ current: z.string().max(200).default(""), password: Password });

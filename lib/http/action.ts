@@ -4,8 +4,7 @@ import { requireActor, type Actor, type RoleSpec } from "@/lib/auth/actor";
 import { toProblem } from "./problem";
 
 export type ActionResult<T> =
-  | { ok: true; value: T }
-  | { ok: false; message: string; fields: Record<string, string> };
+  { ok: true; value: T } | { ok: false; message: string; fields: Record<string, string> };
 
 type Spec<S> = { role: RoleSpec; input: S };
 

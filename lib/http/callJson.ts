@@ -10,12 +10,19 @@ export class CallError extends Error {
 }
 
 /** Calls one of our own endpoints from the browser. Throws CallError with a message that can be shown. */
-export async function callJson<T>(method: "GET" | "POST" | "PUT" | "DELETE", url: string, body?: unknown): Promise<T> {
+export async function callJson<T>(
+  method: "GET" | "POST" | "PUT" | "DELETE",
+  url: string,
+  body?: unknown,
+): Promise<T> {
   let answer: Response;
   try {
     answer = await fetch(url, {
       method,
-      ...(body !== undefined && { headers: { "content-type": "application/json" }, body: JSON.stringify(body) }),
+      ...(body !== undefined && {
+        headers: { "content-type": "application/json" },
+        body: JSON.stringify(body),
+      }),
     });
   } catch (cause) {
     throw Object.assign(new CallError(0, "The network is away."), { cause });

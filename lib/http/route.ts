@@ -39,8 +39,12 @@ export function route<
       const actor = await requireActor(spec.role);
       refuseForeignOrigin(request);
       const params = spec.params ? spec.params.parse(await context.params) : undefined;
-      const query = spec.query ? spec.query.parse(Object.fromEntries(new URL(request.url).searchParams)) : undefined;
-      const body = spec.body ? spec.body.parse(await readJson(request, spec.bodyBytesMax ?? BODY_BYTES_MAX)) : undefined;
+      const query = spec.query
+        ? spec.query.parse(Object.fromEntries(new URL(request.url).searchParams))
+        : undefined;
+      const body = spec.body
+        ? spec.body.parse(await readJson(request, spec.bodyBytesMax ?? BODY_BYTES_MAX))
+        : undefined;
       return await handle({
         actor,
         params: params as Parsed<P>,

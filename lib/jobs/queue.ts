@@ -66,7 +66,12 @@ export function takeJob(db: Db, workerId: string, nowMs: number): JobRow | undef
     if (!due) return undefined;
     return tx
       .update(jobs)
-      .set({ status: "running", attempts: due.attempts + 1, lockedBy: workerId, lockedUntilMs: nowMs + LEASE_MS })
+      .set({
+        status: "running",
+        attempts: due.attempts + 1,
+        lockedBy: workerId,
+        lockedUntilMs: nowMs + LEASE_MS,
+      })
       .where(eq(jobs.id, due.id))
       .returning()
       .get();
@@ -74,7 +79,13 @@ export function takeJob(db: Db, workerId: string, nowMs: number): JobRow | undef
 }
 
 /** Extends the lease and says how far the job is, 0..1. False when the job is no longer this worker's. */
-export function reportProgress(db: Db, job: JobRow, progress: number, note: string | null, nowMs: number): boolean {
+export function reportProgress(
+  db: Db,
+  job: JobRow,
+  progress: number,
+  note: string | null,
+  nowMs: number,
+): boolean {
   const changed = db
     .update(jobs)
     .set({ progress, progressNote: note, lockedUntilMs: nowMs + LEASE_MS })
@@ -86,7 +97,14 @@ export function reportProgress(db: Db, job: JobRow, progress: number, note: stri
 /** Marks the job done. Runs in the handler's own transaction where it has one. */
 export function finishJob(tx: Db | Tx, job: JobRow, nowMs: number): void {
   tx.update(jobs)
-    .set({ status: "done", progress: 1, finishedAtMs: nowMs, lockedBy: null, lockedUntilMs: null, lastError: null })
+    .set({
+      status: "done",
+      progress: 1,
+      finishedAtMs: nowMs,
+      lockedBy: null,
+      lockedUntilMs: null,
+      lastError: null,
+    })
     .where(eq(jobs.id, job.id))
     .run();
 }

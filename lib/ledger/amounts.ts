@@ -6,7 +6,8 @@ export const MINOR_UNITS_PER_UNIT = 100;
 
 /** Throws InvariantError unless the value is a whole, safe number of cents. */
 export function requireCents(value: number, what: string): number {
-  if (!Number.isSafeInteger(value)) throw new InvariantError(`${what} is not a whole number of cents: ${value}`);
+  if (!Number.isSafeInteger(value))
+    throw new InvariantError(`${what} is not a whole number of cents: ${value}`);
   return value;
 }
 
@@ -31,7 +32,9 @@ export function splitCents(totalCents: number, weights: ReadonlyMap<string, numb
   const exact = keys.map((key) => ({ key, share: (totalCents * (weights.get(key) ?? 0)) / sum }));
   const shares = new Map(exact.map(({ key, share }) => [key, Math.floor(share)]));
   let left = totalCents - [...shares.values()].reduce((total, share) => total + share, 0);
-  const byRemainder = [...exact].sort((a, b) => b.share - Math.floor(b.share) - (a.share - Math.floor(a.share)));
+  const byRemainder = [...exact].sort(
+    (a, b) => b.share - Math.floor(b.share) - (a.share - Math.floor(a.share)),
+  );
   for (const { key } of byRemainder) {
     if (left === 0) break;
     shares.set(key, (shares.get(key) ?? 0) + 1);

@@ -102,7 +102,9 @@ export function payoutSentPosting(annotatorId: string, cents: number): Posting {
 /** The transfer could not be made, or came back: the money is the annotator's to ask for again. */
 export function payoutBackPosting(annotatorId: string, cents: number, from: "transit" | "stripe"): Posting {
   return posting([
-    from === "transit" ? { accountId: accountId("transit", annotatorId), cents: -cents } : { accountId: accountId("stripe"), cents: -cents },
+    from === "transit"
+      ? { accountId: accountId("transit", annotatorId), cents: -cents }
+      : { accountId: accountId("stripe"), cents: -cents },
     { accountId: accountId("payable", annotatorId), cents },
   ]);
 }

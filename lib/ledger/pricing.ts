@@ -24,7 +24,10 @@ export function payFor(rates: PayRates, { agreedBoxes, agreedPolygons, goodFaith
 /** The platform's fee on top of a pay, floored to a whole cent: rounding favours the requester. `feeBps` is 0..10,000. */
 export function feeFor(payCents: number, feeBps: number): number {
   requireNonNegative(payCents, "the pay");
-  invariant(Number.isInteger(feeBps) && feeBps >= 0 && feeBps <= 10_000, "the fee is 0 to 10,000 basis points");
+  invariant(
+    Number.isInteger(feeBps) && feeBps >= 0 && feeBps <= 10_000,
+    "the fee is 0 to 10,000 basis points",
+  );
   return Number((BigInt(payCents) * BigInt(feeBps)) / 10_000n);
 }
 
@@ -41,7 +44,12 @@ export type QuoteInput = {
 };
 
 /** Pay and fee of a batch in cents. */
-export type Quote = { expectedCents: number; expectedFeeCents: number; worstCents: number; worstFeeCents: number };
+export type Quote = {
+  expectedCents: number;
+  expectedFeeCents: number;
+  worstCents: number;
+  worstFeeCents: number;
+};
 
 /** Annotators asked beyond the fewest, as a share of what is possible, before a batch has measured it. */
 const EXTRA_SHARE = 0.2;
@@ -50,9 +58,20 @@ const EXTRA_SHARE = 0.2;
  * What a batch costs. The worst case is every image drawn by kMax people, each at the cap, and its fee; since
  * each pay is at most the cap and the fee of each is floored, no bill exceeds it. It is what gets held.
  */
-export function quote({ imageCount, kMin, kMax, expectedInstances, polygonShare, pay, feeBps }: QuoteInput): Quote {
+export function quote({
+  imageCount,
+  kMin,
+  kMax,
+  expectedInstances,
+  polygonShare,
+  pay,
+  feeBps,
+}: QuoteInput): Quote {
   invariant(Number.isInteger(imageCount) && imageCount >= 0, "images are counted");
-  invariant(Number.isInteger(kMin) && Number.isInteger(kMax) && kMin >= 1 && kMax >= kMin, "1 <= kMin <= kMax");
+  invariant(
+    Number.isInteger(kMin) && Number.isInteger(kMax) && kMin >= 1 && kMax >= kMin,
+    "1 <= kMin <= kMax",
+  );
   const worstTasks = imageCount * kMax;
   const polygons = expectedInstances * polygonShare;
   const typicalCents = Math.min(

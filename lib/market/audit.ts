@@ -4,18 +4,37 @@ import type { Reader } from "@/db/client";
 import { auditLog } from "@/db/schema";
 import { newId } from "@/lib/ids";
 
-type Entry = { actorId: string | null; action: string; subject: string; detail?: Record<string, unknown>; nowMs: number };
+type Entry = {
+  actorId: string | null;
+  action: string;
+  subject: string;
+  detail?: Record<string, unknown>;
+  nowMs: number;
+};
 
 const GENESIS = "0".repeat(64);
 
 function hashOf(previous: string, id: string, entry: Required<Entry>): string {
-  const text = JSON.stringify([previous, id, entry.actorId, entry.action, entry.subject, entry.detail, entry.nowMs]);
+  const text = JSON.stringify([
+    previous,
+    id,
+    entry.actorId,
+    entry.action,
+    entry.subject,
+    entry.detail,
+    entry.nowMs,
+  ]);
   return createHash("sha256").update(text).digest("hex");
 }
 
 /** Adds one entry to the audit log, chained to the one before by SHA-256, in the caller's transaction. */
 export function audit(tx: Reader, { actorId, action, subject, detail = {}, nowMs }: Entry): void {
-  const last = tx.select({ hash: auditLog.hash }).from(auditLog).orderBy(desc(auditLog.sequence)).limit(1).get();
+  const last = tx
+    .select({ hash: auditLog.hash })
+    .from(auditLog)
+    .orderBy(desc(auditLog.sequence))
+    .limit(1)
+    .get();
   const previousHash = last?.hash ?? GENESIS;
   const id = newId("aud");
   const hash = hashOf(previousHash, id, { actorId, action, subject, detail, nowMs });

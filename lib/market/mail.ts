@@ -17,7 +17,9 @@ const escape = (text: string) =>
 /** Puts a letter in the outbox, inside the transaction of what it tells of. */
 export function post(tx: Reader, letter: Letter, nowMs: number): void {
   const link = letter.action ? new URL(letter.action.path, env().APP_URL).href : null;
-  const text = [...letter.lines, ...(link ? [`${letter.action?.label}: ${link}`] : []), "Merestone"].join("\n\n");
+  const text = [...letter.lines, ...(link ? [`${letter.action?.label}: ${link}`] : []), "Merestone"].join(
+    "\n\n",
+  );
   const paragraphs = letter.lines.map((line) => `<p style="margin:0 0 16px">${escape(line)}</p>`).join("");
   const button = link
     ? `<p style="margin:24px 0"><a href="${escape(link)}" style="background:#26323a;color:#f7f4ec;padding:12px 20px;text-decoration:none;border-radius:3px">${escape(letter.action?.label ?? "")}</a></p><p style="margin:0 0 16px;color:#55606a;font-size:13px">Or open ${escape(link)}</p>`

@@ -78,13 +78,20 @@ export async function presignPut(key: string, byteSize: number, mediaType: strin
 }
 
 export async function startMultipart(key: string, mediaType: string): Promise<string> {
-  const answer = await s3().send(new CreateMultipartUploadCommand({ Bucket: Bucket(), Key: key, ContentType: mediaType }));
+  const answer = await s3().send(
+    new CreateMultipartUploadCommand({ Bucket: Bucket(), Key: key, ContentType: mediaType }),
+  );
   if (!answer.UploadId) throw new Error("the object store gave no upload id");
   return answer.UploadId;
 }
 
 export function presignPart(key: string, uploadId: string, number: number): Promise<string> {
-  const command = new UploadPartCommand({ Bucket: Bucket(), Key: key, UploadId: uploadId, PartNumber: number });
+  const command = new UploadPartCommand({
+    Bucket: Bucket(),
+    Key: key,
+    UploadId: uploadId,
+    PartNumber: number,
+  });
   return getSignedUrl(signer(), command, { expiresIn: PRESIGNED_SECONDS });
 }
 
@@ -100,14 +107,23 @@ export async function listParts(key: string, uploadId: string): Promise<PartTag[
 }
 
 export async function completeMultipart(key: string, uploadId: string, parts: PartTag[]): Promise<void> {
-  const Parts = [...parts].sort((a, b) => a.number - b.number).map((p) => ({ PartNumber: p.number, ETag: p.etag }));
+  const Parts = [...parts]
+    .sort((a, b) => a.number - b.number)
+    .map((p) => ({ PartNumber: p.number, ETag: p.etag }));
   await s3().send(
-    new CompleteMultipartUploadCommand({ Bucket: Bucket(), Key: key, UploadId: uploadId, MultipartUpload: { Parts } }),
+    new CompleteMultipartUploadCommand({
+      Bucket: Bucket(),
+      Key: key,
+      UploadId: uploadId,
+      MultipartUpload: { Parts },
+    }),
   );
 }
 
 export async function abortMultipart(key: string, uploadId: string): Promise<void> {
-  await s3().send(new AbortMultipartUploadCommand({ Bucket: Bucket(), Key: key, UploadId: uploadId })).catch(() => undefined);
+  await s3()
+    .send(new AbortMultipartUploadCommand({ Bucket: Bucket(), Key: key, UploadId: uploadId }))
+    .catch(() => undefined);
 }
 
 /** Size in bytes, or null when there is no such object. */
@@ -128,7 +144,9 @@ export async function getObject(key: string): Promise<Buffer> {
 }
 
 /** The object as a web stream with its length, for answering a request without holding it in memory. */
-export async function streamObject(key: string): Promise<{ stream: ReadableStream; byteSize: number | undefined }> {
+export async function streamObject(
+  key: string,
+): Promise<{ stream: ReadableStream; byteSize: number | undefined }> {
   const answer = await s3().send(new GetObjectCommand({ Bucket: Bucket(), Key: key }));
   if (!answer.Body) throw new Error(`object ${key} has no body`);
   return { stream: answer.Body.transformToWebStream(), byteSize: answer.ContentLength };
@@ -140,7 +158,10 @@ export async function putObject(key: string, body: Buffer, mediaType: string): P
 
 /** Stores a stream of unknown length. */
 export async function putStream(key: string, body: Readable, mediaType: string): Promise<void> {
-  await new Upload({ client: s3(), params: { Bucket: Bucket(), Key: key, Body: body, ContentType: mediaType } }).done();
+  await new Upload({
+    client: s3(),
+    params: { Bucket: Bucket(), Key: key, Body: body, ContentType: mediaType },
+  }).done();
 }
 
 export async function deleteObject(key: string): Promise<void> {

@@ -1,7 +1,18 @@
 import { mkdtempSync, rmSync } from "node:fs";
 import os from "node:os";
 import path from "node:path";
-import { freePort, runToEnd, stackEnv, startFakes, startWeb, startWorker, stopParts, waitFor, type Part, type StackPlan } from "@/lib/cli/stack";
+import {
+  freePort,
+  runToEnd,
+  stackEnv,
+  startFakes,
+  startWeb,
+  startWorker,
+  stopParts,
+  waitFor,
+  type Part,
+  type StackPlan,
+} from "@/lib/cli/stack";
 
 export type Stack = {
   plan: StackPlan;
@@ -29,7 +40,8 @@ export async function startStack({ worker = true } = {}): Promise<Stack> {
   try {
     const fakes = startFakes(plan);
     parts.push(fakes);
-    for (const port of [plan.s3Port, plan.stripePort, plan.resendPort]) await waitFor(`http://127.0.0.1:${port}/`, fakes);
+    for (const port of [plan.s3Port, plan.stripePort, plan.resendPort])
+      await waitFor(`http://127.0.0.1:${port}/`, fakes);
     await runToEnd("node", ["--import", "tsx", "lib/cli/migrate.ts"], stackEnv(plan));
     const web = startWeb(plan);
     parts.push(web);

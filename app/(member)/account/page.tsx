@@ -27,9 +27,20 @@ export default async function AccountPage() {
               { term: "Since", detail: <When at={person.createdAtMs} form="date" /> },
             ]}
           />
-          <AccountForm name={person.name} acceptsSensitive={person.acceptsSensitive} isAnnotator={person.role === "annotator"} />
+          <AccountForm
+            name={person.name}
+            acceptsSensitive={person.acceptsSensitive}
+            isAnnotator={person.role === "annotator"}
+          />
         </Sheet>
-        <Sheet title="Password" lead={person.passwordHash ? "Setting a new one ends every session, this one too." : "You sign in by mail links. A password is optional; setting one ends every session, this one too."}>
+        <Sheet
+          title="Password"
+          lead={
+            person.passwordHash
+              ? "Setting a new one ends every session, this one too."
+              : "You sign in by mail links. A password is optional; setting one ends every session, this one too."
+          }
+        >
           <PasswordForm hasPassword={person.passwordHash !== null} />
         </Sheet>
         <Sheet title="Sessions" lead="If you left a device somewhere, end every session at once.">

@@ -20,9 +20,14 @@ export default async function AuditPage() {
   const broken = findAuditBreak(db);
   return (
     <>
-      <PageHeader title="Audit" lead="Who did what. Each entry carries the hash of the one before, so that a changed or missing one shows." />
+      <PageHeader
+        title="Audit"
+        lead="Who did what. Each entry carries the hash of the one before, so that a changed or missing one shows."
+      />
       <Notice kind={broken === null ? "info" : "danger"} className="mb-6">
-        {broken === null ? "The chain is unbroken." : `The chain breaks at entry ${broken}. Somebody changed the log.`}
+        {broken === null
+          ? "The chain is unbroken."
+          : `The chain breaks at entry ${broken}. Somebody changed the log.`}
       </Notice>
       {rows.length === 0 ? (
         <EmptyState title="Nothing yet" />
@@ -42,7 +47,10 @@ export default async function AuditPage() {
                   <Cell label="Who">{actorName ?? "the product"}</Cell>
                   <Cell label="Detail" className="font-figures max-w-[28rem] text-xs wrap-anywhere">
                     {Object.entries(entry.detail)
-                      .map(([name, value]) => `${name}: ${typeof value === "string" ? value : JSON.stringify(value)}`)
+                      .map(
+                        ([name, value]) =>
+                          `${name}: ${typeof value === "string" ? value : JSON.stringify(value)}`,
+                      )
                       .join(" · ") || "–"}
                   </Cell>
                   <Cell label="When" align="end">

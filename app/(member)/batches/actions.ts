@@ -23,21 +23,30 @@ export const startBatch = action({ role: "requester", input: CreateBatchInput },
   redirect(`/batches/${batchId}/setup/images`);
 });
 
-export const saveKey = action({ role: "requester", input: Batch.and(KeyAndBriefInput) }, ({ actor, input }) => {
-  const { batchId, ...rest } = input;
-  saveKeyAndBrief({ actor, nowMs: nowMs(), batchId, input: rest });
-  revalidatePath(`/batches/${batchId}`, "layout");
-  return {};
-});
+export const saveKey = action(
+  { role: "requester", input: Batch.and(KeyAndBriefInput) },
+  ({ actor, input }) => {
+    const { batchId, ...rest } = input;
+    saveKeyAndBrief({ actor, nowMs: nowMs(), batchId, input: rest });
+    revalidatePath(`/batches/${batchId}`, "layout");
+    return {};
+  },
+);
 
-export const savePay = action({ role: "requester", input: Batch.and(QualityAndPayInput) }, ({ actor, input }) => {
-  const { batchId, ...rest } = input;
-  saveQualityAndPay({ actor, nowMs: nowMs(), batchId, input: rest });
-  revalidatePath(`/batches/${batchId}`, "layout");
-  return {};
-});
+export const savePay = action(
+  { role: "requester", input: Batch.and(QualityAndPayInput) },
+  ({ actor, input }) => {
+    const { batchId, ...rest } = input;
+    saveQualityAndPay({ actor, nowMs: nowMs(), batchId, input: rest });
+    revalidatePath(`/batches/${batchId}`, "layout");
+    return {};
+  },
+);
 
-const PublishInput = Batch.extend({ versionSeen: z.coerce.number().int(), worstCentsSeen: z.coerce.number().int() });
+const PublishInput = Batch.extend({
+  versionSeen: z.coerce.number().int(),
+  worstCentsSeen: z.coerce.number().int(),
+});
 
 /** Funds a draft from the wallet and opens it. */
 export const fund = action({ role: "requester", input: PublishInput }, ({ actor, input }) => {
@@ -45,11 +54,14 @@ export const fund = action({ role: "requester", input: PublishInput }, ({ actor,
   redirect(`/batches/${input.batchId}`);
 });
 
-export const pause = action({ role: "requester", input: Batch.extend({ paused: z.boolean() }) }, ({ actor, input }) => {
-  setPaused({ actor, nowMs: nowMs(), ...input });
-  revalidatePath(`/batches/${input.batchId}`);
-  return {};
-});
+export const pause = action(
+  { role: "requester", input: Batch.extend({ paused: z.boolean() }) },
+  ({ actor, input }) => {
+    setPaused({ actor, nowMs: nowMs(), ...input });
+    revalidatePath(`/batches/${input.batchId}`);
+    return {};
+  },
+);
 
 /** Ends a batch; what is unspent goes back to the wallet. */
 export const closeBatch = action({ role: "requester", input: Batch }, ({ actor, input }) => {

@@ -19,7 +19,10 @@ export const metadata: Metadata = { title: "Batches" };
 export default async function BatchesPage() {
   const actor = await requirePageActor("requester");
   const teams = listTeamsOf(getDb(), actor.id);
-  const batches = listBatchesOf(getDb(), teams.map((team) => team.id));
+  const batches = listBatchesOf(
+    getDb(),
+    teams.map((team) => team.id),
+  );
   const teamName = new Map(teams.map((team) => [team.id, team.name]));
   const mayPost = teams.some((team) => team.role !== "viewer");
   const newBatch = mayPost ? (
@@ -29,10 +32,15 @@ export default async function BatchesPage() {
   ) : null;
   return (
     <>
-      <PageHeader title="Batches" lead="Pictures that you post together, with one brief, one key and one price." actions={newBatch} />
+      <PageHeader
+        title="Batches"
+        lead="Pictures that you post together, with one brief, one key and one price."
+        actions={newBatch}
+      />
       {batches.length === 0 ? (
         <EmptyState title="No batch yet" action={newBatch}>
-          A batch takes four steps: pictures, key and brief, quality and pay, and a look at the cost before anything is charged.
+          A batch takes four steps: pictures, key and brief, quality and pay, and a look at the cost before
+          anything is charged.
         </EmptyState>
       ) : (
         <Sheet>
@@ -49,10 +57,21 @@ export default async function BatchesPage() {
               {batches.map((batch) => (
                 <Row key={batch.id}>
                   <RowHead>
-                    <Link href={batch.status === "draft" ? `/batches/${batch.id}/setup/images` : `/batches/${batch.id}`} className="link">
+                    <Link
+                      href={
+                        batch.status === "draft"
+                          ? `/batches/${batch.id}/setup/images`
+                          : `/batches/${batch.id}`
+                      }
+                      className="link"
+                    >
                       {batch.title}
                     </Link>
-                    {teams.length > 1 ? <span className="text-muted block text-sm font-normal">{teamName.get(batch.teamId)}</span> : null}
+                    {teams.length > 1 ? (
+                      <span className="text-muted block text-sm font-normal">
+                        {teamName.get(batch.teamId)}
+                      </span>
+                    ) : null}
                   </RowHead>
                   <Cell label="State">
                     <BatchMark status={batch.status} split={batch.progress.split} />
@@ -69,10 +88,18 @@ export default async function BatchesPage() {
                     {batch.progress.images}
                   </Cell>
                   <Cell label="Agreement" figure>
-                    {batch.progress.agreement === null ? "–" : <Percent fraction={batch.progress.agreement} />}
+                    {batch.progress.agreement === null ? (
+                      "–"
+                    ) : (
+                      <Percent fraction={batch.progress.agreement} />
+                    )}
                   </Cell>
                   <Cell label="Posted" align="end">
-                    {batch.openedAtMs === null ? <span className="text-muted">not yet</span> : <When at={batch.openedAtMs} form="date" />}
+                    {batch.openedAtMs === null ? (
+                      <span className="text-muted">not yet</span>
+                    ) : (
+                      <When at={batch.openedAtMs} form="date" />
+                    )}
                   </Cell>
                 </Row>
               ))}

@@ -30,7 +30,10 @@ export default async function DocketPage({ searchParams }: Props) {
   const now = nowMs();
   return (
     <>
-      <PageHeader title="Docket" lead="What people could not agree on. Each decision needs a reason, and both sides read it." />
+      <PageHeader
+        title="Docket"
+        lead="What people could not agree on. Each decision needs a reason, and both sides read it."
+      />
       <LinkTabs
         label="Docket"
         tabs={[
@@ -41,7 +44,9 @@ export default async function DocketPage({ searchParams }: Props) {
       <div className="mt-6">
         {rows.length === 0 ? (
           <EmptyState title={show === "open" ? "Nothing to decide" : "Nothing decided yet"}>
-            {show === "open" ? "Contested scores, contested pictures and pictures without agreement come here by themselves." : "Decisions are kept here with their reasons."}
+            {show === "open"
+              ? "Contested scores, contested pictures and pictures without agreement come here by themselves."
+              : "Decisions are kept here with their reasons."}
           </EmptyState>
         ) : (
           <Sheet>
@@ -63,17 +68,27 @@ export default async function DocketPage({ searchParams }: Props) {
                       <span className="text-muted block text-sm font-normal">{batchTitle}</span>
                     </RowHead>
                     <Cell label="Contested">
-                      <StateMark state={show === "open" ? "disputed" : "agreed"}>{show === "decided" && dispute.decision ? OUTCOME[dispute.decision.outcome] : KIND[dispute.kind]}</StateMark>
+                      <StateMark state={show === "open" ? "disputed" : "agreed"}>
+                        {show === "decided" && dispute.decision
+                          ? OUTCOME[dispute.decision.outcome]
+                          : KIND[dispute.kind]}
+                      </StateMark>
                       <span className="text-muted block text-sm">{openerName ?? "by itself"}</span>
                     </Cell>
                     <Cell label="Reason given" className="max-w-80">
                       <span className="line-clamp-2">{dispute.decisionReason ?? dispute.reason}</span>
                     </Cell>
                     <Cell label="At stake" figure>
-                      <Money cents={show === "open" ? dispute.stakeCents : (dispute.movedCents ?? 0)} signed={show === "decided"} />
+                      <Money
+                        cents={show === "open" ? dispute.stakeCents : (dispute.movedCents ?? 0)}
+                        signed={show === "decided"}
+                      />
                     </Cell>
                     <Cell label={show === "open" ? "Due" : "Decided"} align="end">
-                      {show === "open" && dispute.dueAtMs < now ? <StateMark state="disputed">overdue</StateMark> : null} <When at={dispute.decidedAtMs ?? dispute.dueAtMs} form="relative" />
+                      {show === "open" && dispute.dueAtMs < now ? (
+                        <StateMark state="disputed">overdue</StateMark>
+                      ) : null}{" "}
+                      <When at={dispute.decidedAtMs ?? dispute.dueAtMs} form="relative" />
                     </Cell>
                   </Row>
                 ))}

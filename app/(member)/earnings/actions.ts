@@ -7,7 +7,9 @@ import { action } from "@/lib/http/action";
 import { requestPayout, startOnboarding } from "@/lib/market/money/payouts";
 
 /** The address of the onboarding, made fresh: it works once. */
-export const onboard = action({ role: "annotator", input: z.object({}) }, ({ actor }) => startOnboarding({ actor, nowMs: nowMs() }));
+export const onboard = action({ role: "annotator", input: z.object({}) }, ({ actor }) =>
+  startOnboarding({ actor, nowMs: nowMs() }),
+);
 
 /** Asks for everything that is payable. */
 export const payOut = action({ role: "annotator", input: z.object({}) }, ({ actor }) => {

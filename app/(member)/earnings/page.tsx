@@ -29,19 +29,28 @@ export default async function EarningsPage({ searchParams }: Props) {
   const person = findUser(db, actor.id);
   const money = earnings(db, actor.id);
   const payouts = listPayoutsOf(db, actor.id);
-  const paidCents = payouts.filter((payout) => payout.status === "paid").reduce((sum, payout) => sum + payout.amountCents, 0);
+  const paidCents = payouts
+    .filter((payout) => payout.status === "paid")
+    .reduce((sum, payout) => sum + payout.amountCents, 0);
   const thisMonth = new Date().toISOString().slice(0, 7);
   return (
     <>
       <PageHeader
         title="Earnings"
         lead="Settled pay is yours at once; ask for it whenever you like."
-        actions={person?.payoutsEnabled ? <PayoutButton payableCents={money.payableCents} /> : <OnboardButton hasAccount={Boolean(person?.stripeAccountId)} />}
+        actions={
+          person?.payoutsEnabled ? (
+            <PayoutButton payableCents={money.payableCents} />
+          ) : (
+            <OnboardButton hasAccount={Boolean(person?.stripeAccountId)} />
+          )
+        }
       />
       <div className="grid gap-6">
         {person?.payoutsEnabled ? null : (
           <Notice kind="caution" title="Where should the money go?">
-            Payouts go to a bank account that you register with Stripe. What you earn until then is kept for you.
+            Payouts go to a bank account that you register with Stripe. What you earn until then is kept for
+            you.
           </Notice>
         )}
         {money.debtCents > 0 ? (
@@ -54,7 +63,14 @@ export default async function EarningsPage({ searchParams }: Props) {
             <Money cents={money.payableCents} />
           </Stat>
           <Stat caption="On its way">
-            <Money cents={money.transitCents + payouts.filter((payout) => payout.status === "sent").reduce((sum, payout) => sum + payout.amountCents, 0)} />
+            <Money
+              cents={
+                money.transitCents +
+                payouts
+                  .filter((payout) => payout.status === "sent")
+                  .reduce((sum, payout) => sum + payout.amountCents, 0)
+              }
+            />
           </Stat>
           <Stat caption="Arrived">
             <Money cents={paidCents} />
@@ -81,7 +97,9 @@ export default async function EarningsPage({ searchParams }: Props) {
                     </RowHead>
                     <Cell label="State">
                       <PayoutMark status={payout.status} />
-                      {payout.failure ? <span className="text-muted block text-sm">{payout.failure}</span> : null}
+                      {payout.failure ? (
+                        <span className="text-muted block text-sm">{payout.failure}</span>
+                      ) : null}
                     </Cell>
                     <Cell label="Amount" figure>
                       <Money cents={payout.amountCents} />
@@ -113,10 +131,16 @@ export default async function EarningsPage({ searchParams }: Props) {
               </TableBody>
             </Table>
           )}
-          <p className="text-muted mt-4 text-sm">Tax on earnings is a matter of local law; ask a licensed adviser.</p>
+          <p className="text-muted mt-4 text-sm">
+            Tax on earnings is a matter of local law; ask a licensed adviser.
+          </p>
         </Sheet>
         <Sheet title="Movements">
-          <Movements caption="Movements of your earnings" rows={money.movements} empty="Nothing has moved yet." />
+          <Movements
+            caption="Movements of your earnings"
+            rows={money.movements}
+            empty="Nothing has moved yet."
+          />
         </Sheet>
       </div>
     </>

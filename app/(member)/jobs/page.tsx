@@ -18,7 +18,13 @@ export const metadata: Metadata = { title: "Jobs" };
 const STATUSES = ["running", "queued", "dead", "done", "cancelled"] as const;
 type Status = (typeof STATUSES)[number];
 
-const MARK: Record<Status, MarkState> = { running: "waits", queued: "plain", dead: "disputed", done: "agreed", cancelled: "plain" };
+const MARK: Record<Status, MarkState> = {
+  running: "waits",
+  queued: "plain",
+  dead: "disputed",
+  done: "agreed",
+  cancelled: "plain",
+};
 
 type Props = { searchParams: Promise<{ show?: string }> };
 
@@ -28,13 +34,25 @@ export default async function JobsPage({ searchParams }: Props) {
   const asked = (await searchParams).show;
   const db = getDb();
   const counts = jobCounts(db);
-  const countOf = (status: Status) => counts.filter((row) => row.status === status).reduce((sum, row) => sum + row.count, 0);
+  const countOf = (status: Status) =>
+    counts.filter((row) => row.status === status).reduce((sum, row) => sum + row.count, 0);
   const show = STATUSES.find((status) => status === asked) ?? (countOf("dead") > 0 ? "dead" : "done");
   const jobs = listRecentJobs(db, show, 100);
   return (
     <>
-      <PageHeader title="Jobs" lead="Work that runs behind the pages. A dead job has had all its attempts; look at the error, then give it more." />
-      <LinkTabs label="Jobs" tabs={STATUSES.map((status) => ({ href: `/jobs?show=${status}`, label: status, count: countOf(status), current: status === show }))} />
+      <PageHeader
+        title="Jobs"
+        lead="Work that runs behind the pages. A dead job has had all its attempts; look at the error, then give it more."
+      />
+      <LinkTabs
+        label="Jobs"
+        tabs={STATUSES.map((status) => ({
+          href: `/jobs?show=${status}`,
+          label: status,
+          count: countOf(status),
+          current: status === show,
+        }))}
+      />
       <div className="mt-6">
         {jobs.length === 0 ? (
           <EmptyState title={`No job is ${show}`} />
@@ -53,7 +71,16 @@ export default async function JobsPage({ searchParams }: Props) {
                   <Row key={job.id}>
                     <RowHead className="font-figures text-sm">{job.kind}</RowHead>
                     <Cell label="State">
-                      {job.status === "running" ? <Progress label={`Progress of ${job.kind}`} labelHidden value={job.progress || null} detail={job.progressNote} /> : <StateMark state={MARK[show]}>{job.status}</StateMark>}
+                      {job.status === "running" ? (
+                        <Progress
+                          label={`Progress of ${job.kind}`}
+                          labelHidden
+                          value={job.progress || null}
+                          detail={job.progressNote}
+                        />
+                      ) : (
+                        <StateMark state={MARK[show]}>{job.status}</StateMark>
+                      )}
                     </Cell>
                     <Cell label="Attempts" figure>
                       {job.attempts} / {job.attemptsMax}

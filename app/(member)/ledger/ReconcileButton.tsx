@@ -16,7 +16,8 @@ export function ReconcileButton() {
         startTransition(async () => {
           const answer = await reconcileNow(null, {});
           if (!answer.ok) toast.error(answer.message);
-          else if (answer.value.ledgerCents === answer.value.stripeCents) toast.success("The ledger and Stripe agree to the cent.");
+          else if (answer.value.ledgerCents === answer.value.stripeCents)
+            toast.success("The ledger and Stripe agree to the cent.");
           else toast.error("They differ; an alert says by how much.");
           router.refresh();
         })

@@ -38,10 +38,16 @@ export default async function LedgerPage() {
   const postings = listPostings(db, 60);
   return (
     <>
-      <PageHeader title="Ledger" lead="Double entry, append-only, in whole cents." actions={<ReconcileButton />} />
+      <PageHeader
+        title="Ledger"
+        lead="Double entry, append-only, in whole cents."
+        actions={<ReconcileButton />}
+      />
       <div className="grid gap-6">
         {violations.length === 0 && sum === 0 ? (
-          <Notice title="It balances">Every posting sums to zero, and every balance equals its entries.</Notice>
+          <Notice title="It balances">
+            Every posting sums to zero, and every balance equals its entries.
+          </Notice>
         ) : (
           <Notice kind="danger" title="It does not balance">
             <ul>
@@ -67,7 +73,9 @@ export default async function LedgerPage() {
               {balance.map((row) => (
                 <Row key={row.kind}>
                   <RowHead>{MEANING[row.kind] ?? row.kind}</RowHead>
-                  <Cell label="How many" figure>{row.accounts}</Cell>
+                  <Cell label="How many" figure>
+                    {row.accounts}
+                  </Cell>
                   <Cell label="Balance" figure>
                     <Money cents={row.cents} />
                   </Cell>
@@ -77,7 +85,9 @@ export default async function LedgerPage() {
             <TableFoot>
               <Row>
                 <RowHead>Sum</RowHead>
-                <Cell label="How many" figure>{balance.reduce((total, row) => total + row.accounts, 0)}</Cell>
+                <Cell label="How many" figure>
+                  {balance.reduce((total, row) => total + row.accounts, 0)}
+                </Cell>
                 <Cell label="Balance" figure>
                   <Money cents={sum} />
                 </Cell>
@@ -100,7 +110,9 @@ export default async function LedgerPage() {
                   <Row key={row.id}>
                     <RowHead>
                       {row.memo}
-                      {row.linkedTo ? <span className="text-muted block text-sm font-normal">linked to an earlier one</span> : null}
+                      {row.linkedTo ? (
+                        <span className="text-muted block text-sm font-normal">linked to an earlier one</span>
+                      ) : null}
                     </RowHead>
                     <Cell label="Entries">
                       <ul className="grid gap-0.5">

@@ -17,7 +17,10 @@ export default async function PayoutsPage() {
   const rows = listPayouts(getDb(), 200);
   return (
     <>
-      <PageHeader title="Payouts" lead="Each is one transfer, ever. One that comes back is booked back to the annotator." />
+      <PageHeader
+        title="Payouts"
+        lead="Each is one transfer, ever. One that comes back is booked back to the annotator."
+      />
       {rows.length === 0 ? (
         <EmptyState title="No payout yet" />
       ) : (
@@ -35,7 +38,9 @@ export default async function PayoutsPage() {
                   <RowHead>{name}</RowHead>
                   <Cell label="State">
                     <PayoutMark status={payout.status} />
-                    {payout.failure ? <span className="text-muted block text-sm">{payout.failure}</span> : null}
+                    {payout.failure ? (
+                      <span className="text-muted block text-sm">{payout.failure}</span>
+                    ) : null}
                   </Cell>
                   <Cell label="Amount" figure>
                     <Money cents={payout.amountCents} />

@@ -45,16 +45,32 @@ export default async function PeoplePage({ searchParams }: Props) {
               {rows.map((person) => (
                 <Row key={person.id}>
                   <RowHead>{person.name}</RowHead>
-                  <Cell label="E-mail" className="wrap-anywhere">{person.email}</Cell>
+                  <Cell label="E-mail" className="wrap-anywhere">
+                    {person.email}
+                  </Cell>
                   <Cell label="Role">{person.role}</Cell>
                   <Cell label="State">
-                    {person.status === "suspended" ? <StateMark state="disputed">suspended</StateMark> : person.emailVerifiedAtMs === null ? <StateMark state="waits">unconfirmed</StateMark> : <StateMark state="agreed">active</StateMark>}
+                    {person.status === "suspended" ? (
+                      <StateMark state="disputed">suspended</StateMark>
+                    ) : person.emailVerifiedAtMs === null ? (
+                      <StateMark state="waits">unconfirmed</StateMark>
+                    ) : (
+                      <StateMark state="agreed">active</StateMark>
+                    )}
                   </Cell>
                   <Cell label="Since" align="end">
                     <When at={person.createdAtMs} form="date" />
                   </Cell>
                   <Cell label="Action" align="end">
-                    {person.id === actor.id ? "–" : <SuspendButton userId={person.id} name={person.name} isSuspended={person.status === "suspended"} />}
+                    {person.id === actor.id ? (
+                      "–"
+                    ) : (
+                      <SuspendButton
+                        userId={person.id}
+                        name={person.name}
+                        isSuspended={person.status === "suspended"}
+                      />
+                    )}
                   </Cell>
                 </Row>
               ))}

@@ -21,8 +21,11 @@ export const setMember = action({ role: "requester", input: MemberInput }, ({ ac
   return {};
 });
 
-export const revoke = action({ role: "requester", input: z.object({ inviteId: z.string() }) }, ({ actor, input }) => {
-  revokeInvite({ actor, nowMs: nowMs(), ...input });
-  revalidatePath("/team");
-  return {};
-});
+export const revoke = action(
+  { role: "requester", input: z.object({ inviteId: z.string() }) },
+  ({ actor, input }) => {
+    revokeInvite({ actor, nowMs: nowMs(), ...input });
+    revalidatePath("/team");
+    return {};
+  },
+);

@@ -18,7 +18,10 @@ export default async function TeamPage() {
   const teams = listTeamsOf(db, actor.id);
   return (
     <>
-      <PageHeader title="Team" lead="Owners pay and invite, editors post and contest, viewers look and download." />
+      <PageHeader
+        title="Team"
+        lead="Owners pay and invite, editors post and contest, viewers look and download."
+      />
       <div className="grid gap-8">
         {teams.map((team) => {
           const members = listTeamMembers(db, team.id);
@@ -38,10 +41,25 @@ export default async function TeamPage() {
                     <Row key={member.userId}>
                       <RowHead>
                         {member.name}
-                        {member.userId === actor.id ? <span className="text-muted font-normal"> (you)</span> : null}
+                        {member.userId === actor.id ? (
+                          <span className="text-muted font-normal"> (you)</span>
+                        ) : null}
                       </RowHead>
-                      <Cell label="E-mail" className="wrap-anywhere">{member.email}</Cell>
-                      <Cell label="Role">{isOwner ? <MemberRole teamId={team.id} userId={member.userId} name={member.name} role={member.role} /> : member.role}</Cell>
+                      <Cell label="E-mail" className="wrap-anywhere">
+                        {member.email}
+                      </Cell>
+                      <Cell label="Role">
+                        {isOwner ? (
+                          <MemberRole
+                            teamId={team.id}
+                            userId={member.userId}
+                            name={member.name}
+                            role={member.role}
+                          />
+                        ) : (
+                          member.role
+                        )}
+                      </Cell>
                       <Cell label="Since" align="end">
                         <When at={member.joinedAtMs} form="date" />
                       </Cell>
@@ -54,9 +72,13 @@ export default async function TeamPage() {
                   {invites.length > 0 ? (
                     <ul className="divide-line divide-y" aria-label="Open invitations">
                       {invites.map((invite) => (
-                        <li key={invite.id} className="flex flex-wrap items-center justify-between gap-3 py-2">
+                        <li
+                          key={invite.id}
+                          className="flex flex-wrap items-center justify-between gap-3 py-2"
+                        >
                           <span>
-                            {invite.email}, invited as {invite.role} <When at={invite.createdAtMs} form="relative" />
+                            {invite.email}, invited as {invite.role}{" "}
+                            <When at={invite.createdAtMs} form="relative" />
                           </span>
                           <RevokeButton inviteId={invite.id} email={invite.email} />
                         </li>

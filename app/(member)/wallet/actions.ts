@@ -10,11 +10,17 @@ import { startTopUp } from "@/lib/market/money/topUp";
 const TopUpInput = z.object({
   teamId: z.string(),
   amountCents: z.coerce.number("Write an amount.").int("Write an amount.").positive("Write an amount."),
-  returnPath: z.string().regex(/^\/(?![/\\])/).max(300).default("/wallet"),
+  returnPath: z
+    .string()
+    .regex(/^\/(?![/\\])/)
+    .max(300)
+    .default("/wallet"),
 });
 
 /** Begins a card payment; the answer is the address of the payment page. */
-export const topUp = action({ role: "requester", input: TopUpInput }, ({ actor, input }) => startTopUp({ actor, nowMs: nowMs(), ...input }));
+export const topUp = action({ role: "requester", input: TopUpInput }, ({ actor, input }) =>
+  startTopUp({ actor, nowMs: nowMs(), ...input }),
+);
 
 const RefundInput = z.object({ teamId: z.string(), amountCents: z.number().int().positive() });
 

@@ -22,9 +22,14 @@ export default async function WalletPage({ searchParams }: Props) {
   const db = getDb();
   return (
     <>
-      <PageHeader title="Wallet" lead="Money for batches. What a batch does not spend comes back here, and goes back to your card when you ask." />
+      <PageHeader
+        title="Wallet"
+        lead="Money for batches. What a batch does not spend comes back here, and goes back to your card when you ask."
+      />
       {payment === "done" ? <WaitForPayment /> : null}
-      {payment === "cancelled" ? <Notice className="mb-6">The payment was cancelled; nothing was charged.</Notice> : null}
+      {payment === "cancelled" ? (
+        <Notice className="mb-6">The payment was cancelled; nothing was charged.</Notice>
+      ) : null}
       <div className="grid gap-8">
         {listTeamsOf(db, actor.id).map((team) => {
           const wallet = walletSummary(db, team.id);
@@ -35,11 +40,21 @@ export default async function WalletPage({ searchParams }: Props) {
                   <Stat caption="In the wallet" size="large">
                     <Money cents={wallet.balanceCents} />
                   </Stat>
-                  {team.role === "owner" && wallet.balanceCents > 0 ? <RefundDialog teamId={team.id} balanceCents={wallet.balanceCents} /> : null}
+                  {team.role === "owner" && wallet.balanceCents > 0 ? (
+                    <RefundDialog teamId={team.id} balanceCents={wallet.balanceCents} />
+                  ) : null}
                 </div>
-                {team.role === "viewer" ? <p className="text-muted">Viewers look; owners and editors pay.</p> : <TopUpForm teamId={team.id} />}
+                {team.role === "viewer" ? (
+                  <p className="text-muted">Viewers look; owners and editors pay.</p>
+                ) : (
+                  <TopUpForm teamId={team.id} />
+                )}
               </div>
-              <Movements caption={`Movements of ${team.name}`} rows={wallet.movements} empty="Nothing has moved yet." />
+              <Movements
+                caption={`Movements of ${team.name}`}
+                rows={wallet.movements}
+                empty="Nothing has moved yet."
+              />
             </Sheet>
           );
         })}

@@ -22,14 +22,27 @@ type Props = { searchParams: Promise<{ before?: string }> };
 export default async function WorkPage({ searchParams }: Props) {
   const actor = await requirePageActor("annotator");
   const before = Number((await searchParams).before);
-  const rows = listWorkOf(getDb(), actor.id, { limit: PAGE_ROWS + 1, ...(before > 0 && { beforeMs: before }) });
+  const rows = listWorkOf(getDb(), actor.id, {
+    limit: PAGE_ROWS + 1,
+    ...(before > 0 && { beforeMs: before }),
+  });
   const page = rows.slice(0, PAGE_ROWS);
   const last = page.at(-1);
   return (
     <>
-      <PageHeader title="Work" lead="Each score is measured against what the others agree on, and each has its reason." />
+      <PageHeader
+        title="Work"
+        lead="Each score is measured against what the others agree on, and each has its reason."
+      />
       {page.length === 0 ? (
-        <EmptyState title="Nothing handed in yet" action={<ButtonLink href="/board" kind="primary">Go to the board</ButtonLink>}>
+        <EmptyState
+          title="Nothing handed in yet"
+          action={
+            <ButtonLink href="/board" kind="primary">
+              Go to the board
+            </ButtonLink>
+          }
+        >
           What you hand in is listed here, with its score, its pay and the reason for both.
         </EmptyState>
       ) : (
@@ -61,8 +74,12 @@ export default async function WorkPage({ searchParams }: Props) {
                       <StateMark state="waits">waits for others</StateMark>
                     )}
                   </Cell>
-                  <Cell label="Score" figure>{submission.quality === null ? "–" : submission.quality.toFixed(2)}</Cell>
-                  <Cell label="Pay" figure>{submission.payCents === null ? "–" : <Money cents={submission.payCents} />}</Cell>
+                  <Cell label="Score" figure>
+                    {submission.quality === null ? "–" : submission.quality.toFixed(2)}
+                  </Cell>
+                  <Cell label="Pay" figure>
+                    {submission.payCents === null ? "–" : <Money cents={submission.payCents} />}
+                  </Cell>
                   <Cell label="Handed in" align="end">
                     <When at={submission.submittedAtMs} form="relative" />
                   </Cell>

@@ -17,7 +17,11 @@ export default async function InvitationPage({ searchParams }: Props) {
     return (
       <>
         <PageHeader title="Invitation" />
-        <Notice kind="danger" title="This invitation no longer works" action={<Link href="/sign-in">Sign in</Link>}>
+        <Notice
+          kind="danger"
+          title="This invitation no longer works"
+          action={<Link href="/sign-in">Sign in</Link>}
+        >
           It was used, withdrawn or is too old. Ask your colleague for a new one.
         </Notice>
       </>
@@ -25,7 +29,10 @@ export default async function InvitationPage({ searchParams }: Props) {
   }
   return (
     <>
-      <PageHeader title={`Join ${invitation.teamName}`} lead={`You were invited as ${invitation.role}, by the address ${invitation.email}.`} />
+      <PageHeader
+        title={`Join ${invitation.teamName}`}
+        lead={`You were invited as ${invitation.role}, by the address ${invitation.email}.`}
+      />
       <InvitationForm secret={secret} hasAccount={invitation.hasAccount} />
     </>
   );

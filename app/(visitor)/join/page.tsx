@@ -11,7 +11,10 @@ export default async function JoinPage({ searchParams }: Props) {
   const { role } = await searchParams;
   return (
     <>
-      <PageHeader title="Join Merestone" lead="An account is free. You confirm your e-mail, and that is all." />
+      <PageHeader
+        title="Join Merestone"
+        lead="An account is free. You confirm your e-mail, and that is all."
+      />
       <JoinForm role={role === "annotator" || role === "requester" ? role : null} />
       <p className="text-muted">
         You have an account?{" "}

@@ -6,5 +6,9 @@ import { claimTask } from "@/lib/market/work/claimTask";
 /** Holds an image of a batch for the annotator. */
 export const POST = route({ role: "annotator", body: ClaimInput }, ({ actor, body }) => {
   const claim = claimTask({ actor, nowMs: nowMs(), ...body });
-  return created(`/api/claims/${claim.id}`, { claimId: claim.id, imageId: claim.imageId, expiresAtMs: claim.expiresAtMs });
+  return created(`/api/claims/${claim.id}`, {
+    claimId: claim.id,
+    imageId: claim.imageId,
+    expiresAtMs: claim.expiresAtMs,
+  });
 });

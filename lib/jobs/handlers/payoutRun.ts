@@ -1,4 +1,5 @@
 import { runPayout } from "@/lib/market/money/payouts";
 import type { Handler } from "./index";
 
-export const payoutRunJob: Handler<"payout.run"> = ({ payoutId }, { nowMs }) => runPayout({ payoutId, nowMs: nowMs() });
+export const payoutRunJob: Handler<"payout.run"> = ({ payoutId }, { nowMs }) =>
+  runPayout({ payoutId, nowMs: nowMs() });

@@ -30,8 +30,18 @@ export const proposeImageJob: Handler<"image.propose"> = async ({ imageId }, { n
   const millis = Math.round(performance.now() - startMs);
   const proposals = found.map((proposal): StoredProposal => ({ id: newId("pps"), ...proposal }));
   inTransaction(db, (tx) => {
-    const values = { imageId, batchId: image.batchId, model: model ? `exemplars ${model.version}` : "any image", proposals, millis, createdAtMs: nowMs() };
-    tx.insert(proposalSets).values(values).onConflictDoUpdate({ target: proposalSets.imageId, set: values }).run();
+    const values = {
+      imageId,
+      batchId: image.batchId,
+      model: model ? `exemplars ${model.version}` : "any image",
+      proposals,
+      millis,
+      createdAtMs: nowMs(),
+    };
+    tx.insert(proposalSets)
+      .values(values)
+      .onConflictDoUpdate({ target: proposalSets.imageId, set: values })
+      .run();
     tx.update(images).set({ proposalState: "done" }).where(eq(images.id, imageId)).run();
   });
 };

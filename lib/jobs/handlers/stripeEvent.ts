@@ -1,4 +1,5 @@
 import { processStripeEvent } from "@/lib/market/money/stripeEvents";
 import type { Handler } from "./index";
 
-export const stripeEventJob: Handler<"stripe.event"> = ({ eventId }, { nowMs }) => processStripeEvent({ eventId, nowMs: nowMs() });
+export const stripeEventJob: Handler<"stripe.event"> = ({ eventId }, { nowMs }) =>
+  processStripeEvent({ eventId, nowMs: nowMs() });

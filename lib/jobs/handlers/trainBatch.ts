@@ -34,7 +34,11 @@ export const trainBatchJob: Handler<"batch.train"> = async ({ batchId }, { nowMs
     progress((0.3 * index) / chosen.length, "reading");
     const instances = run.result.agreed
       .filter((instance) => run.origin === "decision" || instance.support >= SUPPORT_MIN)
-      .map(({ classId, box, shape }) => ({ classId, box, ...(shape.kind === "polygon" && { rings: shape.rings }) }));
+      .map(({ classId, box, shape }) => ({
+        classId,
+        box,
+        ...(shape.kind === "polygon" && { rings: shape.rings }),
+      }));
     task.images.push({ bytes: await getObject(image.workingKey), instances });
   }
   progress(0.3, "learning");
@@ -71,7 +75,15 @@ export const trainBatchJob: Handler<"batch.train"> = async ({ batchId }, { nowMs
       )
       .all();
     for (const { id } of untouched) {
-      enqueue(tx, { kind: "image.propose", payload: { imageId: id }, subject: batchId, uniqueKey: `propose:${id}`, nowMs: nowMs(), priority: -2, attemptsMax: 3 });
+      enqueue(tx, {
+        kind: "image.propose",
+        payload: { imageId: id },
+        subject: batchId,
+        uniqueKey: `propose:${id}`,
+        nowMs: nowMs(),
+        priority: -2,
+        attemptsMax: 3,
+      });
     }
   });
 };

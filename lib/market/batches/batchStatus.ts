@@ -23,7 +23,13 @@ export function batchStatus({ actor, batchId }: { actor: Actor; batchId: string 
     settling: of("consensus.settle"),
     learning: of("batch.train") > 0,
     training: training
-      ? { version: training.version, settledImages: training.settledImages, useful: training.useful, apWith: training.apWith, apWithout: training.apWithout }
+      ? {
+          version: training.version,
+          settledImages: training.settledImages,
+          useful: training.useful,
+          apWith: training.apWith,
+          apWithout: training.apWithout,
+        }
       : null,
     releases: listReleases(db, batchId).map(({ id, number, status }) => ({ id, number, status })),
   };

@@ -23,15 +23,38 @@ export function closeBatch({ actor, nowMs, batchId }: By): { returnedCents: numb
   return inTransaction(getDb(), (tx) => {
     expireClaims(tx, nowMs);
     const batch = requireBatch(tx, batchId, actor, "editor");
-    if (batch.status !== "open" && batch.status !== "paused") throw new AppError("conflict", `This batch is ${batch.status}.`);
+    if (batch.status !== "open" && batch.status !== "paused")
+      throw new AppError("conflict", `This batch is ${batch.status}.`);
     const { live } = countWork(tx, batchId);
-    if (live > 0) throw new AppError("conflict", `${live} ${live === 1 ? "person is" : "people are"} drawing. Pause the batch and close it when they are done.`);
-    const openDisputes = tx.select({ count: count() }).from(disputes).where(and(eq(disputes.batchId, batchId), eq(disputes.status, "open"))).get()?.count ?? 0;
-    if (openDisputes > 0) throw new AppError("conflict", `${openDisputes} ${openDisputes === 1 ? "dispute waits" : "disputes wait"} for a decision first.`);
+    if (live > 0)
+      throw new AppError(
+        "conflict",
+        `${live} ${live === 1 ? "person is" : "people are"} drawing. Pause the batch and close it when they are done.`,
+      );
+    const openDisputes =
+      tx
+        .select({ count: count() })
+        .from(disputes)
+        .where(and(eq(disputes.batchId, batchId), eq(disputes.status, "open")))
+        .get()?.count ?? 0;
+    if (openDisputes > 0)
+      throw new AppError(
+        "conflict",
+        `${openDisputes} ${openDisputes === 1 ? "dispute waits" : "disputes wait"} for a decision first.`,
+      );
     payUnsettled();
     const returnedCents = closeBatchEscrow(tx, { batchId, teamId: batch.teamId, nowMs });
-    tx.update(batches).set({ status: "closed", closedAtMs: nowMs, version: batch.version + 1 }).where(eq(batches.id, batchId)).run();
-    audit(tx, { actorId: actor.id, action: "batch.closed", subject: batchId, detail: { returnedCents }, nowMs });
+    tx.update(batches)
+      .set({ status: "closed", closedAtMs: nowMs, version: batch.version + 1 })
+      .where(eq(batches.id, batchId))
+      .run();
+    audit(tx, {
+      actorId: actor.id,
+      action: "batch.closed",
+      subject: batchId,
+      detail: { returnedCents },
+      nowMs,
+    });
     return { returnedCents };
 
     /** Nobody's handed-in work goes unpaid because the requester stops early. */
@@ -43,14 +66,29 @@ export function closeBatch({ actor, nowMs, batchId }: By): { returnedCents: numb
         .selectDistinct({ imageId: submissions.imageId })
         .from(submissions)
         .innerJoin(images, eq(images.id, submissions.imageId))
-        .where(and(eq(submissions.batchId, batchId), isNull(submissions.payCents), inArray(images.consensusState, ["none", "short"])))
+        .where(
+          and(
+            eq(submissions.batchId, batchId),
+            isNull(submissions.payCents),
+            inArray(images.consensusState, ["none", "short"]),
+          ),
+        )
         .all();
       for (const { imageId } of waiting) {
         const image = findImage(tx, imageId);
         invariant(image, "a submission has an image");
         const list = listSubmissionsOf(tx, imageId);
         const result = mergeImage(labelsOf(image, list), settings);
-        const runId = recordRun(tx, { image, origin: "engine", disputeId: null, submissionList: list, settings, result, millis: 0, nowMs });
+        const runId = recordRun(tx, {
+          image,
+          origin: "engine",
+          disputeId: null,
+          submissionList: list,
+          settings,
+          result,
+          millis: 0,
+          nowMs,
+        });
         tx.update(images).set({ currentRunId: runId }).where(eq(images.id, imageId)).run();
         applyScores(tx, { batch, key, list, scores: result.scores, runId, disputeId: null, nowMs });
       }

@@ -15,7 +15,10 @@ type By = { actor: Actor; nowMs: number; batchId: string };
 function requireFresh(tx: Tx, { actor, batchId }: By, versionSeen: number): BatchRow {
   const batch = requireBatch(tx, batchId, actor, "editor");
   if (batch.version !== versionSeen) {
-    throw new AppError("conflict", "Somebody changed this batch in the meantime. Reload to see it; your text is still here.");
+    throw new AppError(
+      "conflict",
+      "Somebody changed this batch in the meantime. Reload to see it; your text is still here.",
+    );
   }
   return batch;
 }
@@ -34,9 +37,21 @@ export function saveKeyAndBrief({ input, ...by }: By & { input: KeyAndBriefInput
     const briefVersion = brief?.markdown === input.brief ? brief.version : (brief?.version ?? 0) + 1;
     if (briefVersion !== brief?.version) {
       tx.insert(briefVersions)
-        .values({ batchId, version: briefVersion, markdown: input.brief, createdBy: actor.id, createdAtMs: nowMs })
+        .values({
+          batchId,
+          version: briefVersion,
+          markdown: input.brief,
+          createdBy: actor.id,
+          createdAtMs: nowMs,
+        })
         .run();
-      audit(tx, { actorId: actor.id, action: "brief.changed", subject: batchId, detail: { version: briefVersion }, nowMs });
+      audit(tx, {
+        actorId: actor.id,
+        action: "brief.changed",
+        subject: batchId,
+        detail: { version: briefVersion },
+        nowMs,
+      });
     }
     saveExamples(tx, batchId, input.examples);
     const { title, sensitive, sensitiveNote, safetyCritical } = input;
@@ -54,20 +69,35 @@ function saveClasses(tx: Tx, batchId: string, wanted: KeyAndBriefInput["classes"
   if (gone.length > 0) tx.delete(classes).where(inArray(classes.id, gone)).run();
   // Two passes, because two classes may swap numbers or names and both are unique at every moment.
   for (const [index, id] of [...kept].entries()) {
-    tx.update(classes).set({ number: -1 - index, name: `\u0000${id}` }).where(eq(classes.id, id)).run();
+    tx.update(classes)
+      .set({ number: -1 - index, name: `\u0000${id}` })
+      .where(eq(classes.id, id))
+      .run();
   }
   for (const { id, ...values } of wanted) {
     if (id !== null && kept.has(id)) tx.update(classes).set(values).where(eq(classes.id, id)).run();
-    else tx.insert(classes).values({ id: newId("cls"), batchId, ...values }).run();
+    else
+      tx.insert(classes)
+        .values({ id: newId("cls"), batchId, ...values })
+        .run();
   }
 }
 
 function saveExamples(tx: Tx, batchId: string, examples: KeyAndBriefInput["examples"]): void {
   tx.delete(briefExamples).where(eq(briefExamples.batchId, batchId)).run();
   examples.forEach(({ imageId, caption }, ordinal) => {
-    const own = tx.select({ id: images.id }).from(images).where(and(eq(images.id, imageId), eq(images.batchId, batchId))).get();
-    if (!own) throw new AppError("invalid", "An example picture is not part of this batch.", { examples: "Unknown picture." });
-    tx.insert(briefExamples).values({ id: newId("exa"), batchId, imageId, caption, ordinal }).run();
+    const own = tx
+      .select({ id: images.id })
+      .from(images)
+      .where(and(eq(images.id, imageId), eq(images.batchId, batchId)))
+      .get();
+    if (!own)
+      throw new AppError("invalid", "An example picture is not part of this batch.", {
+        examples: "Unknown picture.",
+      });
+    tx.insert(briefExamples)
+      .values({ id: newId("exa"), batchId, imageId, caption, ordinal })
+      .run();
   });
 }
 
@@ -75,9 +105,13 @@ function saveExamples(tx: Tx, batchId: string, examples: KeyAndBriefInput["examp
 export function saveQualityAndPay({ input, ...by }: By & { input: QualityAndPayInput }): void {
   inTransaction(getDb(), (tx) => {
     const batch = requireFresh(tx, by, input.versionSeen);
-    if (batch.status !== "draft") throw new AppError("conflict", "Pay and quality are fixed once a batch is funded.");
+    if (batch.status !== "draft")
+      throw new AppError("conflict", "Pay and quality are fixed once a batch is funded.");
     const { versionSeen: _, ...values } = input;
-    tx.update(batches).set({ ...values, version: batch.version + 1 }).where(eq(batches.id, by.batchId)).run();
+    tx.update(batches)
+      .set({ ...values, version: batch.version + 1 })
+      .where(eq(batches.id, by.batchId))
+      .run();
   });
 }
 
@@ -86,7 +120,16 @@ export function setAgreementTarget({ target, ...by }: By & { target: number }): 
   inTransaction(getDb(), (tx) => {
     const batch = requireBatch(tx, by.batchId, by.actor, "editor");
     if (batch.status === "closed") throw new AppError("conflict", "A closed batch cannot be changed.");
-    tx.update(batches).set({ agreementTarget: target, version: batch.version + 1 }).where(eq(batches.id, batch.id)).run();
-    audit(tx, { actorId: by.actor.id, action: "batch.target", subject: batch.id, detail: { from: batch.agreementTarget, to: target }, nowMs: by.nowMs });
+    tx.update(batches)
+      .set({ agreementTarget: target, version: batch.version + 1 })
+      .where(eq(batches.id, batch.id))
+      .run();
+    audit(tx, {
+      actorId: by.actor.id,
+      action: "batch.target",
+      subject: batch.id,
+      detail: { from: batch.agreementTarget, to: target },
+      nowMs: by.nowMs,
+    });
   });
 }

@@ -20,11 +20,25 @@ const MARK: Record<InstanceOutcome, Note["mark"]> = {
  * Everything that was drawn on one image, as layers of outlines with the reason for each in words. With
  * `named` the annotators' names are shown (admins); otherwise they are numbered in the order they handed in.
  */
-export function imageEvidence(db: Reader, image: ImageRow, { runId, named }: { runId: string | null; named: boolean }) {
+export function imageEvidence(
+  db: Reader,
+  image: ImageRow,
+  { runId, named }: { runId: string | null; named: boolean },
+) {
   const run = runId ? findRun(db, runId) : undefined;
   const list = listSubmissionsOf(db, image.id);
-  const key = listClasses(db, image.batchId).map(({ id, number, name, colour }) => ({ id, number, name, colour }));
-  const labelOf = new Map(list.map((submission, index) => [submission.annotatorId, named ? (findUser(db, submission.annotatorId)?.name ?? "Annotator") : `Annotator ${index + 1}`]));
+  const key = listClasses(db, image.batchId).map(({ id, number, name, colour }) => ({
+    id,
+    number,
+    name,
+    colour,
+  }));
+  const labelOf = new Map(
+    list.map((submission, index) => [
+      submission.annotatorId,
+      named ? (findUser(db, submission.annotatorId)?.name ?? "Annotator") : `Annotator ${index + 1}`,
+    ]),
+  );
   const heat = list.length >= 2 ? heatMap(labelsOf(image, list)) : null;
   return {
     run,
@@ -33,9 +47,13 @@ export function imageEvidence(db: Reader, image: ImageRow, { runId, named }: { r
     nameOf: (annotatorId: string) => labelOf.get(annotatorId) ?? "Annotator",
     layers: [
       ...(run ? [agreedLayer(run)] : []),
-      ...list.map((submission) => personLayer(submission, run, labelOf.get(submission.annotatorId) ?? "Annotator")),
+      ...list.map((submission) =>
+        personLayer(submission, run, labelOf.get(submission.annotatorId) ?? "Annotator"),
+      ),
     ],
-    heat: heat ? { width: heat.width, height: heat.height, cellPx: heat.cellPx, values: [...heat.values] } : null,
+    heat: heat
+      ? { width: heat.width, height: heat.height, cellPx: heat.cellPx, values: [...heat.values] }
+      : null,
   };
 }
 
@@ -56,7 +74,11 @@ function agreedLayer(run: RunRow) {
 
 function personLayer(submission: SubmissionRow, run: RunRow | undefined, label: string) {
   const score = run?.result.scores.find((entry) => entry.annotatorId === submission.annotatorId);
-  const leftOut = new Map(run?.result.leftOut.filter((entry) => entry.annotatorId === submission.annotatorId).map((entry) => [entry.instanceId, entry.why]));
+  const leftOut = new Map(
+    run?.result.leftOut
+      .filter((entry) => entry.annotatorId === submission.annotatorId)
+      .map((entry) => [entry.instanceId, entry.why]),
+  );
   const outcomeOf = new Map(score?.instances.map((entry) => [entry.instanceId, entry]));
   return {
     id: submission.id,

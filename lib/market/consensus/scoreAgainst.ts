@@ -17,19 +17,39 @@ export function scoreAgainst(
   const ious = instances.map((mine) => decided.map((theirs) => shapeIou(mine.shape, theirs.shape)));
   const pairs =
     decided.length > 0 && instances.length > 0
-      ? assign(ious.map((row, i) => row.map((iou, j) => (instances[i]?.classId === decided[j]?.classId ? -iou : -iou / 10))))
+      ? assign(
+          ious.map((row, i) =>
+            row.map((iou, j) => (instances[i]?.classId === decided[j]?.classId ? -iou : -iou / 10)),
+          ),
+        )
       : new Int32Array(instances.length).fill(-1);
   const scores = instances.map((instance, index): InstanceScore => {
     const partner = pairs[index] ?? -1;
     const iou = partner < 0 ? 0 : (ious[index]?.[partner] ?? 0);
     if (partner < 0 || iou <= 0.1) {
-      return { instanceId: instance.id, outcome: "unsupported", iou: null, why: "The decision has no object here." };
+      return {
+        instanceId: instance.id,
+        outcome: "unsupported",
+        iou: null,
+        why: "The decision has no object here.",
+      };
     }
     const rounded = `overlap ${iou.toFixed(2)}`;
     if (decided[partner]?.classId !== instance.classId) {
-      return { instanceId: instance.id, outcome: "wrong-class", iou, why: `The decision gives this object another class (${rounded}).` };
+      return {
+        instanceId: instance.id,
+        outcome: "wrong-class",
+        iou,
+        why: `The decision gives this object another class (${rounded}).`,
+      };
     }
-    if (iou < FOUND_IOU) return { instanceId: instance.id, outcome: "loose", iou, why: `Too far from the decided outline (${rounded}).` };
+    if (iou < FOUND_IOU)
+      return {
+        instanceId: instance.id,
+        outcome: "loose",
+        iou,
+        why: `Too far from the decided outline (${rounded}).`,
+      };
     return { instanceId: instance.id, outcome: "agreed", iou, why: `Fits the decided outline (${rounded}).` };
   });
   const agreed = scores.filter((score) => score.outcome === "agreed");

@@ -1,6 +1,13 @@
 import { and, eq, inArray } from "drizzle-orm";
 import { getDb, inTransaction, type Tx } from "@/db/client";
-import { findBatch, findImage, listClasses, type BatchRow, type ClassRow, type ImageRow } from "@/db/queries/batches";
+import {
+  findBatch,
+  findImage,
+  listClasses,
+  type BatchRow,
+  type ClassRow,
+  type ImageRow,
+} from "@/db/queries/batches";
 import { listReliabilityLabels } from "@/db/queries/reliability";
 import { listSubmissionsOf, type SubmissionRow } from "@/db/queries/work";
 import { consensusRuns, images, submissions } from "@/db/schema";
@@ -60,7 +67,16 @@ export function settleImage({ imageId, nowMs }: { imageId: string; nowMs: number
     const current = findImage(tx, imageId);
     if (!current || current.consensusState === "settled" || current.consensusState === "split") return;
     if (listSubmissionsOf(tx, imageId).length !== list.length) return; // one more came in: its own job follows
-    const runId = recordRun(tx, { image, origin: "engine", disputeId: null, submissionList: list, settings, result, millis, nowMs });
+    const runId = recordRun(tx, {
+      image,
+      origin: "engine",
+      disputeId: null,
+      submissionList: list,
+      settings,
+      result,
+      millis,
+      nowMs,
+    });
     if (result.verdict === "short" && image.slotsWanted < batch.kMax) {
       tx.update(images)
         .set({ consensusState: "short", slotsWanted: image.slotsWanted + 1, currentRunId: runId })
@@ -73,7 +89,10 @@ export function settleImage({ imageId, nowMs }: { imageId: string; nowMs: number
       applyScores(tx, { batch, key, list, scores: result.scores, runId, disputeId: null, nowMs });
       return;
     }
-    tx.update(images).set({ consensusState: "split", currentRunId: runId }).where(eq(images.id, imageId)).run();
+    tx.update(images)
+      .set({ consensusState: "split", currentRunId: runId })
+      .where(eq(images.id, imageId))
+      .run();
     openSplitDispute(tx, { batch, image, runId, reason: result.reason, nowMs });
   });
 }
@@ -113,8 +132,14 @@ export function recordRun(tx: Tx, run: NewRun): string {
 }
 
 /** Marks the image settled by a run, and lets the batch's proposals learn from it. */
-export function settle(tx: Tx, { image, runId, nowMs }: { image: ImageRow; runId: string; nowMs: number }): void {
-  tx.update(images).set({ consensusState: "settled", currentRunId: runId, settledAtMs: nowMs }).where(eq(images.id, image.id)).run();
+export function settle(
+  tx: Tx,
+  { image, runId, nowMs }: { image: ImageRow; runId: string; nowMs: number },
+): void {
+  tx.update(images)
+    .set({ consensusState: "settled", currentRunId: runId, settledAtMs: nowMs })
+    .where(eq(images.id, image.id))
+    .run();
   enqueue(tx, {
     kind: "batch.train",
     payload: { batchId: image.batchId },
@@ -166,7 +191,13 @@ export function applyScores(tx: Tx, { batch, key, list, scores, runId, disputeId
       movedCents += payCents - submission.payCents;
     }
     tx.update(submissions)
-      .set({ scoredRunId: runId, quality: score.quality, payCents, feeCents, paidAtMs: submission.paidAtMs ?? nowMs })
+      .set({
+        scoredRunId: runId,
+        quality: score.quality,
+        payCents,
+        feeCents,
+        paidAtMs: submission.paidAtMs ?? nowMs,
+      })
       .where(eq(submissions.id, submission.id))
       .run();
   }

@@ -35,7 +35,10 @@ export async function checkImage({ imageId, nowMs }: { imageId: string; nowMs: n
   if (!image || image.status !== "checking") return;
   const bytes = await getObject(image.originalKey);
   const sha256 = createHash("sha256").update(bytes).digest("hex");
-  const checked = sha256 === image.sha256 ? await inspect(bytes) : ({ ok: false, reason: "The file changed on its way. Upload it again." } as const);
+  const checked =
+    sha256 === image.sha256
+      ? await inspect(bytes)
+      : ({ ok: false, reason: "The file changed on its way. Upload it again." } as const);
   if (!checked.ok) {
     await deleteObject(image.originalKey);
     db.update(images).set({ status: "refused", refusal: checked.reason }).where(eq(images.id, imageId)).run();
@@ -75,7 +78,11 @@ export async function checkImage({ imageId, nowMs }: { imageId: string; nowMs: n
 export async function inspect(bytes: Buffer): Promise<Checked> {
   if (bytes.byteLength > IMAGE_BYTES_MAX) return { ok: false, reason: "The file is over 50 MB." };
   const mediaType = mediaTypeOf(bytes);
-  if (!mediaType) return { ok: false, reason: "This is not a JPEG, PNG, WebP, AVIF or TIFF picture, whatever its name says." };
+  if (!mediaType)
+    return {
+      ok: false,
+      reason: "This is not a JPEG, PNG, WebP, AVIF or TIFF picture, whatever its name says.",
+    };
   try {
     // The header alone, so that a small file that claims to be huge is refused before it unpacks.
     const header = await sharp(bytes, { limitInputPixels: false }).metadata();
@@ -83,8 +90,10 @@ export async function inspect(bytes: Buffer): Promise<Checked> {
     if (pixels > IMAGE_PIXELS_MAX) {
       return { ok: false, reason: `${header.width} x ${header.height} px is over 50 megapixels.` };
     }
-    if ((header.pages ?? 1) > 1 && mediaType !== "image/tiff") return { ok: false, reason: "Moving pictures are not taken; upload single frames." };
-    const input = () => sharp(bytes, { limitInputPixels: IMAGE_PIXELS_MAX, failOn: "error", pages: 1 }).autoOrient();
+    if ((header.pages ?? 1) > 1 && mediaType !== "image/tiff")
+      return { ok: false, reason: "Moving pictures are not taken; upload single frames." };
+    const input = () =>
+      sharp(bytes, { limitInputPixels: IMAGE_PIXELS_MAX, failOn: "error", pages: 1 }).autoOrient();
     // Without loss where the upload had none; a photograph stays a photograph, at a quality that shows no loss.
     const isLossless = mediaType === "image/png" || mediaType === "image/tiff";
     const flat = input().toColourspace("srgb").flatten({ background: "#ffffff" });

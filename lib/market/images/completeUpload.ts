@@ -27,6 +27,13 @@ export async function completeUpload({ actor, nowMs, imageId, parts }: Input): P
       .where(and(eq(images.id, imageId), eq(images.status, "awaiting")))
       .run();
     if (moved.changes === 0) return;
-    enqueue(tx, { kind: "image.check", payload: { imageId }, subject: image.batchId, uniqueKey: `check:${imageId}`, nowMs, priority: 3 });
+    enqueue(tx, {
+      kind: "image.check",
+      payload: { imageId },
+      subject: image.batchId,
+      uniqueKey: `check:${imageId}`,
+      nowMs,
+      priority: 3,
+    });
   });
 }

@@ -17,7 +17,12 @@ export async function openImage({ actor, imageId, variant }: Input) {
   const key = variant === "thumb" ? image.thumbKey : image.workingKey;
   if (!key) throw new AppError("not_found", "This image has not been checked yet.");
   const { stream, byteSize } = await streamObject(key);
-  const mediaType = variant === "thumb" ? "image/webp" : image.mediaType === "image/png" || image.mediaType === "image/tiff" ? "image/png" : "image/jpeg";
+  const mediaType =
+    variant === "thumb"
+      ? "image/webp"
+      : image.mediaType === "image/png" || image.mediaType === "image/tiff"
+        ? "image/png"
+        : "image/jpeg";
   return { stream, byteSize, mediaType };
 }
 
@@ -29,10 +34,21 @@ function maySee(db: Reader, image: ImageRow, actor: Actor): boolean {
   const held = db
     .select({ id: claims.id })
     .from(claims)
-    .where(and(eq(claims.imageId, image.id), eq(claims.annotatorId, actor.id), inArray(claims.status, ["live", "submitted", "expired"])))
+    .where(
+      and(
+        eq(claims.imageId, image.id),
+        eq(claims.annotatorId, actor.id),
+        inArray(claims.status, ["live", "submitted", "expired"]),
+      ),
+    )
     .limit(1)
     .get();
   if (held) return true;
-  const isExample = db.select({ id: briefExamples.id }).from(briefExamples).where(eq(briefExamples.imageId, image.id)).limit(1).get();
+  const isExample = db
+    .select({ id: briefExamples.id })
+    .from(briefExamples)
+    .where(eq(briefExamples.imageId, image.id))
+    .limit(1)
+    .get();
   return Boolean(isExample) && batch.status !== "draft";
 }

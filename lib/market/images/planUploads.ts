@@ -4,7 +4,12 @@ import { getDb, inTransaction } from "@/db/client";
 import { findByHash, type ImageRow } from "@/db/queries/batches";
 import { images } from "@/db/schema";
 import type { Actor } from "@/lib/auth/actor";
-import { IMAGE_BYTES_MAX, IMAGE_TYPES, type PlanUploadsInput, type UploadPlan } from "@/lib/contracts/batches";
+import {
+  IMAGE_BYTES_MAX,
+  IMAGE_TYPES,
+  type PlanUploadsInput,
+  type UploadPlan,
+} from "@/lib/contracts/batches";
 import { AppError } from "@/lib/errors";
 import { newId } from "@/lib/ids";
 import { requireBatch } from "@/lib/market/access";
@@ -24,13 +29,20 @@ export const PART_BYTES = 8 * 1024 * 1024;
 export async function planUploads({ actor, nowMs, batchId, files }: Input): Promise<UploadPlan[]> {
   const decided = inTransaction(getDb(), (tx) => {
     const batch = requireBatch(tx, batchId, actor, "editor");
-    if (batch.status !== "draft") throw new AppError("conflict", "Images can be added only before a batch is funded.");
-    let ordinal = tx.select({ max: sql<number>`coalesce(max(${images.ordinal}), -1)` }).from(images).where(eq(images.batchId, batchId)).get()?.max ?? -1;
+    if (batch.status !== "draft")
+      throw new AppError("conflict", "Images can be added only before a batch is funded.");
+    let ordinal =
+      tx
+        .select({ max: sql<number>`coalesce(max(${images.ordinal}), -1)` })
+        .from(images)
+        .where(eq(images.batchId, batchId))
+        .get()?.max ?? -1;
     return files.map((file): { plan: UploadPlan } | { image: ImageRow } => {
       const reason = refusalOf(file);
       if (reason) return { plan: { kind: "refused", reason } };
       const known = findByHash(tx, batchId, file.sha256);
-      if (known && known.status !== "awaiting") return { plan: { kind: "duplicate", imageId: known.id, fileName: known.fileName } };
+      if (known && known.status !== "awaiting")
+        return { plan: { kind: "duplicate", imageId: known.id, fileName: known.fileName } };
       if (known) return { image: known }; // announced before, not arrived: goes on
       const id = newId("img");
       ordinal += 1;
@@ -57,7 +69,8 @@ export async function planUploads({ actor, nowMs, batchId, files }: Input): Prom
   const plans: UploadPlan[] = [];
   for (const entry of decided) {
     if ("plan" in entry) plans.push(entry.plan);
-    else if (planned.has(entry.image.id)) plans.push({ kind: "duplicate", imageId: entry.image.id, fileName: entry.image.fileName });
+    else if (planned.has(entry.image.id))
+      plans.push({ kind: "duplicate", imageId: entry.image.id, fileName: entry.image.fileName });
     else plans.push(await planFor(entry.image));
     if ("image" in entry) planned.add(entry.image.id);
   }
@@ -74,7 +87,11 @@ function refusalOf(file: File): string | null {
 
 async function planFor(image: ImageRow): Promise<UploadPlan> {
   if (image.byteSize <= PART_BYTES) {
-    return { kind: "put", imageId: image.id, ...(await presignPut(image.originalKey, image.byteSize, image.mediaType)) };
+    return {
+      kind: "put",
+      imageId: image.id,
+      ...(await presignPut(image.originalKey, image.byteSize, image.mediaType)),
+    };
   }
   let uploadId = image.uploadId;
   let present = uploadId ? await listParts(image.originalKey, uploadId) : null;

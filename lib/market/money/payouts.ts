@@ -29,14 +29,24 @@ export async function startOnboarding({ actor }: By): Promise<{ url: string }> {
   let id = user.stripeAccountId;
   if (!id) {
     const account = await stripe().accounts.create(
-      { type: "express", email: user.email, capabilities: { transfers: { requested: true } }, metadata: { userId: user.id } },
+      {
+        type: "express",
+        email: user.email,
+        capabilities: { transfers: { requested: true } },
+        metadata: { userId: user.id },
+      },
       { idempotencyKey: `account:${user.id}` },
     );
     id = account.id;
     db.update(users).set({ stripeAccountId: id }).where(eq(users.id, user.id)).run();
   }
   const back = new URL("/earnings", env().APP_URL).href;
-  const link = await stripe().accountLinks.create({ account: id, refresh_url: back, return_url: `${back}?onboarding=done`, type: "account_onboarding" });
+  const link = await stripe().accountLinks.create({
+    account: id,
+    refresh_url: back,
+    return_url: `${back}?onboarding=done`,
+    type: "account_onboarding",
+  });
   return { url: link.url };
 }
 
@@ -54,14 +64,37 @@ export async function refreshOnboarding({ actor }: { actor: Actor }): Promise<bo
 export function requestPayout({ actor, nowMs }: By): { payoutId: string; amountCents: number } {
   return inTransaction(getDb(), (tx) => {
     const user = findUser(tx, actor.id);
-    if (!user?.stripeAccountId || !user.payoutsEnabled) throw new AppError("conflict", "Set up your payout account first.");
+    if (!user?.stripeAccountId || !user.payoutsEnabled)
+      throw new AppError("conflict", "Set up your payout account first.");
     const amountCents = balanceOf(tx, accountId("payable", actor.id));
     if (amountCents < PAYOUT_MIN_CENTS) throw new AppError("conflict", "A payout starts at $1.00.");
     const payoutId = newId("out");
-    tx.insert(payouts).values({ id: payoutId, annotatorId: actor.id, amountCents, status: "queued", createdAtMs: nowMs }).run();
-    insertPosting(tx, { source: "payout", sourceId: payoutId, kind: "start", posting: payoutStartPosting(actor.id, amountCents), memo: "Payout", nowMs });
-    enqueue(tx, { kind: "payout.run", payload: { payoutId }, subject: actor.id, uniqueKey: `payout:${payoutId}`, nowMs, priority: 6 });
-    audit(tx, { actorId: actor.id, action: "payout.requested", subject: payoutId, detail: { amountCents }, nowMs });
+    tx.insert(payouts)
+      .values({ id: payoutId, annotatorId: actor.id, amountCents, status: "queued", createdAtMs: nowMs })
+      .run();
+    insertPosting(tx, {
+      source: "payout",
+      sourceId: payoutId,
+      kind: "start",
+      posting: payoutStartPosting(actor.id, amountCents),
+      memo: "Payout",
+      nowMs,
+    });
+    enqueue(tx, {
+      kind: "payout.run",
+      payload: { payoutId },
+      subject: actor.id,
+      uniqueKey: `payout:${payoutId}`,
+      nowMs,
+      priority: 6,
+    });
+    audit(tx, {
+      actorId: actor.id,
+      action: "payout.requested",
+      subject: payoutId,
+      detail: { amountCents },
+      nowMs,
+    });
     return { payoutId, amountCents };
   });
 }
@@ -81,26 +114,47 @@ export async function runPayout({ payoutId, nowMs }: { payoutId: string; nowMs: 
   if (!transferId) {
     try {
       const transfer = await stripe().transfers.create(
-        { amount: payout.amountCents, currency: CURRENCY, destination, transfer_group: payout.id, metadata: { payoutId: payout.id } },
+        {
+          amount: payout.amountCents,
+          currency: CURRENCY,
+          destination,
+          transfer_group: payout.id,
+          metadata: { payoutId: payout.id },
+        },
         { idempotencyKey: `transfer:${payout.id}:${payout.attempt}` },
       );
       transferId = transfer.id;
     } catch (error) {
       if (error instanceof Stripe.errors.StripeInvalidRequestError && error.code === "balance_insufficient") {
         // Definite: nothing moved. Another attempt needs another key, or the refusal is replayed.
-        db.update(payouts).set({ attempt: payout.attempt + 1 }).where(eq(payouts.id, payout.id)).run();
+        db.update(payouts)
+          .set({ attempt: payout.attempt + 1 })
+          .where(eq(payouts.id, payout.id))
+          .run();
         throw new Error("the platform's Stripe balance is not available yet", { cause: error });
       }
       if (error instanceof Stripe.errors.StripeInvalidRequestError) {
-        inTransaction(db, (tx) => restorePayable(tx, payout, "Stripe refused the transfer.", "transit", nowMs));
+        inTransaction(db, (tx) =>
+          restorePayable(tx, payout, "Stripe refused the transfer.", "transit", nowMs),
+        );
         return;
       }
       throw error;
     }
     const madeId = transferId;
     inTransaction(db, (tx) => {
-      insertPosting(tx, { source: "payout", sourceId: payout.id, kind: "sent", posting: payoutSentPosting(payout.annotatorId, payout.amountCents), memo: "Payout sent", nowMs });
-      tx.update(payouts).set({ stripeTransferId: madeId, status: "sent" }).where(eq(payouts.id, payout.id)).run();
+      insertPosting(tx, {
+        source: "payout",
+        sourceId: payout.id,
+        kind: "sent",
+        posting: payoutSentPosting(payout.annotatorId, payout.amountCents),
+        memo: "Payout sent",
+        nowMs,
+      });
+      tx.update(payouts)
+        .set({ stripeTransferId: madeId, status: "sent" })
+        .where(eq(payouts.id, payout.id))
+        .run();
     });
   }
   if (!payout.stripePayoutId) {
@@ -108,7 +162,11 @@ export async function runPayout({ payoutId, nowMs }: { payoutId: string; nowMs: 
       { amount: payout.amountCents, currency: CURRENCY, metadata: { payoutId: payout.id } },
       { stripeAccount: destination, idempotencyKey: `payout:${payout.id}` },
     );
-    db.update(payouts).set({ stripePayoutId: bank.id }).where(and(eq(payouts.id, payout.id), inArray(payouts.status, ["sent", "paid"]))).run();
-    if (bank.status === "paid") db.update(payouts).set({ status: "paid", paidAtMs: nowMs }).where(eq(payouts.id, payout.id)).run();
+    db.update(payouts)
+      .set({ stripePayoutId: bank.id })
+      .where(and(eq(payouts.id, payout.id), inArray(payouts.status, ["sent", "paid"])))
+      .run();
+    if (bank.status === "paid")
+      db.update(payouts).set({ status: "paid", paidAtMs: nowMs }).where(eq(payouts.id, payout.id)).run();
   }
 }

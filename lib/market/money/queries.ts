@@ -5,9 +5,16 @@ import { ledgerEntries, submissions } from "@/db/schema";
 import { accountId } from "@/lib/ledger/posting";
 
 /** What a team's wallet holds, and its latest movements. */
-export function walletSummary(db: Reader, teamId: string, { limit = 50, beforeId }: { limit?: number; beforeId?: number } = {}) {
+export function walletSummary(
+  db: Reader,
+  teamId: string,
+  { limit = 50, beforeId }: { limit?: number; beforeId?: number } = {},
+) {
   const id = accountId("wallet", teamId);
-  return { balanceCents: balanceOf(db, id), movements: listMovements(db, id, { limit, ...(beforeId && { beforeId }) }) };
+  return {
+    balanceCents: balanceOf(db, id),
+    movements: listMovements(db, id, { limit, ...(beforeId && { beforeId }) }),
+  };
 }
 
 /** A batch's money: funded = released + fees + returned + remaining. */
@@ -33,7 +40,11 @@ function feesOf(db: Reader, batchId: string): number {
 }
 
 /** What an annotator has earned, may ask for, has on the way, and owes. */
-export function earnings(db: Reader, annotatorId: string, { limit = 50, beforeId }: { limit?: number; beforeId?: number } = {}) {
+export function earnings(
+  db: Reader,
+  annotatorId: string,
+  { limit = 50, beforeId }: { limit?: number; beforeId?: number } = {},
+) {
   const payable = accountId("payable", annotatorId);
   const months = db
     .select({
@@ -41,7 +52,12 @@ export function earnings(db: Reader, annotatorId: string, { limit = 50, beforeId
       cents: sql<number>`sum(${ledgerEntries.cents})`,
     })
     .from(ledgerEntries)
-    .where(and(eq(ledgerEntries.accountId, payable), sql`exists (select 1 from ledger_postings p where p.id = ${ledgerEntries.postingId} and p.source = 'submission')`))
+    .where(
+      and(
+        eq(ledgerEntries.accountId, payable),
+        sql`exists (select 1 from ledger_postings p where p.id = ${ledgerEntries.postingId} and p.source = 'submission')`,
+      ),
+    )
     .groupBy(sql`1`)
     .orderBy(sql`1 desc`)
     .all();

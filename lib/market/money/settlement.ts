@@ -6,18 +6,47 @@ import { accountId } from "@/lib/ledger/posting";
 import { adjustmentPosting, closePosting, fundPosting, releasePosting } from "@/lib/ledger/postings";
 
 /** Holds a batch's worst-case cost: from the team's wallet into the batch's escrow, once. */
-export function fundBatch(tx: Tx, { batchId, teamId, amountCents, nowMs }: { actor: Actor; batchId: string; teamId: string; amountCents: number; nowMs: number }): void {
+export function fundBatch(
+  tx: Tx,
+  {
+    batchId,
+    teamId,
+    amountCents,
+    nowMs,
+  }: { actor: Actor; batchId: string; teamId: string; amountCents: number; nowMs: number },
+): void {
   if (balanceOf(tx, accountId("wallet", teamId)) < amountCents) {
     throw new AppError("conflict", "The wallet does not hold enough. Top it up first.");
   }
-  insertPosting(tx, { source: "batch", sourceId: batchId, kind: "fund", posting: fundPosting(teamId, batchId, amountCents), memo: "Held for a batch", nowMs });
+  insertPosting(tx, {
+    source: "batch",
+    sourceId: batchId,
+    kind: "fund",
+    posting: fundPosting(teamId, batchId, amountCents),
+    memo: "Held for a batch",
+    nowMs,
+  });
 }
 
-type Release = { submissionId: string; batchId: string; annotatorId: string; payCents: number; feeCents: number; nowMs: number };
+type Release = {
+  submissionId: string;
+  batchId: string;
+  annotatorId: string;
+  payCents: number;
+  feeCents: number;
+  nowMs: number;
+};
 
 /** Pays a settled submission out of escrow, once. */
 export function releaseForSubmission(tx: Tx, { submissionId, nowMs, ...release }: Release): void {
-  insertPosting(tx, { source: "submission", sourceId: submissionId, kind: "release", posting: releasePosting(release), memo: "Pay for a settled picture", nowMs });
+  insertPosting(tx, {
+    source: "submission",
+    sourceId: submissionId,
+    kind: "release",
+    posting: releasePosting(release),
+    memo: "Pay for a settled picture",
+    nowMs,
+  });
 }
 
 type Adjust = {
@@ -45,14 +74,32 @@ export function adjustSubmissionPay(tx: Tx, change: Adjust): void {
     payableCents: balanceOf(tx, accountId("payable", annotatorId)),
     debtCents: -balanceOf(tx, accountId("debt", annotatorId)),
   });
-  insertPosting(tx, { source: "submission", sourceId: submissionId, kind: `adjust:${disputeId}`, posting, memo: "Pay corrected by a decision", linkedTo: first?.id ?? null, nowMs });
+  insertPosting(tx, {
+    source: "submission",
+    sourceId: submissionId,
+    kind: `adjust:${disputeId}`,
+    posting,
+    memo: "Pay corrected by a decision",
+    linkedTo: first?.id ?? null,
+    nowMs,
+  });
 }
 
 /** Gives what is left in a batch's escrow back to the wallet. Returns the cents. */
-export function closeBatchEscrow(tx: Tx, { batchId, teamId, nowMs }: { batchId: string; teamId: string; nowMs: number }): number {
+export function closeBatchEscrow(
+  tx: Tx,
+  { batchId, teamId, nowMs }: { batchId: string; teamId: string; nowMs: number },
+): number {
   const left = balanceOf(tx, accountId("escrow", batchId));
   if (left > 0) {
-    insertPosting(tx, { source: "batch", sourceId: batchId, kind: "close", posting: closePosting(teamId, batchId, left), memo: "Unspent money of a batch", nowMs });
+    insertPosting(tx, {
+      source: "batch",
+      sourceId: batchId,
+      kind: "close",
+      posting: closePosting(teamId, batchId, left),
+      memo: "Unspent money of a batch",
+      nowMs,
+    });
   }
   return left;
 }

@@ -18,17 +18,28 @@ export const TOP_UP_MAX_CENTS = 5_000_000;
  * Begins a card payment into a team's wallet: the row first, then a Checkout Session under the row's own
  * idempotency key. The wallet is credited by the signed webhook, never by the browser coming back.
  */
-export async function startTopUp({ actor, nowMs, teamId, amountCents, returnPath }: Input): Promise<{ url: string }> {
+export async function startTopUp({
+  actor,
+  nowMs,
+  teamId,
+  amountCents,
+  returnPath,
+}: Input): Promise<{ url: string }> {
   if (!Number.isInteger(amountCents) || amountCents < TOP_UP_MIN_CENTS || amountCents > TOP_UP_MAX_CENTS) {
-    throw new AppError("invalid", "The amount must be between $0.50 and $50,000.", { amountCents: "Between $0.50 and $50,000." });
+    throw new AppError("invalid", "The amount must be between $0.50 and $50,000.", {
+      amountCents: "Between $0.50 and $50,000.",
+    });
   }
   const id = newId("pay");
   inTransaction(getDb(), (tx) => {
     requireTeam(tx, teamId, actor, "editor");
-    tx.insert(topUps).values({ id, teamId, createdBy: actor.id, amountCents, status: "open", createdAtMs: nowMs }).run();
+    tx.insert(topUps)
+      .values({ id, teamId, createdBy: actor.id, amountCents, status: "open", createdAtMs: nowMs })
+      .run();
   });
   const back = new URL(returnPath, env().APP_URL);
-  if (back.origin !== new URL(env().APP_URL).origin) throw new AppError("invalid", "The way back is not ours.");
+  if (back.origin !== new URL(env().APP_URL).origin)
+    throw new AppError("invalid", "The way back is not ours.");
   const withResult = (result: string) => {
     const url = new URL(back);
     url.searchParams.set("payment", result);
@@ -38,7 +49,16 @@ export async function startTopUp({ actor, nowMs, teamId, amountCents, returnPath
     {
       mode: "payment",
       client_reference_id: id,
-      line_items: [{ quantity: 1, price_data: { currency: CURRENCY, unit_amount: amountCents, product_data: { name: "Merestone wallet" } } }],
+      line_items: [
+        {
+          quantity: 1,
+          price_data: {
+            currency: CURRENCY,
+            unit_amount: amountCents,
+            product_data: { name: "Merestone wallet" },
+          },
+        },
+      ],
       metadata: { topUpId: id, teamId },
       payment_intent_data: { metadata: { topUpId: id, teamId } },
       success_url: withResult("done"),

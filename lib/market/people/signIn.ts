@@ -16,7 +16,10 @@ export function sendSignInLink({ email, nowMs }: { email: string; nowMs: number 
       {
         to: user.email,
         subject: "Your sign-in link",
-        lines: [`Hello ${user.name},`, "This link signs you in once, within the next 15 minutes. If you did not ask for it, do nothing."],
+        lines: [
+          `Hello ${user.name},`,
+          "This link signs you in once, within the next 15 minutes. If you did not ask for it, do nothing.",
+        ],
         action: { label: "Sign in to Merestone", path: `/link?secret=${secret}` },
         tag: "sign-in",
       },

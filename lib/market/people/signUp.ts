@@ -17,7 +17,12 @@ export async function signUp({ input, nowMs }: { input: SignUpInput; nowMs: numb
   inTransaction(getDb(), (tx) => {
     const existing = findUserByEmail(tx, input.email);
     if (existing) {
-      const secret = issueToken(tx, { purpose: "sign-in", email: existing.email, userId: existing.id, nowMs });
+      const secret = issueToken(tx, {
+        purpose: "sign-in",
+        email: existing.email,
+        userId: existing.id,
+        nowMs,
+      });
       post(
         tx,
         {
@@ -33,11 +38,20 @@ export async function signUp({ input, nowMs }: { input: SignUpInput; nowMs: numb
     }
     const userId = newId("usr");
     tx.insert(users)
-      .values({ id: userId, email: input.email, name: input.name, passwordHash, role: input.role, createdAtMs: nowMs })
+      .values({
+        id: userId,
+        email: input.email,
+        name: input.name,
+        passwordHash,
+        role: input.role,
+        createdAtMs: nowMs,
+      })
       .run();
     if (input.role === "requester") {
       const teamId = newId("tem");
-      tx.insert(teams).values({ id: teamId, name: input.teamName || `${input.name}'s team`, createdAtMs: nowMs }).run();
+      tx.insert(teams)
+        .values({ id: teamId, name: input.teamName || `${input.name}'s team`, createdAtMs: nowMs })
+        .run();
       tx.insert(teamMembers).values({ teamId, userId, role: "owner", joinedAtMs: nowMs }).run();
     }
     const secret = issueToken(tx, { purpose: "verify", email: input.email, userId, nowMs });
@@ -46,12 +60,21 @@ export async function signUp({ input, nowMs }: { input: SignUpInput; nowMs: numb
       {
         to: input.email,
         subject: "Confirm your e-mail",
-        lines: [`Welcome, ${input.name}.`, "Open this link to confirm your address and sign in. It works for two days."],
+        lines: [
+          `Welcome, ${input.name}.`,
+          "Open this link to confirm your address and sign in. It works for two days.",
+        ],
         action: { label: "Confirm and sign in", path: `/link?secret=${secret}` },
         tag: "verify",
       },
       nowMs,
     );
-    audit(tx, { actorId: userId, action: "account.created", subject: userId, detail: { role: input.role }, nowMs });
+    audit(tx, {
+      actorId: userId,
+      action: "account.created",
+      subject: userId,
+      detail: { role: input.role },
+      nowMs,
+    });
   });
 }

@@ -1,6 +1,13 @@
 import { and, eq, isNull } from "drizzle-orm";
 import { getDb, inTransaction, type Tx } from "@/db/client";
-import { findInvite, findUser, findUserByEmail, getTeamRole, listTeamMembers, type TeamRole } from "@/db/queries/people";
+import {
+  findInvite,
+  findUser,
+  findUserByEmail,
+  getTeamRole,
+  listTeamMembers,
+  type TeamRole,
+} from "@/db/queries/people";
 import { teamInvites, teamMembers, teams, users } from "@/db/schema";
 import type { Actor } from "@/lib/auth/actor";
 import { issueToken, peekToken, redeemToken } from "@/lib/auth/tokens";
@@ -20,21 +27,41 @@ function requireOwner(tx: Tx, teamId: string, actor: Actor): void {
 }
 
 /** Invites a colleague by mail. Somebody who is a member already is a conflict. */
-export function inviteColleague({ actor, nowMs, teamId, email, role }: By & { teamId: string; email: string; role: TeamRole }) {
+export function inviteColleague({
+  actor,
+  nowMs,
+  teamId,
+  email,
+  role,
+}: By & { teamId: string; email: string; role: TeamRole }) {
   inTransaction(getDb(), (tx) => {
     requireOwner(tx, teamId, actor);
     const known = findUserByEmail(tx, email);
-    if (known && getTeamRole(tx, teamId, known.id)) throw new AppError("conflict", `${email} is in the team already.`);
+    if (known && getTeamRole(tx, teamId, known.id))
+      throw new AppError("conflict", `${email} is in the team already.`);
     if (known && known.role !== "requester") {
-      throw new AppError("conflict", `${email} has an account of another kind. Ask them for a different address.`);
+      throw new AppError(
+        "conflict",
+        `${email} has an account of another kind. Ask them for a different address.`,
+      );
     }
     const inviteId = newId("inv");
     tx.update(teamInvites)
       .set({ revokedAtMs: nowMs })
-      .where(and(eq(teamInvites.teamId, teamId), eq(teamInvites.email, email), isNull(teamInvites.acceptedAtMs)))
+      .where(
+        and(eq(teamInvites.teamId, teamId), eq(teamInvites.email, email), isNull(teamInvites.acceptedAtMs)),
+      )
       .run();
     tx.insert(teamInvites)
-      .values({ id: inviteId, teamId, email, role, invitedBy: actor.id, createdAtMs: nowMs, expiresAtMs: nowMs + INVITE_LIFETIME_MS })
+      .values({
+        id: inviteId,
+        teamId,
+        email,
+        role,
+        invitedBy: actor.id,
+        createdAtMs: nowMs,
+        expiresAtMs: nowMs + INVITE_LIFETIME_MS,
+      })
       .run();
     const team = tx.select().from(teams).where(eq(teams.id, teamId)).get();
     const secret = issueToken(tx, { purpose: "invite", email, inviteId, nowMs });
@@ -43,7 +70,10 @@ export function inviteColleague({ actor, nowMs, teamId, email, role }: By & { te
       {
         to: email,
         subject: `${actor.name} invites you to ${team?.name ?? "a team"}`,
-        lines: [`${actor.name} shares the team "${team?.name ?? ""}" on Merestone with you, as ${role}.`, "The link works for a week."],
+        lines: [
+          `${actor.name} shares the team "${team?.name ?? ""}" on Merestone with you, as ${role}.`,
+          "The link works for a week.",
+        ],
         action: { label: "Join the team", path: `/invitation?secret=${secret}` },
         tag: "invite",
       },
@@ -60,14 +90,27 @@ export function findInvitation({ secret, nowMs }: { secret: string; nowMs: numbe
   const invite = token?.inviteId ? findInvite(db, token.inviteId) : undefined;
   if (!invite || invite.revokedAtMs !== null || invite.acceptedAtMs !== null) return null;
   const team = db.select().from(teams).where(eq(teams.id, invite.teamId)).get();
-  return { email: invite.email, role: invite.role, teamName: team?.name ?? "", hasAccount: Boolean(findUserByEmail(db, invite.email)) };
+  return {
+    email: invite.email,
+    role: invite.role,
+    teamName: team?.name ?? "",
+    hasAccount: Boolean(findUserByEmail(db, invite.email)),
+  };
 }
 
 /**
  * Joins the team. The link proves the mailbox, so somebody new gets a confirmed account at once. Returns a
  * sign-in secret for the person who joined.
  */
-export function acceptInvitation({ secret, name, nowMs }: { secret: string; name: string; nowMs: number }): string {
+export function acceptInvitation({
+  secret,
+  name,
+  nowMs,
+}: {
+  secret: string;
+  name: string;
+  nowMs: number;
+}): string {
   return inTransaction(getDb(), (tx) => {
     const token = redeemToken(tx, "invite", secret, nowMs);
     const invite = token?.inviteId ? findInvite(tx, token.inviteId) : undefined;
@@ -78,12 +121,28 @@ export function acceptInvitation({ secret, name, nowMs }: { secret: string; name
     const userId = existing?.id ?? newId("usr");
     if (!existing) {
       tx.insert(users)
-        .values({ id: userId, email: invite.email, name: name || invite.email, role: "requester", emailVerifiedAtMs: nowMs, createdAtMs: nowMs })
+        .values({
+          id: userId,
+          email: invite.email,
+          name: name || invite.email,
+          role: "requester",
+          emailVerifiedAtMs: nowMs,
+          createdAtMs: nowMs,
+        })
         .run();
     }
-    tx.insert(teamMembers).values({ teamId: invite.teamId, userId, role: invite.role, joinedAtMs: nowMs }).onConflictDoNothing().run();
+    tx.insert(teamMembers)
+      .values({ teamId: invite.teamId, userId, role: invite.role, joinedAtMs: nowMs })
+      .onConflictDoNothing()
+      .run();
     tx.update(teamInvites).set({ acceptedAtMs: nowMs }).where(eq(teamInvites.id, invite.id)).run();
-    audit(tx, { actorId: userId, action: "team.joined", subject: invite.teamId, detail: { role: invite.role }, nowMs });
+    audit(tx, {
+      actorId: userId,
+      action: "team.joined",
+      subject: invite.teamId,
+      detail: { role: invite.role },
+      nowMs,
+    });
     return issueToken(tx, { purpose: "sign-in", email: invite.email, userId, nowMs });
   });
 }
@@ -98,7 +157,13 @@ export function revokeInvite({ actor, nowMs, inviteId }: By & { inviteId: string
 }
 
 /** Changes a member's role or removes the member. The last owner stays. */
-export function changeMember({ actor, nowMs, teamId, userId, role }: By & { teamId: string; userId: string; role: TeamRole | "remove" }) {
+export function changeMember({
+  actor,
+  nowMs,
+  teamId,
+  userId,
+  role,
+}: By & { teamId: string; userId: string; role: TeamRole | "remove" }) {
   inTransaction(getDb(), (tx) => {
     requireOwner(tx, teamId, actor);
     const owners = listTeamMembers(tx, teamId).filter((member) => member.role === "owner");
@@ -108,16 +173,37 @@ export function changeMember({ actor, nowMs, teamId, userId, role }: By & { team
     const member = and(eq(teamMembers.teamId, teamId), eq(teamMembers.userId, userId));
     if (role === "remove") tx.delete(teamMembers).where(member).run();
     else tx.update(teamMembers).set({ role }).where(member).run();
-    audit(tx, { actorId: actor.id, action: "team.member-changed", subject: teamId, detail: { userId, role }, nowMs });
+    audit(tx, {
+      actorId: actor.id,
+      action: "team.member-changed",
+      subject: teamId,
+      detail: { userId, role },
+      nowMs,
+    });
   });
 }
 
 /** Suspends an account (its sessions end at once) or lifts the suspension. An admin gives the reason. */
-export function setSuspended({ actor, nowMs, userId, suspended, reason }: By & { userId: string; suspended: boolean; reason: string }) {
+export function setSuspended({
+  actor,
+  nowMs,
+  userId,
+  suspended,
+  reason,
+}: By & { userId: string; suspended: boolean; reason: string }) {
   inTransaction(getDb(), (tx) => {
     if (userId === actor.id) throw new AppError("conflict", "You cannot suspend yourself.");
     if (!findUser(tx, userId)) throw new AppError("not_found", "There is no such account.");
-    tx.update(users).set({ status: suspended ? "suspended" : "active" }).where(eq(users.id, userId)).run();
-    audit(tx, { actorId: actor.id, action: suspended ? "account.suspended" : "account.restored", subject: userId, detail: { reason }, nowMs });
+    tx.update(users)
+      .set({ status: suspended ? "suspended" : "active" })
+      .where(eq(users.id, userId))
+      .run();
+    audit(tx, {
+      actorId: actor.id,
+      action: suspended ? "account.suspended" : "account.restored",
+      subject: userId,
+      detail: { reason },
+      nowMs,
+    });
   });
 }

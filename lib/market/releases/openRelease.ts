@@ -14,6 +14,15 @@ export async function openRelease({ actor, releaseId }: { actor: Actor; releaseI
   if (release.status !== "ready") throw new AppError("conflict", "This release is still being built.");
   invariant(release.storageKey && release.sha256, "a ready release is stored");
   const { stream } = await streamObject(release.storageKey);
-  const slug = batch.title.toLowerCase().replace(/[^a-z0-9]+/g, "-").replace(/^-|-$/g, "") || "batch";
-  return { stream, byteSize: release.byteSize, sha256: release.sha256, fileName: `${slug}-release-${release.number}.zip` };
+  const slug =
+    batch.title
+      .toLowerCase()
+      .replace(/[^a-z0-9]+/g, "-")
+      .replace(/^-|-$/g, "") || "batch";
+  return {
+    stream,
+    byteSize: release.byteSize,
+    sha256: release.sha256,
+    fileName: `${slug}-release-${release.number}.zip`,
+  };
 }

@@ -9,18 +9,56 @@ import { requireBatch } from "@/lib/market/access";
 import { audit } from "@/lib/market/audit";
 
 /** Asks for a dataset release of what is settled now. It is built in the background; returns its id. */
-export function requestRelease({ actor, nowMs, batchId }: { actor: Actor; nowMs: number; batchId: string }): string {
+export function requestRelease({
+  actor,
+  nowMs,
+  batchId,
+}: {
+  actor: Actor;
+  nowMs: number;
+  batchId: string;
+}): string {
   return inTransaction(getDb(), (tx) => {
     requireBatch(tx, batchId, actor, "viewer");
-    const settled = tx.select({ count: count() }).from(images).where(and(eq(images.batchId, batchId), eq(images.consensusState, "settled"))).get()?.count ?? 0;
-    if (settled === 0) throw new AppError("conflict", "No picture is settled yet, so there is nothing to release.");
-    const building = tx.select({ id: releases.id }).from(releases).where(and(eq(releases.batchId, batchId), eq(releases.status, "building"))).get();
+    const settled =
+      tx
+        .select({ count: count() })
+        .from(images)
+        .where(and(eq(images.batchId, batchId), eq(images.consensusState, "settled")))
+        .get()?.count ?? 0;
+    if (settled === 0)
+      throw new AppError("conflict", "No picture is settled yet, so there is nothing to release.");
+    const building = tx
+      .select({ id: releases.id })
+      .from(releases)
+      .where(and(eq(releases.batchId, batchId), eq(releases.status, "building")))
+      .get();
     if (building) return building.id;
-    const number = (tx.select({ max: sql<number | null>`max(${releases.number})` }).from(releases).where(eq(releases.batchId, batchId)).get()?.max ?? 0) + 1;
+    const number =
+      (tx
+        .select({ max: sql<number | null>`max(${releases.number})` })
+        .from(releases)
+        .where(eq(releases.batchId, batchId))
+        .get()?.max ?? 0) + 1;
     const id = newId("rel");
-    tx.insert(releases).values({ id, batchId, number, status: "building", requestedBy: actor.id, createdAtMs: nowMs }).run();
-    enqueue(tx, { kind: "release.build", payload: { releaseId: id }, subject: batchId, uniqueKey: `release:${id}`, nowMs, priority: 2 });
-    audit(tx, { actorId: actor.id, action: "release.requested", subject: batchId, detail: { number }, nowMs });
+    tx.insert(releases)
+      .values({ id, batchId, number, status: "building", requestedBy: actor.id, createdAtMs: nowMs })
+      .run();
+    enqueue(tx, {
+      kind: "release.build",
+      payload: { releaseId: id },
+      subject: batchId,
+      uniqueKey: `release:${id}`,
+      nowMs,
+      priority: 2,
+    });
+    audit(tx, {
+      actorId: actor.id,
+      action: "release.requested",
+      subject: batchId,
+      detail: { number },
+      nowMs,
+    });
     return id;
   });
 }

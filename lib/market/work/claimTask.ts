@@ -26,20 +26,30 @@ export function claimTask({ actor, nowMs, batchId, imageId }: Input): ClaimRow {
     expireClaims(tx, nowMs);
     const batch = findBatch(tx, batchId);
     if (!batch || batch.status === "draft") throw new AppError("not_found", "There is no such batch.");
-    if (batch.status !== "open") throw new AppError("conflict", "This batch takes no new work at the moment.");
+    if (batch.status !== "open")
+      throw new AppError("conflict", "This batch takes no new work at the moment.");
     const person = findUser(tx, actor.id);
     if (batch.sensitive && !person?.acceptsSensitive) {
-      throw new AppError("forbidden", "This batch has sensitive content. You can opt in on your account page.");
+      throw new AppError(
+        "forbidden",
+        "This batch has sensitive content. You can opt in on your account page.",
+      );
     }
     const live = listLiveClaims(tx, actor.id, nowMs);
     const held = live.find((claim) => claim.batchId === batchId && (!imageId || claim.imageId === imageId));
     if (held) return held;
     if (live.length >= LIVE_CLAIMS_MAX) {
-      throw new AppError("conflict", `You hold ${live.length} images already. Hand one in or give one back first.`);
+      throw new AppError(
+        "conflict",
+        `You hold ${live.length} images already. Hand one in or give one back first.`,
+      );
     }
     const image = findNextImage(tx, batchId, actor.id, imageId);
     if (!image) {
-      throw new AppError(imageId ? "conflict" : "not_found", imageId ? "Somebody else has this image now." : "No image of this batch waits for you at the moment.");
+      throw new AppError(
+        imageId ? "conflict" : "not_found",
+        imageId ? "Somebody else has this image now." : "No image of this batch waits for you at the moment.",
+      );
     }
     const taken = new Set(listTakenSlots(tx, image.id));
     let slot = 1;

@@ -1,5 +1,12 @@
 import { getDb } from "@/db/client";
-import { findBatch, findBrief, findImage, findProposals, listBriefExamples, listClasses } from "@/db/queries/batches";
+import {
+  findBatch,
+  findBrief,
+  findImage,
+  findProposals,
+  listBriefExamples,
+  listClasses,
+} from "@/db/queries/batches";
 import { findClaim, findDraft, measureBatch } from "@/db/queries/work";
 import type { Actor } from "@/lib/auth/actor";
 import type { DeskTask } from "@/lib/contracts/desk";
@@ -23,7 +30,10 @@ export function deskTask({ actor, claimId }: { actor: Actor; claimId: string }):
 }
 
 /** The part of a desk task that does not depend on a claim: also what an admin redraws a dispute on. */
-export function imageForDesk(imageId: string, briefVersion?: number): Omit<DeskTask, "claimId" | "expiresAtMs" | "draft" | "draftVersion"> {
+export function imageForDesk(
+  imageId: string,
+  briefVersion?: number,
+): Omit<DeskTask, "claimId" | "expiresAtMs" | "draft" | "draftVersion"> {
   const db = getDb();
   const image = findImage(db, imageId);
   const batch = image && findBatch(db, image.batchId);
@@ -35,19 +45,37 @@ export function imageForDesk(imageId: string, briefVersion?: number): Omit<DeskT
     imageUrl: `/api/images/${image.id}/working`,
     width: image.width,
     height: image.height,
-    classes: listClasses(db, batch.id).map(({ id, number, name, colour, pattern, geometry }) => ({ id, number, name, colour, pattern, geometry })),
+    classes: listClasses(db, batch.id).map(({ id, number, name, colour, pattern, geometry }) => ({
+      id,
+      number,
+      name,
+      colour,
+      pattern,
+      geometry,
+    })),
     proposals: (findProposals(db, imageId)?.proposals ?? []).map((proposal) => ({
       id: proposal.id,
       classId: proposal.classId,
-      shape: proposal.rings.length > 0 ? { kind: "polygon", rings: proposal.rings } : { kind: "box", box: proposal.box },
+      shape:
+        proposal.rings.length > 0
+          ? { kind: "polygon", rings: proposal.rings }
+          : { kind: "box", box: proposal.box },
       score: proposal.score,
     })),
     brief: {
       version: brief?.version ?? 0,
       markdown: brief?.markdown ?? "",
-      examples: listBriefExamples(db, batch.id).map(({ imageId: exampleId, caption }) => ({ url: `/api/images/${exampleId}/thumb`, caption })),
+      examples: listBriefExamples(db, batch.id).map(({ imageId: exampleId, caption }) => ({
+        url: `/api/images/${exampleId}/thumb`,
+        caption,
+      })),
     },
-    pay: { baseCents: batch.baseCents, boxCents: batch.boxCents, polygonCents: batch.polygonCents, capCents: batch.capCents },
+    pay: {
+      baseCents: batch.baseCents,
+      boxCents: batch.boxCents,
+      polygonCents: batch.polygonCents,
+      capCents: batch.capCents,
+    },
     medianSeconds: measureBatch(db, batch.id).medianSeconds,
     sensitive: batch.sensitive,
   };

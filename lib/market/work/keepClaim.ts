@@ -26,9 +26,15 @@ function revive(tx: Tx, claim: ClaimRow, nowMs: number): ClaimRow {
   const image = findImage(tx, claim.imageId);
   const taken = listTakenSlots(tx, claim.imageId);
   const others = claim.status === "live" ? taken.filter((slot) => slot !== claim.slot) : taken;
-  const isOpen = batch?.status === "open" && image && (image.consensusState === "none" || image.consensusState === "short");
+  const isOpen =
+    batch?.status === "open" &&
+    image &&
+    (image.consensusState === "none" || image.consensusState === "short");
   if (!isOpen || others.length >= image.slotsWanted) {
-    throw new AppError("gone", "Your claim ran out and somebody else has the place. Your drawing is kept in this browser.");
+    throw new AppError(
+      "gone",
+      "Your claim ran out and somebody else has the place. Your drawing is kept in this browser.",
+    );
   }
   let slot = 1;
   while (others.includes(slot)) slot += 1;
@@ -44,7 +50,8 @@ function revive(tx: Tx, claim: ClaimRow, nowMs: number): ClaimRow {
     )
     .returning()
     .get();
-  if (!revived) throw new AppError("gone", "You hold this image under a newer claim. Open it from the board.");
+  if (!revived)
+    throw new AppError("gone", "You hold this image under a newer claim. Open it from the board.");
   return revived;
 }
 
@@ -62,7 +69,10 @@ export function heartbeat(by: By): { expiresAtMs: number } {
  * Keeps the draft. `version` is the one that the desk last got back (0 at first): another tab that saved in
  * between makes it a conflict, and nothing is overwritten.
  */
-export function saveDraft({ document, version, ...by }: By & { document: DeskDocument; version: number }): { version: number; expiresAtMs: number } {
+export function saveDraft({ document, version, ...by }: By & { document: DeskDocument; version: number }): {
+  version: number;
+  expiresAtMs: number;
+} {
   return inTransaction(getDb(), (tx) => {
     const claim = requireLiveClaim(tx, by);
     const stored = findDraft(tx, claim.id);
@@ -82,7 +92,8 @@ export function saveDraft({ document, version, ...by }: By & { document: DeskDoc
 export function releaseClaim(by: By): void {
   inTransaction(getDb(), (tx) => {
     const claim = findClaim(tx, by.claimId);
-    if (!claim || claim.annotatorId !== by.actor.id) throw new AppError("not_found", "There is no such claim.");
+    if (!claim || claim.annotatorId !== by.actor.id)
+      throw new AppError("not_found", "There is no such claim.");
     if (claim.status !== "live") return;
     tx.update(claims).set({ status: "released", endedAtMs: by.nowMs }).where(eq(claims.id, claim.id)).run();
     tx.delete(drafts).where(eq(drafts.claimId, claim.id)).run();

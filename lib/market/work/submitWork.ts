@@ -22,12 +22,15 @@ export function documentHash(document: DeskDocument): string {
  * Hands in what was drawn for one image. Once; saying it again with the same drawing is answered with the
  * same submission. When the image has as many as it wants, the consensus is queued in the same transaction.
  */
-export function submitWork({ actor, nowMs, claimId, document, activeSeconds }: Input): { submissionId: string } {
+export function submitWork({ actor, nowMs, claimId, document, activeSeconds }: Input): {
+  submissionId: string;
+} {
   return inTransaction(getDb(), (tx) => {
     const known = findClaim(tx, claimId);
-    const earlier = known?.annotatorId === actor.id && known.status === "submitted"
-      ? tx.select().from(submissions).where(eq(submissions.claimId, claimId)).get()
-      : undefined;
+    const earlier =
+      known?.annotatorId === actor.id && known.status === "submitted"
+        ? tx.select().from(submissions).where(eq(submissions.claimId, claimId)).get()
+        : undefined;
     const sha256 = documentHash(document);
     if (earlier?.sha256 === sha256) return { submissionId: earlier.id };
     const claim = requireLiveClaim(tx, { actor, nowMs, claimId });
@@ -51,7 +54,9 @@ export function submitWork({ actor, nowMs, claimId, document, activeSeconds }: I
       .run();
     tx.update(claims).set({ status: "submitted", endedAtMs: nowMs }).where(eq(claims.id, claimId)).run();
     tx.delete(drafts).where(eq(drafts.claimId, claimId)).run();
-    const handedIn = tx.select({ count: count() }).from(submissions).where(eq(submissions.imageId, claim.imageId)).get()?.count ?? 0;
+    const handedIn =
+      tx.select({ count: count() }).from(submissions).where(eq(submissions.imageId, claim.imageId)).get()
+        ?.count ?? 0;
     if (handedIn >= image.slotsWanted) {
       enqueue(tx, {
         kind: "consensus.settle",
@@ -71,12 +76,15 @@ export function checkDocument(document: DeskDocument, image: ImageRow, key: Clas
   const byId = new Map(key.map((row) => [row.id, row]));
   const width = image.width ?? 0;
   const height = image.height ?? 0;
-  const inside = (x: number, y: number) => x >= -0.01 && y >= -0.01 && x <= width + 0.01 && y <= height + 0.01;
+  const inside = (x: number, y: number) =>
+    x >= -0.01 && y >= -0.01 && x <= width + 0.01 && y <= height + 0.01;
   document.instances.forEach((instance, index) => {
-    const refuse = (why: string) => new AppError("invalid", `Shape ${index + 1}: ${why}`, { [`document/instances/${index}`]: why });
+    const refuse = (why: string) =>
+      new AppError("invalid", `Shape ${index + 1}: ${why}`, { [`document/instances/${index}`]: why });
     const kind = byId.get(instance.classId);
     if (!kind) throw refuse("its class is not in the key.");
-    if (kind.geometry === "polygon" && instance.shape.kind === "box") throw refuse(`"${kind.name}" wants an outline, not a box.`);
+    if (kind.geometry === "polygon" && instance.shape.kind === "box")
+      throw refuse(`"${kind.name}" wants an outline, not a box.`);
     if (instance.shape.kind === "box") {
       const [x, y, w, h] = instance.shape.box;
       if (!inside(x, y) || !inside(x + w, y + h)) throw refuse("it leaves the image.");

@@ -17,7 +17,10 @@ export function ClaimedDesk({ task, batchId }: { task: DeskTask; batchId: string
       saveDraft: (document, version) => callJson("PUT", `${base}/draft`, { document, version }),
       heartbeat: () => callJson("POST", `${base}/heartbeat`),
       submit: async ({ document, activeSeconds }) => {
-        const { submissionId } = await callJson<{ submissionId: string }>("POST", `${base}/submission`, { document, activeSeconds });
+        const { submissionId } = await callJson<{ submissionId: string }>("POST", `${base}/submission`, {
+          document,
+          activeSeconds,
+        });
         toast.success("Handed in. Your score follows when the others have drawn it.");
         try {
           const next = await callJson<{ claimId: string }>("POST", "/api/claims", { batchId });

@@ -16,7 +16,9 @@ export default async function DeskPage({ params }: Props) {
   const actor = await requirePageActor("annotator");
   const { claimId } = await params;
   try {
-    return <ClaimedDesk task={deskTask({ actor, claimId })} batchId={findClaim(getDb(), claimId)?.batchId ?? ""} />;
+    return (
+      <ClaimedDesk task={deskTask({ actor, claimId })} batchId={findClaim(getDb(), claimId)?.batchId ?? ""} />
+    );
   } catch (error) {
     if (!(error instanceof AppError)) throw error;
     if (error.code === "not_found") notFound();

@@ -36,7 +36,11 @@ export function RedrawDesk({ disputeId, task }: { disputeId: string; task: DeskT
     setPending(true);
     setProblem(null);
     try {
-      await callJson("POST", `/api/disputes/${disputeId}/decision`, { outcome: "redraw", document: drawn, reason });
+      await callJson("POST", `/api/disputes/${disputeId}/decision`, {
+        outcome: "redraw",
+        document: drawn,
+        reason,
+      });
       toast.success("Decided.");
       router.replace(`/docket/${disputeId}`);
     } catch (error) {
@@ -54,7 +58,12 @@ export function RedrawDesk({ disputeId, task }: { disputeId: string; task: DeskT
         open={drawn !== null}
         onOpenChange={(open) => !open && setDrawn(null)}
         actions={
-          <Button kind="primary" pending={pending} disabled={reason.trim().length < REASON_MIN} onClick={() => void decide()}>
+          <Button
+            kind="primary"
+            pending={pending}
+            disabled={reason.trim().length < REASON_MIN}
+            onClick={() => void decide()}
+          >
             Decide
           </Button>
         }
@@ -64,7 +73,13 @@ export function RedrawDesk({ disputeId, task }: { disputeId: string; task: DeskT
             {problem}
           </Notice>
         ) : null}
-        <TextArea label="Reason" rows={4} maxLength={2000} value={reason} onChange={(event) => setReason(event.currentTarget.value)} />
+        <TextArea
+          label="Reason"
+          rows={4}
+          maxLength={2000}
+          value={reason}
+          onChange={(event) => setReason(event.currentTarget.value)}
+        />
       </Dialog>
     </>
   );

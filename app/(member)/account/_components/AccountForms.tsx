@@ -10,16 +10,35 @@ import { SubmitButton } from "@/components/ui/SubmitButton";
 import { TextInput } from "@/components/ui/TextInput";
 import { endSessions, saveAccount, savePassword } from "../actions";
 
-export function AccountForm({ name, acceptsSensitive, isAnnotator }: { name: string; acceptsSensitive: boolean; isAnnotator: boolean }) {
+export function AccountForm({
+  name,
+  acceptsSensitive,
+  isAnnotator,
+}: {
+  name: string;
+  acceptsSensitive: boolean;
+  isAnnotator: boolean;
+}) {
   const [result, submit] = useActionState(saveAccount, null);
   useEffect(() => {
     if (result?.ok) toast.success("Saved.");
   }, [result]);
   return (
     <form action={submit} className="grid gap-5">
-      <TextInput label="Name" name="name" defaultValue={name} required error={result && !result.ok ? result.fields.name : undefined} />
+      <TextInput
+        label="Name"
+        name="name"
+        defaultValue={name}
+        required
+        error={result && !result.ok ? result.fields.name : undefined}
+      />
       {isAnnotator ? (
-        <Checkbox name="acceptsSensitive" label="Show me batches with sensitive content" hint="People, private places or distressing scenes. Each is flagged before the first picture, and you can give any picture back." defaultChecked={acceptsSensitive} />
+        <Checkbox
+          name="acceptsSensitive"
+          label="Show me batches with sensitive content"
+          hint="People, private places or distressing scenes. Each is flagged before the first picture, and you can give any picture back."
+          defaultChecked={acceptsSensitive}
+        />
       ) : null}
       <SubmitButton className="justify-self-start">Save</SubmitButton>
     </form>
@@ -38,8 +57,25 @@ export function PasswordForm({ hasPassword }: { hasPassword: boolean }) {
           {result.message}
         </Notice>
       ) : null}
-      {hasPassword ? <TextInput label="Current password" name="current" type="password" autoComplete="current-password" required error={result && !result.ok ? result.fields.current : undefined} /> : null}
-      <TextInput label="New password" name="password" type="password" autoComplete="new-password" hint="Ten characters or more." required error={result && !result.ok ? result.fields.password : undefined} />
+      {hasPassword ? (
+        <TextInput
+          label="Current password"
+          name="current"
+          type="password"
+          autoComplete="current-password"
+          required
+          error={result && !result.ok ? result.fields.current : undefined}
+        />
+      ) : null}
+      <TextInput
+        label="New password"
+        name="password"
+        type="password"
+        autoComplete="new-password"
+        hint="Ten characters or more."
+        required
+        error={result && !result.ok ? result.fields.password : undefined}
+      />
       <SubmitButton className="justify-self-start">Set the password</SubmitButton>
     </form>
   );

@@ -61,7 +61,8 @@ export default async function BatchPage({ params }: Props) {
   const instances = settledRuns.flatMap(({ run }) => run.result.agreed);
   const perClass = key.map((row) => {
     const own = instances.filter((instance) => instance.classId === row.id);
-    const mean = own.length === 0 ? 0 : own.reduce((sum, instance) => sum + instance.predictedIou, 0) / own.length;
+    const mean =
+      own.length === 0 ? 0 : own.reduce((sum, instance) => sum + instance.predictedIou, 0) / own.length;
     return { row, count: own.length, mean };
   });
   const byTime = [...settledRuns].sort((a, b) => (a.image.settledAtMs ?? 0) - (b.image.settledAtMs ?? 0));
@@ -72,34 +73,77 @@ export default async function BatchPage({ params }: Props) {
     <>
       <PageHeader
         title={batch.title}
-        crumbs={actor.role === "admin" ? [{ href: "/docket", label: "Docket" }] : [{ href: "/batches", label: "Batches" }]}
+        crumbs={
+          actor.role === "admin"
+            ? [{ href: "/docket", label: "Docket" }]
+            : [{ href: "/batches", label: "Batches" }]
+        }
         marks={<BatchMark status={batch.status} split={status.progress?.split ?? 0} />}
-        actions={mayEdit ? <BatchActions batch={{ id: batch.id, title: batch.title, status: batch.status }} remainingCents={money.remainingCents} live={live} openDisputes={openDisputes.length} /> : null}
+        actions={
+          mayEdit ? (
+            <BatchActions
+              batch={{ id: batch.id, title: batch.title, status: batch.status }}
+              remainingCents={money.remainingCents}
+              live={live}
+              openDisputes={openDisputes.length}
+            />
+          ) : null
+        }
       />
       <div className="grid gap-6">
         {batch.safetyCritical ? (
           <Notice kind="caution" title="Feeds a safety-critical system">
-            Have each release reviewed by people qualified in that field. Agreement between annotators is not proof of correctness.
+            Have each release reviewed by people qualified in that field. Agreement between annotators is not
+            proof of correctness.
           </Notice>
         ) : null}
-        {measured.hourlyCents !== null && measured.tasks >= 10 && measured.hourlyCents < batch.floorHourlyCents && batch.status === "open" ? (
+        {measured.hourlyCents !== null &&
+        measured.tasks >= 10 &&
+        measured.hourlyCents < batch.floorHourlyCents &&
+        batch.status === "open" ? (
           <Notice kind="caution" title="Pay measures below your floor">
-            The median is <Money cents={Math.round(measured.hourlyCents)} /> an hour over {measured.tasks} tasks; your floor is <Money cents={batch.floorHourlyCents} />. Annotators see this figure before they accept. Minimum pay is a matter of local law.
+            The median is <Money cents={Math.round(measured.hourlyCents)} /> an hour over {measured.tasks}{" "}
+            tasks; your floor is <Money cents={batch.floorHourlyCents} />. Annotators see this figure before
+            they accept. Minimum pay is a matter of local law.
           </Notice>
         ) : null}
         <BatchProgress batchId={batchId} initial={status} />
         <Stats>
-          <Stat caption="Agreement, settled pictures">{status.progress?.agreement == null ? "–" : formatPercent(status.progress.agreement)}</Stat>
+          <Stat caption="Agreement, settled pictures">
+            {status.progress?.agreement == null ? "–" : formatPercent(status.progress.agreement)}
+          </Stat>
           <Stat caption="Agreed instances">{instances.length}</Stat>
-          <Stat caption="Spent, of held" note={<>of <Money cents={money.fundedCents} /></>}>
+          <Stat
+            caption="Spent, of held"
+            note={
+              <>
+                of <Money cents={money.fundedCents} />
+              </>
+            }
+          >
             <Money cents={money.releasedCents + money.feeCents} />
           </Stat>
-          <Stat caption="Median pay an hour" note={`${measured.tasks} tasks${measured.medianSeconds === null ? "" : `, ${Math.round(measured.medianSeconds)} s each`}`}>
+          <Stat
+            caption="Median pay an hour"
+            note={`${measured.tasks} tasks${measured.medianSeconds === null ? "" : `, ${Math.round(measured.medianSeconds)} s each`}`}
+          >
             {measured.hourlyCents === null ? "–" : <Money cents={Math.round(measured.hourlyCents)} />}
           </Stat>
         </Stats>
         <Sheet title="Pictures" id="pictures">
-          <ImageGrid batchId={batchId} images={images.filter((image) => image.status === "ready").map(({ id, fileName, consensusState, submitted, slotsWanted, agreement: own }) => ({ id, fileName, consensusState, submitted, slotsWanted, agreement: own }))} />
+          <ImageGrid
+            batchId={batchId}
+            images={images
+              .filter((image) => image.status === "ready")
+              .map(({ id, fileName, consensusState, submitted, slotsWanted, agreement: own }) => ({
+                id,
+                fileName,
+                consensusState,
+                submitted,
+                slotsWanted,
+                agreement: own,
+              }))}
+          />
         </Sheet>
         <div className="grid gap-6 lg:grid-cols-2">
           <Sheet title="Agreement over time">
@@ -117,7 +161,10 @@ export default async function BatchPage({ params }: Props) {
               />
             )}
           </Sheet>
-          <Sheet title="Quality by class" lead="Expected overlap (IoU) of the agreed outlines with the truth.">
+          <Sheet
+            title="Quality by class"
+            lead="Expected overlap (IoU) of the agreed outlines with the truth."
+          >
             {instances.length === 0 ? (
               <p className="text-muted">Nothing is settled yet.</p>
             ) : (
@@ -125,7 +172,9 @@ export default async function BatchPage({ params }: Props) {
                 label="Expected overlap by class"
                 max={1}
                 bars={perClass.map(({ row, count, mean }) => ({
-                  label: <ClassSwatch number={row.number} colour={row.colour} name={`${row.name} (${count})`} />,
+                  label: (
+                    <ClassSwatch number={row.number} colour={row.colour} name={`${row.name} (${count})`} />
+                  ),
                   value: mean,
                   text: count === 0 ? "none" : mean.toFixed(2),
                 }))}
@@ -149,10 +198,18 @@ export default async function BatchPage({ params }: Props) {
                 {people.map((person, index) => (
                   <Row key={person.annotatorId}>
                     <RowHead>{actor.role === "admin" ? person.name : `Annotator ${index + 1}`}</RowHead>
-                    <Cell label="Submissions" figure>{person.submissions}</Cell>
-                    <Cell label="Mean score" figure>{person.quality === null ? "–" : person.quality.toFixed(2)}</Cell>
-                    <Cell label="Paid" figure><Money cents={person.payCents} /></Cell>
-                    <Cell label="Time a task" figure>{Math.round(person.seconds / person.submissions)} s</Cell>
+                    <Cell label="Submissions" figure>
+                      {person.submissions}
+                    </Cell>
+                    <Cell label="Mean score" figure>
+                      {person.quality === null ? "–" : person.quality.toFixed(2)}
+                    </Cell>
+                    <Cell label="Paid" figure>
+                      <Money cents={person.payCents} />
+                    </Cell>
+                    <Cell label="Time a task" figure>
+                      {Math.round(person.seconds / person.submissions)} s
+                    </Cell>
                   </Row>
                 ))}
               </TableBody>
@@ -161,16 +218,46 @@ export default async function BatchPage({ params }: Props) {
         </Sheet>
         <div className="grid items-start gap-6 lg:grid-cols-2">
           {mayEdit && batch.status !== "closed" ? (
-            <TargetPanel batchId={batchId} target={batch.agreementTarget} kMax={batch.kMax} capCents={batch.capCents} feeBps={batch.feeBps} agreements={runs.map(({ run, image }) => ({ agreement: run.agreement, submissions: run.submissionIds.length, state: image.consensusState }))} medianPayCents={measured.medianPayCents} />
+            <TargetPanel
+              batchId={batchId}
+              target={batch.agreementTarget}
+              kMax={batch.kMax}
+              capCents={batch.capCents}
+              feeBps={batch.feeBps}
+              agreements={runs.map(({ run, image }) => ({
+                agreement: run.agreement,
+                submissions: run.submissionIds.length,
+                state: image.consensusState,
+              }))}
+              medianPayCents={measured.medianPayCents}
+            />
           ) : null}
-          <Sheet title="Proposals" lead={training === undefined ? "Proposals come from the pictures alone so far; they learn from the first settled ones." : undefined}>
+          <Sheet
+            title="Proposals"
+            lead={
+              training === undefined
+                ? "Proposals come from the pictures alone so far; they learn from the first settled ones."
+                : undefined
+            }
+          >
             {training ? (
               <p>
-                Version {training.version} learned from {training.settledImages} settled {training.settledImages === 1 ? "picture" : "pictures"}.{" "}
+                Version {training.version} learned from {training.settledImages} settled{" "}
+                {training.settledImages === 1 ? "picture" : "pictures"}.{" "}
                 {training.useful && training.apWith !== null ? (
                   <>
-                    On settled pictures that it had not seen, its average precision is <span className="font-figures">{training.apWith.toFixed(2)}</span>
-                    {training.apWithout === null ? "" : <> (without learning <span className="font-figures">{training.apWithout.toFixed(2)}</span>)</>}; it is in use.
+                    On settled pictures that it had not seen, its average precision is{" "}
+                    <span className="font-figures">{training.apWith.toFixed(2)}</span>
+                    {training.apWithout === null ? (
+                      ""
+                    ) : (
+                      <>
+                        {" "}
+                        (without learning{" "}
+                        <span className="font-figures">{training.apWithout.toFixed(2)}</span>)
+                      </>
+                    )}
+                    ; it is in use.
                   </>
                 ) : (
                   <>It is not better than what was there before, so it is not in use.</>
@@ -179,10 +266,17 @@ export default async function BatchPage({ params }: Props) {
             ) : null}
           </Sheet>
         </div>
-        <Releases batchId={batchId} releases={listReleases(db, batchId)} settled={status.progress?.settled ?? 0} />
+        <Releases
+          batchId={batchId}
+          releases={listReleases(db, batchId)}
+          settled={status.progress?.settled ?? 0}
+        />
         <Sheet title="Disputes">
           {disputes.length === 0 ? (
-            <p className="text-muted">None. You can contest the result of a picture on its own page within {batch.disputeWindowHours} hours.</p>
+            <p className="text-muted">
+              None. You can contest the result of a picture on its own page within {batch.disputeWindowHours}{" "}
+              hours.
+            </p>
           ) : (
             <ul className="divide-line divide-y">
               {disputes.map((dispute) => (
@@ -191,7 +285,12 @@ export default async function BatchPage({ params }: Props) {
                     {images.find((image) => image.id === dispute.imageId)?.fileName ?? "Picture"}
                   </Link>
                   <span className="text-muted text-sm">
-                    {dispute.kind === "split" ? "could not agree" : dispute.kind === "score" ? "an annotator contests a score" : "contested by the team"}, {dispute.status} <When at={dispute.decidedAtMs ?? dispute.openedAtMs} form="relative" />
+                    {dispute.kind === "split"
+                      ? "could not agree"
+                      : dispute.kind === "score"
+                        ? "an annotator contests a score"
+                        : "contested by the team"}
+                    , {dispute.status} <When at={dispute.decidedAtMs ?? dispute.openedAtMs} form="relative" />
                   </span>
                 </li>
               ))}
@@ -200,7 +299,13 @@ export default async function BatchPage({ params }: Props) {
         </Sheet>
         <Sheet
           title={`The brief, version ${brief?.version ?? 0}`}
-          actions={mayEdit && batch.status !== "closed" ? <ButtonLink size="small" href={`/batches/${batchId}/setup/key`}>Correct it</ButtonLink> : null}
+          actions={
+            mayEdit && batch.status !== "closed" ? (
+              <ButtonLink size="small" href={`/batches/${batchId}/setup/key`}>
+                Correct it
+              </ButtonLink>
+            ) : null
+          }
         >
           <ul className="mb-4 flex flex-wrap gap-x-6 gap-y-2" aria-label="The key">
             {key.map((row) => (

@@ -19,9 +19,20 @@ export function NewBatchForm({ teams }: { teams: { id: string; name: string }[] 
             {result.message}
           </Notice>
         ) : null}
-        <TextInput label="Title" name="title" hint="As annotators will see it on the board, for example “Wrack line, spring tide”." required maxLength={120} error={result && !result.ok ? result.fields.title : undefined} />
+        <TextInput
+          label="Title"
+          name="title"
+          hint="As annotators will see it on the board, for example “Wrack line, spring tide”."
+          required
+          maxLength={120}
+          error={result && !result.ok ? result.fields.title : undefined}
+        />
         {teams.length > 1 ? (
-          <Select label="Team" name="teamId" options={teams.map((team) => ({ value: team.id, label: team.name }))} />
+          <Select
+            label="Team"
+            name="teamId"
+            options={teams.map((team) => ({ value: team.id, label: team.name }))}
+          />
         ) : (
           <input type="hidden" name="teamId" value={first?.id ?? ""} />
         )}

@@ -12,7 +12,11 @@ export default async function NewBatchPage() {
   const teams = listTeamsOf(getDb(), actor.id).filter((team) => team.role !== "viewer");
   return (
     <div className="mx-auto max-w-lg">
-      <PageHeader title="New batch" crumbs={[{ href: "/batches", label: "Batches" }]} lead="Name it. Everything else comes in four steps, and nothing is charged before the last." />
+      <PageHeader
+        title="New batch"
+        crumbs={[{ href: "/batches", label: "Batches" }]}
+        lead="Name it. Everything else comes in four steps, and nothing is charged before the last."
+      />
       <NewBatchForm teams={teams.map(({ id, name }) => ({ id, name }))} />
     </div>
   );

@@ -4,7 +4,12 @@ import { Button } from "@/components/ui/Button";
 import { Dialog } from "@/components/ui/Dialog";
 import { Markdown } from "@/components/ui/Markdown";
 
-type Props = { title: string; markdown: string; version: number; examples: { url: string; caption: string }[] };
+type Props = {
+  title: string;
+  markdown: string;
+  version: number;
+  examples: { url: string; caption: string }[];
+};
 
 /** The brief with its example pictures, before anything is accepted. */
 export function BriefDialog({ title, markdown, version, examples }: Props) {
@@ -21,7 +26,9 @@ export function BriefDialog({ title, markdown, version, examples }: Props) {
           ))}
         </ul>
       ) : null}
-      <p className="text-muted mt-5 text-sm">Version {version}. Your work is judged by the version shown when you claim a picture.</p>
+      <p className="text-muted mt-5 text-sm">
+        Version {version}. Your work is judged by the version shown when you claim a picture.
+      </p>
     </Dialog>
   );
 }

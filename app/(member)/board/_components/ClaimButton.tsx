@@ -16,7 +16,11 @@ export function ClaimButton({ batchId, openImages, sensitiveNote }: Props) {
   async function claim(): Promise<string | undefined> {
     setPending(true);
     try {
-      const answer = await fetch("/api/claims", { method: "POST", headers: { "content-type": "application/json" }, body: JSON.stringify({ batchId }) });
+      const answer = await fetch("/api/claims", {
+        method: "POST",
+        headers: { "content-type": "application/json" },
+        body: JSON.stringify({ batchId }),
+      });
       const body = (await answer.json()) as { claimId?: string; detail?: string };
       if (answer.ok) {
         router.push(`/desk/${body.claimId}`);

@@ -24,7 +24,11 @@ export const metadata: Metadata = { title: "Dispute" };
 
 type Props = { params: Promise<{ disputeId: string }> };
 
-const TITLE = { score: "contests a score", image: "contests the result of", split: "No agreement on" } as const;
+const TITLE = {
+  score: "contests a score",
+  image: "contests the result of",
+  split: "No agreement on",
+} as const;
 const OUTCOME = { keep: "kept as merged", pick: "one submission picked", redraw: "redrawn" } as const;
 
 /** A dispute with all its evidence on one screen: picture, all outlines, brief, history and money at stake. */
@@ -46,7 +50,11 @@ export default async function DisputePage({ params }: Props) {
   return (
     <>
       <PageHeader
-        title={dispute.kind === "split" ? `${TITLE.split} ${image.fileName}` : `${opener?.name ?? "Somebody"} ${TITLE[dispute.kind]} ${image.fileName}`}
+        title={
+          dispute.kind === "split"
+            ? `${TITLE.split} ${image.fileName}`
+            : `${opener?.name ?? "Somebody"} ${TITLE[dispute.kind]} ${image.fileName}`
+        }
         crumbs={[{ href: "/docket", label: "Docket" }]}
         lead={
           <>
@@ -55,20 +63,29 @@ export default async function DisputePage({ params }: Props) {
             </Link>
           </>
         }
-        marks={<StateMark state={dispute.status === "open" ? "disputed" : "agreed"}>{dispute.status}</StateMark>}
+        marks={
+          <StateMark state={dispute.status === "open" ? "disputed" : "agreed"}>{dispute.status}</StateMark>
+        }
       />
       <div className="grid gap-6">
-        <Notice kind={dispute.status === "open" ? "caution" : "info"} title={dispute.kind === "split" ? "Why it is here" : "In the words of who contests"}>
+        <Notice
+          kind={dispute.status === "open" ? "caution" : "info"}
+          title={dispute.kind === "split" ? "Why it is here" : "In the words of who contests"}
+        >
           {dispute.reason}
         </Notice>
         {dispute.status === "decided" && dispute.decision ? (
-          <Notice title={`Decided: ${OUTCOME[dispute.decision.outcome]}, by ${decider?.name ?? "an admin"}`}>{dispute.decisionReason}</Notice>
+          <Notice title={`Decided: ${OUTCOME[dispute.decision.outcome]}, by ${decider?.name ?? "an admin"}`}>
+            {dispute.decisionReason}
+          </Notice>
         ) : null}
         <Stats>
           <Stat caption="At stake" note="the most that can move">
             <Money cents={dispute.stakeCents} />
           </Stat>
-          <Stat caption="Agreement" note={`target ${formatPercent(batch.agreementTarget)}`}>{evidence.run ? formatPercent(evidence.run.agreement) : "–"}</Stat>
+          <Stat caption="Agreement" note={`target ${formatPercent(batch.agreementTarget)}`}>
+            {evidence.run ? formatPercent(evidence.run.agreement) : "–"}
+          </Stat>
           <Stat caption="Opened">
             <When at={dispute.openedAtMs} form="relative" />
           </Stat>
@@ -77,7 +94,15 @@ export default async function DisputePage({ params }: Props) {
           </Stat>
         </Stats>
         <Sheet title="Outlines" lead={evidence.run?.result.reason}>
-          <EvidenceView imageUrl={`/api/images/${image.id}/working`} imageName={image.fileName} width={image.width} height={image.height} classes={evidence.classes} layers={evidence.layers} heat={evidence.heat} />
+          <EvidenceView
+            imageUrl={`/api/images/${image.id}/working`}
+            imageName={image.fileName}
+            width={image.width}
+            height={image.height}
+            classes={evidence.classes}
+            layers={evidence.layers}
+            heat={evidence.heat}
+          />
         </Sheet>
         <div className="grid items-start gap-6 lg:grid-cols-2">
           <Sheet title="Submissions">
@@ -94,12 +119,26 @@ export default async function DisputePage({ params }: Props) {
                   <Row key={submission.id}>
                     <RowHead>
                       {evidence.nameOf(submission.annotatorId)}
-                      {submission.id === dispute.submissionId ? <span className="text-muted block text-sm font-normal">contested</span> : null}
+                      {submission.id === dispute.submissionId ? (
+                        <span className="text-muted block text-sm font-normal">contested</span>
+                      ) : null}
                     </RowHead>
-                    <Cell label="Instances" figure>{submission.document.instances.length}</Cell>
-                    <Cell label="Time" figure>{Math.round(submission.activeSeconds)} s</Cell>
-                    <Cell label="Score" figure>{submission.quality === null ? (evidence.run?.result.scores.find((score) => score.annotatorId === submission.annotatorId)?.quality.toFixed(2) ?? "–") : submission.quality.toFixed(2)}</Cell>
-                    <Cell label="Pay" figure>{submission.payCents === null ? "–" : <Money cents={submission.payCents} />}</Cell>
+                    <Cell label="Instances" figure>
+                      {submission.document.instances.length}
+                    </Cell>
+                    <Cell label="Time" figure>
+                      {Math.round(submission.activeSeconds)} s
+                    </Cell>
+                    <Cell label="Score" figure>
+                      {submission.quality === null
+                        ? (evidence.run?.result.scores
+                            .find((score) => score.annotatorId === submission.annotatorId)
+                            ?.quality.toFixed(2) ?? "–")
+                        : submission.quality.toFixed(2)}
+                    </Cell>
+                    <Cell label="Pay" figure>
+                      {submission.payCents === null ? "–" : <Money cents={submission.payCents} />}
+                    </Cell>
                   </Row>
                 ))}
               </TableBody>
@@ -110,7 +149,10 @@ export default async function DisputePage({ params }: Props) {
               {listRuns(db, image.id).map((run) => (
                 <li key={run.id} className="flex flex-wrap justify-between gap-2 py-2">
                   <span>
-                    {run.origin === "decision" ? "Decided by an admin" : `Merged ${run.submissionIds.length} submissions`}: {run.verdict}, {formatPercent(run.agreement)}
+                    {run.origin === "decision"
+                      ? "Decided by an admin"
+                      : `Merged ${run.submissionIds.length} submissions`}
+                    : {run.verdict}, {formatPercent(run.agreement)}
                   </span>
                   <span className="text-muted text-sm">
                     <When at={run.createdAtMs} />
@@ -140,7 +182,14 @@ export default async function DisputePage({ params }: Props) {
           )}
         </Sheet>
         {dispute.status === "open" && dispute.openedBy !== actor.id ? (
-          <DecisionForm disputeId={dispute.id} submissions={evidence.submissions.map((submission) => ({ id: submission.id, label: evidence.nameOf(submission.annotatorId), instances: submission.document.instances.length }))} />
+          <DecisionForm
+            disputeId={dispute.id}
+            submissions={evidence.submissions.map((submission) => ({
+              id: submission.id,
+              label: evidence.nameOf(submission.annotatorId),
+              instances: submission.document.instances.length,
+            }))}
+          />
         ) : null}
       </div>
     </>

@@ -7,13 +7,25 @@ import { ConfirmDialog } from "@/components/ui/ConfirmDialog";
 import { TextArea } from "@/components/ui/TextArea";
 import { suspend } from "../actions";
 
-export function SuspendButton({ userId, name, isSuspended }: { userId: string; name: string; isSuspended: boolean }) {
+export function SuspendButton({
+  userId,
+  name,
+  isSuspended,
+}: {
+  userId: string;
+  name: string;
+  isSuspended: boolean;
+}) {
   const router = useRouter();
   const [reason, setReason] = useState("");
   return (
     <ConfirmDialog
       title={isSuspended ? `Lift the suspension of ${name}?` : `Suspend ${name}?`}
-      consequence={isSuspended ? "The account works again at once." : "All sessions end at once. Earned money stays theirs and is paid out; a person reviews an appeal."}
+      consequence={
+        isSuspended
+          ? "The account works again at once."
+          : "All sessions end at once. Earned money stays theirs and is paid out; a person reviews an appeal."
+      }
       kind={isSuspended ? "ordinary" : "danger"}
       confirmLabel={isSuspended ? "Lift it" : "Suspend"}
       trigger={
@@ -27,7 +39,12 @@ export function SuspendButton({ userId, name, isSuspended }: { userId: string; n
         router.refresh();
       }}
     >
-      <TextArea label="Reason, for the audit log" rows={3} value={reason} onChange={(event) => setReason(event.currentTarget.value)} />
+      <TextArea
+        label="Reason, for the audit log"
+        rows={3}
+        value={reason}
+        onChange={(event) => setReason(event.currentTarget.value)}
+      />
     </ConfirmDialog>
   );
 }

@@ -30,7 +30,13 @@ export function InviteForm({ teamId }: { teamId: string }) {
       ) : null}
       <input type="hidden" name="teamId" value={teamId} />
       <div className="grid items-start gap-4 sm:grid-cols-[1fr_10rem_auto]">
-        <TextInput label="E-mail" name="email" type="email" required error={result && !result.ok ? result.fields.email : undefined} />
+        <TextInput
+          label="E-mail"
+          name="email"
+          type="email"
+          required
+          error={result && !result.ok ? result.fields.email : undefined}
+        />
         <Select label="Role" name="role" defaultValue="editor" options={ROLES} />
         <SubmitButton kind="quiet" className="sm:mt-7">
           Invite
@@ -67,7 +73,15 @@ export function MemberRole({ teamId, userId, name, role }: MemberProps) {
           if (problem) toast.error(problem);
         }}
       />
-      <ConfirmDialog title={`Remove ${name}?`} consequence="They lose sight of the team's batches at once. You can invite them again." kind="danger" confirmLabel="Remove" open={asking} onOpenChange={setAsking} onConfirm={() => change("remove")} />
+      <ConfirmDialog
+        title={`Remove ${name}?`}
+        consequence="They lose sight of the team's batches at once. You can invite them again."
+        kind="danger"
+        confirmLabel="Remove"
+        open={asking}
+        onOpenChange={setAsking}
+        onConfirm={() => change("remove")}
+      />
     </>
   );
 }

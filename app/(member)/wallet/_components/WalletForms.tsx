@@ -28,12 +28,21 @@ export function TopUpForm({ teamId }: { teamId: string }) {
         </Notice>
       ) : null}
       <div className="flex flex-wrap items-end gap-3">
-        <MoneyInput label="Top up by card" className="grow" defaultCents={10_000} minCents={50} maxCents={5_000_000} onCentsChange={setCents} />
+        <MoneyInput
+          label="Top up by card"
+          className="grow"
+          defaultCents={10_000}
+          minCents={50}
+          maxCents={5_000_000}
+          onCentsChange={setCents}
+        />
         <Button kind="primary" pending={pending} disabled={cents === undefined} onClick={go}>
           Pay by card
         </Button>
       </div>
-      <p className="text-muted text-sm">Paid through Stripe. The money is here as soon as the payment is confirmed.</p>
+      <p className="text-muted text-sm">
+        Paid through Stripe. The money is here as soon as the payment is confirmed.
+      </p>
     </div>
   );
 }
@@ -55,7 +64,13 @@ export function RefundDialog({ teamId, balanceCents }: { teamId: string; balance
         router.refresh();
       }}
     >
-      <MoneyInput label="Amount" defaultCents={balanceCents} minCents={1} maxCents={balanceCents} onCentsChange={setCents} />
+      <MoneyInput
+        label="Amount"
+        defaultCents={balanceCents}
+        minCents={1}
+        maxCents={balanceCents}
+        onCentsChange={setCents}
+      />
     </ConfirmDialog>
   );
 }

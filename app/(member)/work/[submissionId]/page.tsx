@@ -19,7 +19,13 @@ export const metadata: Metadata = { title: "Your score" };
 
 type Props = { params: Promise<{ submissionId: string }> };
 
-const MARK: Record<InstanceOutcome, NonNullable<EvidenceInstance["mark"]>> = { agreed: "agreed", loose: "waits", "wrong-class": "waits", unsupported: "disputed", duplicate: "disputed" };
+const MARK: Record<InstanceOutcome, NonNullable<EvidenceInstance["mark"]>> = {
+  agreed: "agreed",
+  loose: "waits",
+  "wrong-class": "waits",
+  unsupported: "disputed",
+  duplicate: "disputed",
+};
 
 /** One submission: own outlines against the agreed ones, each with the reason, and the way to contest it. */
 export default async function WorkItemPage({ params }: Props) {
@@ -34,7 +40,11 @@ export default async function WorkItemPage({ params }: Props) {
   const run = submission.scoredRunId ? findRun(db, submission.scoredRunId) : undefined;
   const score = run?.result.scores.find((entry) => entry.annotatorId === actor.id);
   const outcomes = new Map(score?.instances.map((entry) => [entry.instanceId, entry]));
-  const disputes = listDisputesOf(db, batch.id).filter((dispute) => dispute.submissionId === submission.id || (dispute.imageId === image.id && dispute.submissionId === null));
+  const disputes = listDisputesOf(db, batch.id).filter(
+    (dispute) =>
+      dispute.submissionId === submission.id ||
+      (dispute.imageId === image.id && dispute.submissionId === null),
+  );
   const open = disputes.find((dispute) => dispute.status === "open");
   const decided = disputes.find((dispute) => dispute.status === "decided");
   const closesAtMs = run ? run.createdAtMs + batch.disputeWindowHours * 3_600_000 : 0;
@@ -50,23 +60,27 @@ export default async function WorkItemPage({ params }: Props) {
       <div className="grid gap-6">
         {open ? (
           <Notice kind="caution" title="On the docket">
-            {open.openedBy === actor.id ? `You wrote: ${open.reason}` : open.reason} A decision is due <When at={open.dueAtMs} form="relative" />.
+            {open.openedBy === actor.id ? `You wrote: ${open.reason}` : open.reason} A decision is due{" "}
+            <When at={open.dueAtMs} form="relative" />.
           </Notice>
         ) : null}
-        {decided ? (
-          <Notice title="Decided by an admin">{decided.decisionReason}</Notice>
-        ) : null}
+        {decided ? <Notice title="Decided by an admin">{decided.decisionReason}</Notice> : null}
         {score ? (
           <Stats>
             <Stat caption="Score">{score.quality.toFixed(2)}</Stat>
-            <Stat caption="Pay">{submission.payCents === null ? "–" : <Money cents={submission.payCents} />}</Stat>
+            <Stat caption="Pay">
+              {submission.payCents === null ? "–" : <Money cents={submission.payCents} />}
+            </Stat>
             <Stat caption="Agreed, missed, unsupported">
               {score.found} · {score.missed} · {score.spurious}
             </Stat>
             <Stat caption="Mean overlap">{score.meanIou === null ? "–" : score.meanIou.toFixed(2)}</Stat>
           </Stats>
         ) : (
-          <Notice title="Waiting for the others">Your score and pay follow when enough people have drawn this picture, at the latest when the batch is closed.</Notice>
+          <Notice title="Waiting for the others">
+            Your score and pay follow when enough people have drawn this picture, at the latest when the batch
+            is closed.
+          </Notice>
         )}
         <Sheet title="Your outlines and the agreed ones">
           <EvidenceView
@@ -74,7 +88,12 @@ export default async function WorkItemPage({ params }: Props) {
             imageName={image.fileName}
             width={image.width}
             height={image.height}
-            classes={listClasses(db, batch.id).map(({ id, number, name, colour }) => ({ id, number, name, colour }))}
+            classes={listClasses(db, batch.id).map(({ id, number, name, colour }) => ({
+              id,
+              number,
+              name,
+              colour,
+            }))}
             layers={[
               {
                 id: "own",
@@ -82,10 +101,28 @@ export default async function WorkItemPage({ params }: Props) {
                 kind: "own",
                 instances: submission.document.instances.map((instance) => {
                   const outcome = outcomes.get(instance.id);
-                  return { id: instance.id, classId: instance.classId, shape: instance.shape, ...(outcome && { note: outcome.why, mark: MARK[outcome.outcome] }) };
+                  return {
+                    id: instance.id,
+                    classId: instance.classId,
+                    shape: instance.shape,
+                    ...(outcome && { note: outcome.why, mark: MARK[outcome.outcome] }),
+                  };
                 }),
               },
-              ...(run ? [{ id: "agreed", label: run.origin === "decision" ? "Decided" : "Agreed", kind: "agreed" as const, instances: run.result.agreed.map((instance, index) => ({ id: String(index), classId: instance.classId, shape: instance.shape })) }] : []),
+              ...(run
+                ? [
+                    {
+                      id: "agreed",
+                      label: run.origin === "decision" ? "Decided" : "Agreed",
+                      kind: "agreed" as const,
+                      instances: run.result.agreed.map((instance, index) => ({
+                        id: String(index),
+                        classId: instance.classId,
+                        shape: instance.shape,
+                      })),
+                    },
+                  ]
+                : []),
             ]}
           />
         </Sheet>

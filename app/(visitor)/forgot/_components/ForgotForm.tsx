@@ -19,7 +19,14 @@ export function ForgotForm() {
   return (
     <Sheet>
       <form action={submit} className="grid gap-4">
-        <TextInput label="E-mail" name="email" type="email" autoComplete="email" required error={result ? (result.fields.email ?? result.message) : undefined} />
+        <TextInput
+          label="E-mail"
+          name="email"
+          type="email"
+          autoComplete="email"
+          required
+          error={result ? (result.fields.email ?? result.message) : undefined}
+        />
         <SubmitButton className="justify-self-start">Send the link</SubmitButton>
       </form>
     </Sheet>

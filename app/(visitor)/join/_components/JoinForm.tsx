@@ -36,16 +36,57 @@ export function JoinForm({ role: initialRole }: { role: "requester" | "annotator
           onValueChange={(value) => setRole(value as typeof role)}
           error={errors.role}
           options={[
-            { value: "requester", title: "I need labels", text: "Post pictures, set quality and pay, download the agreed labels." },
-            { value: "annotator", title: "I draw labels", text: "See pay and time before you start, draw, and be paid for what agrees." },
+            {
+              value: "requester",
+              title: "I need labels",
+              text: "Post pictures, set quality and pay, download the agreed labels.",
+            },
+            {
+              value: "annotator",
+              title: "I draw labels",
+              text: "See pay and time before you start, draw, and be paid for what agrees.",
+            },
           ]}
         />
-        <TextInput label="Name" name="name" autoComplete="name" required error={errors.name} value={typed.name} onChange={(event) => setTyped({ ...typed, name: event.currentTarget.value })} />
-        <TextInput label="E-mail" name="email" type="email" autoComplete="email" required error={errors.email} value={typed.email} onChange={(event) => setTyped({ ...typed, email: event.currentTarget.value })} />
+        <TextInput
+          label="Name"
+          name="name"
+          autoComplete="name"
+          required
+          error={errors.name}
+          value={typed.name}
+          onChange={(event) => setTyped({ ...typed, name: event.currentTarget.value })}
+        />
+        <TextInput
+          label="E-mail"
+          name="email"
+          type="email"
+          autoComplete="email"
+          required
+          error={errors.email}
+          value={typed.email}
+          onChange={(event) => setTyped({ ...typed, email: event.currentTarget.value })}
+        />
         {role === "requester" ? (
-          <TextInput label="Team or organisation" name="teamName" optional hint="Colleagues that you invite share its batches." autoComplete="organization" value={typed.teamName} onChange={(event) => setTyped({ ...typed, teamName: event.currentTarget.value })} />
+          <TextInput
+            label="Team or organisation"
+            name="teamName"
+            optional
+            hint="Colleagues that you invite share its batches."
+            autoComplete="organization"
+            value={typed.teamName}
+            onChange={(event) => setTyped({ ...typed, teamName: event.currentTarget.value })}
+          />
         ) : null}
-        <TextInput label="Password" name="password" type="password" autoComplete="new-password" optional hint="Ten characters or more. Leave it empty to sign in by mail links only." error={errors.password} />
+        <TextInput
+          label="Password"
+          name="password"
+          type="password"
+          autoComplete="new-password"
+          optional
+          hint="Ten characters or more. Leave it empty to sign in by mail links only."
+          error={errors.password}
+        />
         <SubmitButton className="justify-self-start">Create the account</SubmitButton>
       </form>
     </Sheet>

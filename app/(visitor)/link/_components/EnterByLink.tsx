@@ -18,7 +18,12 @@ export function EnterByLink({ secret, label = "Sign in" }: { secret: string; lab
     });
   if (failed) {
     return (
-      <Notice kind="danger" live title="This link no longer works" action={<Link href="/sign-in">Ask for a new one</Link>}>
+      <Notice
+        kind="danger"
+        live
+        title="This link no longer works"
+        action={<Link href="/sign-in">Ask for a new one</Link>}
+      >
         It was used already, or it is too old.
       </Notice>
     );

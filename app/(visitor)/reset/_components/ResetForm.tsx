@@ -26,7 +26,15 @@ export function ResetForm({ secret }: { secret: string }) {
           </Notice>
         ) : null}
         <input type="hidden" name="secret" value={secret} />
-        <TextInput label="New password" name="password" type="password" autoComplete="new-password" hint="Ten characters or more; a few words in a row are easy to remember." required error={result?.fields.password} />
+        <TextInput
+          label="New password"
+          name="password"
+          type="password"
+          autoComplete="new-password"
+          hint="Ten characters or more; a few words in a row are easy to remember."
+          required
+          error={result?.fields.password}
+        />
         <SubmitButton className="justify-self-start">Set it</SubmitButton>
       </form>
     </Sheet>

@@ -55,7 +55,13 @@ export function SignInForms({ next, isDemo }: Props) {
             </Notice>
           ) : null}
           <TextInput label="E-mail" name="email" type="email" autoComplete="username" required />
-          <TextInput label="Password" name="password" type="password" autoComplete="current-password" required />
+          <TextInput
+            label="Password"
+            name="password"
+            type="password"
+            autoComplete="current-password"
+            required
+          />
           <div className="flex flex-wrap items-center justify-between gap-3">
             <Button kind="primary" type="submit" pending={pending}>
               Sign in
@@ -79,7 +85,9 @@ export function SignInForms({ next, isDemo }: Props) {
               type="email"
               autoComplete="email"
               required
-              error={linkResult && !linkResult.ok ? (linkResult.fields.email ?? linkResult.message) : undefined}
+              error={
+                linkResult && !linkResult.ok ? (linkResult.fields.email ?? linkResult.message) : undefined
+              }
             />
             <SubmitButton kind="quiet" className="justify-self-start">
               Send me a link

@@ -31,16 +31,24 @@ export function BatchActions({ batch, remainingCents, live, openDisputes }: Prop
     });
   return (
     <>
-      <Button pending={pending} icon={isPaused ? <Play aria-hidden className="size-4" /> : <Pause aria-hidden className="size-4" />} onClick={() => setPaused(!isPaused)}>
+      <Button
+        pending={pending}
+        icon={isPaused ? <Play aria-hidden className="size-4" /> : <Pause aria-hidden className="size-4" />}
+        onClick={() => setPaused(!isPaused)}
+      >
         {isPaused ? "Go on" : "Pause"}
       </Button>
       <ConfirmDialog
         title={`Close “${batch.title}”?`}
         consequence={
           <>
-            Nobody can draw in it any more. What was handed in but is not settled is paid as it stands; what then remains of <Money cents={remainingCents} /> goes back to your wallet. This cannot be undone. The releases stay.
+            Nobody can draw in it any more. What was handed in but is not settled is paid as it stands; what
+            then remains of <Money cents={remainingCents} /> goes back to your wallet. This cannot be undone.
+            The releases stay.
             {live > 0 ? ` ${live} ${live === 1 ? "person is" : "people are"} drawing at the moment.` : ""}
-            {openDisputes > 0 ? ` ${openDisputes} ${openDisputes === 1 ? "dispute is" : "disputes are"} open.` : ""}
+            {openDisputes > 0
+              ? ` ${openDisputes} ${openDisputes === 1 ? "dispute is" : "disputes are"} open.`
+              : ""}
           </>
         }
         kind="danger"

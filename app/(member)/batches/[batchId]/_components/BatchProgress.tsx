@@ -35,7 +35,11 @@ export function BatchProgress({ batchId, initial }: { batchId: string; initial: 
   const waiting = progress.images - progress.settled - progress.short - progress.split;
   return (
     <section aria-label="Progress" className="grid gap-3">
-      <Progress label="Agreed" value={progress.images === 0 ? 0 : progress.settled / progress.images} detail={`${progress.settled} of ${progress.images} pictures`} />
+      <Progress
+        label="Agreed"
+        value={progress.images === 0 ? 0 : progress.settled / progress.images}
+        detail={`${progress.settled} of ${progress.images} pictures`}
+      />
       <div className="flex flex-wrap items-center gap-2" aria-live="polite">
         <StateMark state="agreed">{progress.settled} settled</StateMark>
         {progress.short > 0 ? <StateMark state="waits">{progress.short} short</StateMark> : null}
@@ -53,5 +57,9 @@ export function BatchProgress({ batchId, initial }: { batchId: string; initial: 
 }
 
 function isBusy(status: BatchStatus): boolean {
-  return status.settling + status.proposing + status.checking > 0 || status.learning || status.releases.some((release) => release.status === "building");
+  return (
+    status.settling + status.proposing + status.checking > 0 ||
+    status.learning ||
+    status.releases.some((release) => release.status === "building")
+  );
 }

@@ -33,9 +33,16 @@ export function ImageGrid({ batchId, images }: { batchId: string; images: Tile[]
     <>
       <div className="mb-4 flex flex-wrap gap-2" role="group" aria-label="Show">
         {FILTERS.map(({ value, label }) => {
-          const count = value === "all" ? images.length : images.filter((image) => image.consensusState === value).length;
+          const count =
+            value === "all" ? images.length : images.filter((image) => image.consensusState === value).length;
           return (
-            <Button key={value} size="small" kind={filter === value ? "primary" : "quiet"} aria-pressed={filter === value} onClick={() => setFilter(value)}>
+            <Button
+              key={value}
+              size="small"
+              kind={filter === value ? "primary" : "quiet"}
+              aria-pressed={filter === value}
+              onClick={() => setFilter(value)}
+            >
               {label} <span className="font-figures">{count}</span>
             </Button>
           );
@@ -46,7 +53,12 @@ export function ImageGrid({ batchId, images }: { batchId: string; images: Tile[]
         {matching.slice(0, shown).map((image) => (
           <li key={image.id}>
             <Link href={`/batches/${batchId}/images/${image.id}`} className="group grid gap-1.5">
-              <img src={`/api/images/${image.id}/thumb`} alt="" loading="lazy" className="bg-sunk group-hover:outline-ink aspect-4/3 w-full object-cover group-hover:outline-2" />
+              <img
+                src={`/api/images/${image.id}/thumb`}
+                alt=""
+                loading="lazy"
+                className="bg-sunk group-hover:outline-ink aspect-4/3 w-full object-cover group-hover:outline-2"
+              />
               <span className="truncate text-sm font-semibold group-hover:underline">{image.fileName}</span>
               <span className="flex flex-wrap items-center gap-2 text-sm">
                 <ImageMark state={image.consensusState} />

@@ -23,7 +23,15 @@ type Release = {
 };
 
 /** Dataset releases: ask for one, see it being built, download it. */
-export function Releases({ batchId, releases, settled }: { batchId: string; releases: Release[]; settled: number }) {
+export function Releases({
+  batchId,
+  releases,
+  settled,
+}: {
+  batchId: string;
+  releases: Release[];
+  settled: number;
+}) {
   const router = useRouter();
   const [pending, startTransition] = useTransition();
   const isBuilding = releases.some((release) => release.status === "building");
@@ -43,7 +51,11 @@ export function Releases({ batchId, releases, settled }: { batchId: string; rele
         </Button>
       }
     >
-      {releases.length === 0 ? <p className="text-muted">{settled === 0 ? "Once a picture is settled, you can build a release." : "No release yet."}</p> : null}
+      {releases.length === 0 ? (
+        <p className="text-muted">
+          {settled === 0 ? "Once a picture is settled, you can build a release." : "No release yet."}
+        </p>
+      ) : null}
       <ul className="divide-line divide-y">
         {releases.map((release) => (
           <li key={release.id} className="flex flex-wrap items-center justify-between gap-x-6 gap-y-2 py-3">
@@ -51,9 +63,15 @@ export function Releases({ batchId, releases, settled }: { batchId: string; rele
               <span className="font-semibold">Release {release.number}</span>{" "}
               <span className="text-muted text-sm">
                 <When at={release.createdAtMs} />
-                {release.status === "ready" ? ` · ${release.imageCount} pictures, ${release.instanceCount} instances, ${((release.byteSize ?? 0) / 1e6).toFixed(1)} MB` : ""}
+                {release.status === "ready"
+                  ? ` · ${release.imageCount} pictures, ${release.instanceCount} instances, ${((release.byteSize ?? 0) / 1e6).toFixed(1)} MB`
+                  : ""}
               </span>
-              {release.sha256 ? <span className="text-muted font-figures block text-xs wrap-anywhere">SHA-256 {release.sha256}</span> : null}
+              {release.sha256 ? (
+                <span className="text-muted font-figures block text-xs wrap-anywhere">
+                  SHA-256 {release.sha256}
+                </span>
+              ) : null}
             </span>
             {release.status === "ready" ? (
               <a className={buttonLook("quiet", "small")} href={`/api/releases/${release.id}/file`} download>
@@ -61,8 +79,14 @@ export function Releases({ batchId, releases, settled }: { batchId: string; rele
                 Download
               </a>
             ) : null}
-            {release.status === "building" ? <Progress label="Building" value={null} className="w-48" /> : null}
-            {release.status === "failed" ? <span className="text-disputed-ink text-sm">It could not be built: {release.failure}. Try again.</span> : null}
+            {release.status === "building" ? (
+              <Progress label="Building" value={null} className="w-48" />
+            ) : null}
+            {release.status === "failed" ? (
+              <span className="text-disputed-ink text-sm">
+                It could not be built: {release.failure}. Try again.
+              </span>
+            ) : null}
           </li>
         ))}
       </ul>

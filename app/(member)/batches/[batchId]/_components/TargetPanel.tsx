@@ -35,17 +35,29 @@ export function TargetPanel({ batchId, target, kMax, capCents, feeBps, agreement
       router.refresh();
     });
   return (
-    <Sheet title="Agreement target" lead="What the pictures merged so far would be at another target. Settled pictures keep their result.">
+    <Sheet
+      title="Agreement target"
+      lead="What the pictures merged so far would be at another target. Settled pictures keep their result."
+    >
       <label htmlFor="target" className="font-semibold">
         Target: <span className="font-figures">{value} %</span>
       </label>
-      <input id="target" type="range" min={40} max={95} value={value} onChange={(event) => setValue(Number(event.currentTarget.value))} className="accent-agreed mt-2 w-full" />
+      <input
+        id="target"
+        type="range"
+        min={40}
+        max={95}
+        value={value}
+        onChange={(event) => setValue(Number(event.currentTarget.value))}
+        className="accent-agreed mt-2 w-full"
+      />
       <p className="mt-3" aria-live="polite">
         {agreements.length === 0 ? (
           "No picture was merged yet."
         ) : (
           <>
-            {wouldSettle.length} of {agreements.length} would be settled; {wouldAsk.length} would ask one more annotator, about <Money cents={extraCents} />.
+            {wouldSettle.length} of {agreements.length} would be settled; {wouldAsk.length} would ask one more
+            annotator, about <Money cents={extraCents} />.
           </>
         )}
       </p>

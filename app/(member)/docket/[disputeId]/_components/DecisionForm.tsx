@@ -30,8 +30,16 @@ export function DecisionForm({ disputeId, submissions }: Props) {
           onValueChange={setChoice}
           options={[
             { value: "keep", title: "what was merged", text: "The agreement stands as it is." },
-            ...submissions.map((submission) => ({ value: submission.id, title: `what ${submission.label} drew`, text: `${submission.instances} instances, taken as they are.` })),
-            { value: "redraw", title: "drawn anew by you", text: "Opens the picture on the desk; you give the reason there." },
+            ...submissions.map((submission) => ({
+              value: submission.id,
+              title: `what ${submission.label} drew`,
+              text: `${submission.instances} instances, taken as they are.`,
+            })),
+            {
+              value: "redraw",
+              title: "drawn anew by you",
+              text: "Opens the picture on the desk; you give the reason there.",
+            },
           ]}
         />
         {choice === "redraw" ? (
@@ -40,7 +48,15 @@ export function DecisionForm({ disputeId, submissions }: Props) {
           </ButtonLink>
         ) : (
           <>
-            <TextArea label="Reason" hint="Both sides read it; earlier decisions are cited from it." rows={4} maxLength={2000} value={reason} onChange={(event) => setReason(event.currentTarget.value)} error={reason !== "" && !isLongEnough ? "A sentence, please." : undefined} />
+            <TextArea
+              label="Reason"
+              hint="Both sides read it; earlier decisions are cited from it."
+              rows={4}
+              maxLength={2000}
+              value={reason}
+              onChange={(event) => setReason(event.currentTarget.value)}
+              error={reason !== "" && !isLongEnough ? "A sentence, please." : undefined}
+            />
             <ConfirmDialog
               title="Decide so?"
               consequence="Pay of everybody on this picture is set right by linked postings, and all concerned get your reason by mail. A decision is not undone; it can be appealed."
@@ -52,7 +68,10 @@ export function DecisionForm({ disputeId, submissions }: Props) {
               }
               onConfirm={async () => {
                 try {
-                  const decision = choice === "keep" ? { outcome: "keep", reason } : { outcome: "pick", submissionId: choice, reason };
+                  const decision =
+                    choice === "keep"
+                      ? { outcome: "keep", reason }
+                      : { outcome: "pick", submissionId: choice, reason };
                   await callJson("POST", `/api/disputes/${disputeId}/decision`, decision);
                 } catch (error) {
                   return error instanceof Error ? error.message : "That did not work.";

@@ -18,7 +18,9 @@ export function ContestScore({ submissionId, closesAtMs }: { submissionId: strin
       title="Contest this score?"
       consequence={
         <>
-          An admin looks at your outlines, the others' and the brief as it was when you claimed the picture, and writes a reason for the decision. Contesting never counts against you. It is possible until <When at={closesAtMs} />.
+          An admin looks at your outlines, those of the others, and the brief as it was when you claimed the
+          picture, and writes a reason for the decision. Contesting never counts against you. It is possible
+          until <When at={closesAtMs} />.
         </>
       }
       confirmLabel="Contest it"
@@ -30,7 +32,13 @@ export function ContestScore({ submissionId, closesAtMs }: { submissionId: strin
         router.refresh();
       }}
     >
-      <TextArea label="What is wrong with it?" rows={4} maxLength={2000} value={reason} onChange={(event) => setReason(event.currentTarget.value)} />
+      <TextArea
+        label="What is wrong with it?"
+        rows={4}
+        maxLength={2000}
+        value={reason}
+        onChange={(event) => setReason(event.currentTarget.value)}
+      />
     </ConfirmDialog>
   );
 }

@@ -9,11 +9,14 @@ import { planUploads } from "@/lib/market/images/planUploads";
 /** The images of a batch with their state, in upload order. */
 export const GET = route({ role: ["requester", "admin"], params: BatchParams }, ({ actor, params }) => {
   const batch = requireBatch(getDb(), params.batchId, actor);
-  return ok({ images: listImages(getDb(), batch.id, { limit: 1000 }).map((image) => ImageView.parse(image)) });
+  return ok({
+    images: listImages(getDb(), batch.id, { limit: 1000 }).map((image) => ImageView.parse(image)),
+  });
 });
 
 /** Announces files; the answer says for each what to do. 500 files at most. */
 export const POST = route(
   { role: "requester", params: BatchParams, body: PlanUploadsInput },
-  async ({ actor, params, body }) => ok({ plans: await planUploads({ actor, nowMs: nowMs(), ...params, ...body }) }),
+  async ({ actor, params, body }) =>
+    ok({ plans: await planUploads({ actor, nowMs: nowMs(), ...params, ...body }) }),
 );

@@ -38,7 +38,12 @@ export default async function ImagePage({ params }: Props) {
   const dispute = findOpenDispute(db, imageId);
   const role = getTeamRole(db, batch.teamId, actor.id);
   const isInWindow = run !== undefined && nowMs() <= run.createdAtMs + batch.disputeWindowHours * 3_600_000;
-  const mayContest = (role === "editor" || role === "owner") && image.consensusState === "settled" && run?.origin === "engine" && isInWindow && !dispute;
+  const mayContest =
+    (role === "editor" || role === "owner") &&
+    image.consensusState === "settled" &&
+    run?.origin === "engine" &&
+    isInWindow &&
+    !dispute;
   return (
     <>
       <PageHeader
@@ -60,9 +65,14 @@ export default async function ImagePage({ params }: Props) {
           <>
             <p className="max-w-prose">{run.result.reason}</p>
             <Stats>
-              <Stat caption="Agreement" note={`target ${formatPercent(batch.agreementTarget)}`}>{formatPercent(run.agreement)}</Stat>
+              <Stat caption="Agreement" note={`target ${formatPercent(batch.agreementTarget)}`}>
+                {formatPercent(run.agreement)}
+              </Stat>
               <Stat caption="Agreed instances">{run.result.agreed.length}</Stat>
-              <Stat caption="Expected quality" note={`95 % interval ${run.result.predictedQuality.low.toFixed(2)} to ${run.result.predictedQuality.high.toFixed(2)}`}>
+              <Stat
+                caption="Expected quality"
+                note={`95 % interval ${run.result.predictedQuality.low.toFixed(2)} to ${run.result.predictedQuality.high.toFixed(2)}`}
+              >
                 {run.result.predictedQuality.value.toFixed(2)}
               </Stat>
               <Stat caption="Submissions">{evidence.submissions.length}</Stat>
@@ -78,11 +88,22 @@ export default async function ImagePage({ params }: Props) {
           </Sheet>
         ) : (
           <Sheet title="Outlines">
-            <EvidenceView imageUrl={`/api/images/${imageId}/working`} imageName={image.fileName} width={image.width} height={image.height} classes={evidence.classes} layers={evidence.layers} heat={evidence.heat} />
+            <EvidenceView
+              imageUrl={`/api/images/${imageId}/working`}
+              imageName={image.fileName}
+              width={image.width}
+              height={image.height}
+              classes={evidence.classes}
+              layers={evidence.layers}
+              heat={evidence.heat}
+            />
           </Sheet>
         )}
         {run ? (
-          <Sheet title="People" lead="Each is scored against what the others agree on, never against the own vote.">
+          <Sheet
+            title="People"
+            lead="Each is scored against what the others agree on, never against the own vote."
+          >
             <Table caption="Annotators of this picture">
               <TableHead>
                 <HeadCell>Annotator</HeadCell>
@@ -96,11 +117,21 @@ export default async function ImagePage({ params }: Props) {
                 {run.result.scores.map((score) => (
                   <Row key={score.annotatorId}>
                     <RowHead>{evidence.nameOf(score.annotatorId)}</RowHead>
-                    <Cell label="Found" figure>{score.found}</Cell>
-                    <Cell label="Missed" figure>{score.missed}</Cell>
-                    <Cell label="Unsupported" figure>{score.spurious}</Cell>
-                    <Cell label="Mean overlap" figure>{score.meanIou === null ? "–" : score.meanIou.toFixed(2)}</Cell>
-                    <Cell label="Score" figure>{score.quality.toFixed(2)}</Cell>
+                    <Cell label="Found" figure>
+                      {score.found}
+                    </Cell>
+                    <Cell label="Missed" figure>
+                      {score.missed}
+                    </Cell>
+                    <Cell label="Unsupported" figure>
+                      {score.spurious}
+                    </Cell>
+                    <Cell label="Mean overlap" figure>
+                      {score.meanIou === null ? "–" : score.meanIou.toFixed(2)}
+                    </Cell>
+                    <Cell label="Score" figure>
+                      {score.quality.toFixed(2)}
+                    </Cell>
                   </Row>
                 ))}
               </TableBody>
@@ -113,7 +144,10 @@ export default async function ImagePage({ params }: Props) {
               {runs.map((entry, index) => (
                 <li key={entry.id} className="flex flex-wrap justify-between gap-3 py-2">
                   <span>
-                    {entry.origin === "decision" ? "Decided by an admin" : `Merged ${entry.submissionIds.length} submissions`}: {entry.verdict}, agreement {formatPercent(entry.agreement)}
+                    {entry.origin === "decision"
+                      ? "Decided by an admin"
+                      : `Merged ${entry.submissionIds.length} submissions`}
+                    : {entry.verdict}, agreement {formatPercent(entry.agreement)}
                   </span>
                   <span className="text-muted text-sm">
                     run {index + 1}, <When at={entry.createdAtMs} />

@@ -27,7 +27,11 @@ export function FundForm({ batch, holdCents, balanceCents, blockers }: Props) {
   const payByCard = () =>
     startTransition(async () => {
       setProblem(null);
-      const answer = await topUp(null, { teamId: batch.teamId, amountCents: Math.max(missingCents, CARD_MIN_CENTS), returnPath: `/batches/${batch.id}/setup/review` });
+      const answer = await topUp(null, {
+        teamId: batch.teamId,
+        amountCents: Math.max(missingCents, CARD_MIN_CENTS),
+        returnPath: `/batches/${batch.id}/setup/review`,
+      });
       if (answer.ok) window.location.assign(answer.value.url);
       else setProblem(answer.message);
     });
@@ -70,7 +74,9 @@ export function FundForm({ batch, holdCents, balanceCents, blockers }: Props) {
           title={`Fund “${batch.title}”?`}
           consequence={
             <>
-              <Money cents={holdCents} /> moves from your wallet into escrow, and annotators can begin at once. Pictures, key, quality and pay are fixed from then on; the brief can still be corrected. What is not spent comes back when you close the batch.
+              <Money cents={holdCents} /> moves from your wallet into escrow, and annotators can begin at
+              once. Pictures, key, quality and pay are fixed from then on; the brief can still be corrected.
+              What is not spent comes back when you close the batch.
             </>
           }
           confirmLabel="Fund and open"
@@ -80,7 +86,11 @@ export function FundForm({ batch, holdCents, balanceCents, blockers }: Props) {
             </Button>
           }
           onConfirm={async () => {
-            const answer = await fund(null, { batchId: batch.id, versionSeen: batch.version, worstCentsSeen: holdCents });
+            const answer = await fund(null, {
+              batchId: batch.id,
+              versionSeen: batch.version,
+              worstCentsSeen: holdCents,
+            });
             return answer.ok ? undefined : answer.message;
           }}
         />

@@ -29,7 +29,12 @@ export function ImagesStep({ batchId, isDraft, initial }: Props) {
     queryFn: () => fetchImages(batchId),
     initialData: initial,
     refetchInterval: ({ state }) =>
-      state.data?.some((image) => image.status === "checking" || image.status === "awaiting" || image.proposalState === "queued") ? POLL_MS : 15_000,
+      state.data?.some(
+        (image) =>
+          image.status === "checking" || image.status === "awaiting" || image.proposalState === "queued",
+      )
+        ? POLL_MS
+        : 15_000,
   });
   const refresh = () => void client.invalidateQueries({ queryKey });
   const ready = images.filter((image) => image.status === "ready");
@@ -53,7 +58,11 @@ export function ImagesStep({ batchId, isDraft, initial }: Props) {
       ) : (
         <Notice>The batch is funded; its pictures are fixed.</Notice>
       )}
-      {isError ? <Notice kind="danger" live>The list of pictures could not be read. It is tried again by itself.</Notice> : null}
+      {isError ? (
+        <Notice kind="danger" live>
+          The list of pictures could not be read. It is tried again by itself.
+        </Notice>
+      ) : null}
       {refused.length > 0 ? (
         <Sheet title={`Not taken: ${refused.length}`} lead="The rest of the batch goes on without them.">
           <ul className="divide-line divide-y" aria-label="Files that were not taken">
@@ -78,10 +87,18 @@ export function ImagesStep({ batchId, isDraft, initial }: Props) {
         {ready.length === 0 ? (
           <EmptyState title="No picture yet">Pictures appear here once they are up and checked.</EmptyState>
         ) : (
-          <ul className="grid grid-cols-2 gap-4 sm:grid-cols-3 lg:grid-cols-5" aria-label="Pictures of the batch">
+          <ul
+            className="grid grid-cols-2 gap-4 sm:grid-cols-3 lg:grid-cols-5"
+            aria-label="Pictures of the batch"
+          >
             {ready.map((image) => (
               <li key={image.id} className="grid gap-1.5">
-                <img src={`/api/images/${image.id}/thumb`} alt="" loading="lazy" className="bg-sunk aspect-4/3 w-full object-cover" />
+                <img
+                  src={`/api/images/${image.id}/thumb`}
+                  alt=""
+                  loading="lazy"
+                  className="bg-sunk aspect-4/3 w-full object-cover"
+                />
                 <span className="flex items-start justify-between gap-1">
                   <span className="min-w-0">
                     <span className="block truncate text-sm font-semibold">{image.fileName}</span>
@@ -91,8 +108,12 @@ export function ImagesStep({ batchId, isDraft, initial }: Props) {
                   </span>
                   {isDraft ? <RemoveButton image={image} onRemove={remove} /> : null}
                 </span>
-                {image.proposalState === "queued" ? <StateMark state="waits">proposals on the way</StateMark> : null}
-                {image.proposalState === "failed" ? <StateMark state="disputed">no proposals</StateMark> : null}
+                {image.proposalState === "queued" ? (
+                  <StateMark state="waits">proposals on the way</StateMark>
+                ) : null}
+                {image.proposalState === "failed" ? (
+                  <StateMark state="disputed">no proposals</StateMark>
+                ) : null}
               </li>
             ))}
           </ul>
@@ -102,9 +123,20 @@ export function ImagesStep({ batchId, isDraft, initial }: Props) {
   );
 }
 
-function RemoveButton({ image, onRemove }: { image: ImageView; onRemove: (image: ImageView) => Promise<void> }) {
+function RemoveButton({
+  image,
+  onRemove,
+}: {
+  image: ImageView;
+  onRemove: (image: ImageView) => Promise<void>;
+}) {
   return (
-    <button type="button" aria-label={`Remove ${image.fileName}`} className="hover:bg-ink/8 rounded-sheet grid size-9 shrink-0 place-items-center" onClick={() => void onRemove(image)}>
+    <button
+      type="button"
+      aria-label={`Remove ${image.fileName}`}
+      className="hover:bg-ink/8 rounded-sheet grid size-9 shrink-0 place-items-center"
+      onClick={() => void onRemove(image)}
+    >
       <Trash2 aria-hidden className="size-4" />
     </button>
   );

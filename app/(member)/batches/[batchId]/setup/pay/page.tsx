@@ -15,13 +15,40 @@ export default async function PayStepPage({ params }: Props) {
   const db = getDb();
   const batch = orNotFound(() => requireBatch(db, batchId, actor, "editor"));
   const key = listClasses(db, batchId);
-  const { kMin, kMax, agreementTarget, baseCents, boxCents, polygonCents, capCents, expectedInstances, floorHourlyCents } = batch;
+  const {
+    kMin,
+    kMax,
+    agreementTarget,
+    baseCents,
+    boxCents,
+    polygonCents,
+    capCents,
+    expectedInstances,
+    floorHourlyCents,
+  } = batch;
   return (
     <PayStep
-      batch={{ id: batch.id, version: batch.version, isDraft: batch.status === "draft", feeBps: batch.feeBps }}
-      initial={{ kMin, kMax, agreementTarget, baseCents, boxCents, polygonCents, capCents, expectedInstances, floorHourlyCents }}
+      batch={{
+        id: batch.id,
+        version: batch.version,
+        isDraft: batch.status === "draft",
+        feeBps: batch.feeBps,
+      }}
+      initial={{
+        kMin,
+        kMax,
+        agreementTarget,
+        baseCents,
+        boxCents,
+        polygonCents,
+        capCents,
+        expectedInstances,
+        floorHourlyCents,
+      }}
       imageCount={countReadyImages(db, batchId)}
-      polygonShare={key.length === 0 ? 1 : key.filter((row) => row.geometry === "polygon").length / key.length}
+      polygonShare={
+        key.length === 0 ? 1 : key.filter((row) => row.geometry === "polygon").length / key.length
+      }
     />
   );
 }

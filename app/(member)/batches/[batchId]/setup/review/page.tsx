@@ -29,12 +29,24 @@ export default async function ReviewStepPage({ params }: Props) {
   const brief = findBrief(db, batchId);
   const ready = countReadyImages(db, batchId);
   const cost = quoteOf(batch, key, ready);
-  const blockers = blockersOf(batch, { ready, pending: countPendingImages(db, batchId), classCount: key.length, hasBrief: Boolean(brief) });
+  const blockers = blockersOf(batch, {
+    ready,
+    pending: countPendingImages(db, batchId),
+    classCount: key.length,
+    hasBrief: Boolean(brief),
+  });
   const { balanceCents } = walletSummary(db, batch.teamId);
   return (
     <div className="grid items-start gap-6 lg:grid-cols-[1fr_22rem]">
       <div className="grid gap-6">
-        <Sheet title="Quality and pay" actions={<Link className="link" href={`/batches/${batchId}/setup/pay`}>Change</Link>}>
+        <Sheet
+          title="Quality and pay"
+          actions={
+            <Link className="link" href={`/batches/${batchId}/setup/pay`}>
+              Change
+            </Link>
+          }
+        >
           <Facts
             facts={[
               { term: "Annotators a picture", detail: `${batch.kMin} to ${batch.kMax}` },
@@ -44,7 +56,14 @@ export default async function ReviewStepPage({ params }: Props) {
             ]}
           />
         </Sheet>
-        <Sheet title="The key" actions={<Link className="link" href={`/batches/${batchId}/setup/key`}>Change</Link>}>
+        <Sheet
+          title="The key"
+          actions={
+            <Link className="link" href={`/batches/${batchId}/setup/key`}>
+              Change
+            </Link>
+          }
+        >
           {key.length === 0 ? <p className="text-muted">No class yet.</p> : null}
           <ul className="grid gap-2 sm:grid-cols-2">
             {key.map((row) => (
@@ -55,10 +74,13 @@ export default async function ReviewStepPage({ params }: Props) {
             ))}
           </ul>
         </Sheet>
-        <Sheet title="The brief">{brief ? <Markdown>{brief.markdown}</Markdown> : <p className="text-muted">No brief yet.</p>}</Sheet>
+        <Sheet title="The brief">
+          {brief ? <Markdown>{brief.markdown}</Markdown> : <p className="text-muted">No brief yet.</p>}
+        </Sheet>
         {batch.safetyCritical ? (
           <Notice kind="caution" title="Feeds a safety-critical system">
-            Have the release reviewed by people qualified in that field before it is used. Agreement between annotators is not proof of correctness.
+            Have the release reviewed by people qualified in that field before it is used. Agreement between
+            annotators is not proof of correctness.
           </Notice>
         ) : null}
       </div>

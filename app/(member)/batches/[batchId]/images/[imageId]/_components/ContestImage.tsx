@@ -25,7 +25,13 @@ export function ContestImage({ imageId, fileName }: { imageId: string; fileName:
         router.refresh();
       }}
     >
-      <TextArea label="What is wrong?" rows={4} maxLength={2000} value={reason} onChange={(event) => setReason(event.currentTarget.value)} />
+      <TextArea
+        label="What is wrong?"
+        rows={4}
+        maxLength={2000}
+        value={reason}
+        onChange={(event) => setReason(event.currentTarget.value)}
+      />
     </ConfirmDialog>
   );
 }
