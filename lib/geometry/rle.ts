@@ -306,3 +306,6 @@ export function rleIou(label: RleRuns, truth: RleRuns, isCrowd = false): number 
   if (common === 0) return 0;
   return common / (isCrowd ? label.areaPx : label.areaPx + truth.areaPx - common);
 }
+
+/** A region given as pixels rather than as an outline. */
+export type MaskShape = { readonly kind: "mask"; readonly rle: Rle };
