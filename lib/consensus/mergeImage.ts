@@ -1,8 +1,8 @@
 import { candidatesOf, type Candidate, type Candidates, type Explanation } from "./candidates";
 import { cluster } from "./cluster";
 import { fuse, type Fused } from "./fuse";
-import { expectedQuality, predictIou, stepUp, type Expected } from "./predict";
-import { prepareImage, type PreparedImage } from "./prepare";
+import { combinedLoss, expectedQuality, predictIou, stepUp, type Expected, type Fusion } from "./predict";
+import { prepareImage, type Item, type PreparedImage } from "./prepare";
 import { scoreAnnotators } from "./score";
 import { boxIou } from "./spans";
 import {
@@ -31,9 +31,8 @@ export type Judged = {
   readonly fused: Fused | null;
   /** Independent people who support the object. */
   readonly support: number;
-  /** Independent drawings that went into the shape. */
-  readonly drawings: number;
-  readonly pairIou: number;
+  /** Independent drawings that went into the shape, and how they agree. */
+  readonly fusion: Fusion;
 };
 
 export type JudgedImage = {
@@ -141,9 +140,40 @@ function judge(
     accepted,
     fused,
     support: supporters.size,
-    drawings: drawers.size,
-    pairIou: pairIouOf(image, candidate, reliability),
+    fusion: {
+      pairIou: pairIouOf(image, candidate, reliability),
+      count: drawers.size,
+      peopleLoss: combinedLoss(drawerLosses(image, candidate, reliability)),
+      sizePx: Math.sqrt(image.items[candidate.medoid]!.spans.areaPx2),
+      raggedness: raggednessOf(image.items[candidate.medoid]!),
+    },
   };
+}
+
+/** Usual loss of each independent person who drew the object; of people who copy each other, the best. */
+function drawerLosses(image: PreparedImage, candidate: Candidate, reliability: Reliability): number[] {
+  const best = new Map<number, number>();
+  for (const item of candidate.members) {
+    const { voter, annotator } = image.items[item]!;
+    const known = reliability.annotators[image.annotatorIds[annotator]!] ?? reliability.typical;
+    best.set(voter, Math.min(best.get(voter) ?? 1, known.outlineLoss));
+  }
+  return [...best.values()];
+}
+
+/** Outline length over that of a circle of the same area. */
+function raggednessOf({ instance, spans }: Item): number {
+  if (spans.areaPx2 <= 0) return 1;
+  let length = 0;
+  if (instance.shape.kind === "box") length = 2 * (spans.box[2] + spans.box[3]);
+  else {
+    for (const ring of instance.shape.rings) {
+      for (let i = 0, j = ring.length - 1; i < ring.length; j = i++) {
+        length += Math.hypot(ring[i]![0] - ring[j]![0], ring[i]![1] - ring[j]![1]);
+      }
+    }
+  }
+  return length / (2 * Math.sqrt(Math.PI * spans.areaPx2));
 }
 
 /** For a lone drawing: what a like person's second drawing would be expected to give. */
@@ -185,7 +215,7 @@ function reportOn(state: JudgedImage): ImageConsensus {
     right: one.real * one.classProbability,
     real: one.real,
     included: one.accepted,
-    iou: predictIou(one.pairIou, one.drawings, reliability.iouShift),
+    iou: predictIou(one.fusion, reliability.iouShift),
   }));
   const realCount = judged.reduce((sum, { real }) => sum + real, 0);
   const predictedQuality = expectedQuality(expected, realCount * missedByAll(state));
@@ -217,9 +247,9 @@ function missedByAll({ image, reliability }: JudgedImage): number {
 function agreementOf(judged: readonly Judged[]): number {
   let confirmed = 0;
   let all = 0;
-  for (const { accepted, real, classProbability, pairIou, drawings } of judged) {
+  for (const { accepted, real, classProbability, fusion } of judged) {
     if (accepted) {
-      confirmed += real * classProbability * stepUp(pairIou, drawings);
+      confirmed += real * classProbability * stepUp(fusion.pairIou, fusion.count);
       all += 1;
     } else all += real;
   }
@@ -274,7 +304,7 @@ function agreedInstance(state: JudgedImage, one: Judged): AgreedInstance {
     box: fused.box,
     score: one.real,
     classProbability: one.classProbability,
-    predictedIou: predictIou(one.pairIou, one.drawings, reliability.iouShift),
+    predictedIou: predictIou(one.fusion, reliability.iouShift),
     support: one.support,
     seen: image.voterCount,
     spread,
@@ -286,7 +316,7 @@ function agreedInstance(state: JudgedImage, one: Judged): AgreedInstance {
 
 function whyAgreed(
   { image }: JudgedImage,
-  { candidate, support, drawings }: Judged,
+  { candidate, support, fusion }: Judged,
   classId: string,
   spread: number,
   settings: ConsensusSettings,
@@ -299,7 +329,7 @@ function whyAgreed(
   }
   for (const [other, count] of [...others].sort())
     parts.push(`${people(count)} called it ${nameOf(other, settings)}`);
-  if (drawings > 1) parts.push(`their shapes differ by ${percent(spread)}`);
+  if (fusion.count > 1) parts.push(`their shapes differ by ${percent(spread)}`);
   if (candidate.coverers.length > 0)
     parts.push(`${people(candidate.coverers.length)} drew it together with a neighbour`);
   if (candidate.parts.length > 0) {

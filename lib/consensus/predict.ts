@@ -1,20 +1,64 @@
 import type { Estimate } from "./types";
 
 /** Coefficients of the predicted IoU; fitted on simulated batches by `npm run bench:consensus -- --fit`. */
-export const IOU_MODEL = { constant: 0.25, pair: 0.9, count: 0.35 };
+export const IOU_MODEL = {
+  constant: 1.031,
+  pair: 0.0545,
+  count: 0.6023,
+  people: 0.1296,
+  size: 0.1835,
+  raggedness: -0.9774,
+};
 
 const logit = (p: number) => Math.log(p / (1 - p));
 const expit = (x: number) => 1 / (1 + Math.exp(-x));
 const clamp = (p: number) => Math.min(0.995, Math.max(0.02, p));
 
+/** What is known of a fused shape without the truth. */
+export type Fusion = {
+  /** Mean pairwise IoU of the drawings; of a lone one, what another like it would be expected to give. */
+  pairIou: number;
+  /** Independent drawings. */
+  count: number;
+  /** Loss that the people's usual losses leave when their outlines are combined by inverse variance. */
+  peopleLoss: number;
+  /** Square root of the object's area, px: a hand's error of a pixel or two weighs more on a small object. */
+  sizePx: number;
+  /** Outline length over that of a circle of the same area; 1 or more. People cut the corners of ragged objects alike. */
+  raggedness: number;
+};
+
+/** The terms of the logistic model, in the order of IOU_MODEL. */
+export function iouTerms({ pairIou, count, peopleLoss, sizePx, raggedness }: Fusion): number[] {
+  const size = Math.log(Math.min(100, Math.max(4, sizePx)) / 30);
+  return [
+    1,
+    logit(clamp(pairIou)),
+    Math.log(Math.max(1, count)),
+    logit(clamp(1 - peopleLoss)),
+    size,
+    Math.log(Math.min(4, Math.max(1, raggedness))),
+  ];
+}
+
 /**
- * Expected IoU with the truth of a shape fused from `count` independent drawings whose mean pairwise IoU is
- * `pairIou` (for one drawing: what another by a like person would give). `shift` comes from gold images.
- * A logistic model: agreement between people is no proof, so the fit is against known truth.
+ * Expected IoU with the truth of a fused shape: logistic in how far its drawings agree, how many there are
+ * and how well their people usually draw. `shift` comes from gold images. Agreement between people is no
+ * proof, so the coefficients are fitted against known truth.
  */
-export function predictIou(pairIou: number, count: number, shift = 0): number {
-  const { constant, pair, count: perCount } = IOU_MODEL;
-  return expit(constant + pair * logit(clamp(pairIou)) + perCount * Math.log(Math.max(1, count)) + shift);
+export function predictIou(fusion: Fusion, shift = 0): number {
+  const { constant, pair, count, people, size, raggedness } = IOU_MODEL;
+  const terms = iouTerms(fusion);
+  const weights = [constant, pair, count, people, size, raggedness];
+  return expit(terms.reduce((sum, term, k) => sum + term * weights[k]!, shift));
+}
+
+/** Loss of the inverse-variance combination of outlines with these losses. */
+export function combinedLoss(losses: readonly number[]): number {
+  if (losses.length === 0) return 0.5;
+  let precision = 0;
+  for (const loss of losses) precision += 1 / Math.max(0.005, loss) ** 2;
+  return 1 / Math.sqrt(precision);
 }
 
 /** The inverse link, for fitting a shift. */

@@ -678,12 +678,12 @@ function shiftFrom(
   let count = 0;
   for (const { labels, truth } of gold) {
     const shapes = truth.map(({ shape }) => spansOf(shape));
-    for (const { fused, pairIou, drawings } of judgeImage(labels, settings, reliability).judged) {
+    for (const { fused, fusion } of judgeImage(labels, settings, reliability).judged) {
       if (!fused) continue;
       const spans = spansOf(fused.shape);
       const best = shapes.reduce((most, shape) => Math.max(most, drawnIou(spans, shape)), 0);
       if (best <= 0.5) continue;
-      sum += iouLogit(best) - iouLogit(predictIou(pairIou, drawings));
+      sum += iouLogit(best) - iouLogit(predictIou(fusion));
       count++;
     }
   }

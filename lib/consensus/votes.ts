@@ -107,6 +107,7 @@ export function inventedRate(inventions: number, voters: number): number {
   return Math.min(0.97, Math.max(0.01, inventions / Math.max(1, voters)));
 }
 
+export const TEMPER = { at: 1 };
 /** One annotator's say on one candidate: class index, or the number of classes for "nothing". */
 export type Say = { table: LogTable; said: number; weight: number };
 
@@ -126,6 +127,9 @@ export function posteriorOf(model: VoteModel, says: readonly Say[], voters: numb
     scores[classCount]! +=
       weight * (said === classCount ? Math.log(1 - rate) : Math.log(rate) + table.inventedClass[said]!);
   }
+  if (TEMPER.at !== 1)
+    for (let t = 0; t < size; t++)
+      scores[t] = model.logShare[t]! + TEMPER.at * (scores[t]! - model.logShare[t]!);
   let best = -Infinity;
   for (const score of scores) if (score > best) best = score;
   let sum = 0;
