@@ -1,4 +1,4 @@
-import { InvariantError } from "@/lib/errors";
+import { invariant, InvariantError } from "@/lib/errors";
 
 /** The one currency at first, with its exponent of ISO 4217 (two digits: cents). */
 export const CURRENCY = "usd";
@@ -20,25 +20,27 @@ export function requireNonNegative(value: number, what: string): number {
 /**
  * Splits `totalCents` by weights so that the shares are whole cents and sum exactly to the total (largest
  * remainder, ties to the earlier key in sorted order, so the result does not depend on the order given).
- * Weights are not negative and not all zero; otherwise RangeError. O(n log n).
+ * Weights are finite, not negative and not all zero; otherwise RangeError. O(n log n).
  */
 export function splitCents(totalCents: number, weights: ReadonlyMap<string, number>): Map<string, number> {
   requireNonNegative(totalCents, "the total");
-  const keys = [...weights.keys()].sort();
-  const sum = keys.reduce((total, key) => total + (weights.get(key) ?? 0), 0);
-  if (!(sum > 0) || keys.some((key) => !((weights.get(key) ?? -1) >= 0))) {
+  const sorted = [...weights].sort(([a], [b]) => (a < b ? -1 : 1));
+  const sum = sorted.reduce((total, [, weight]) => total + weight, 0);
+  if (!(sum > 0) || sorted.some(([, weight]) => !(weight >= 0))) {
     throw new RangeError("weights must not be negative, and not all zero");
   }
-  const exact = keys.map((key) => ({ key, share: (totalCents * (weights.get(key) ?? 0)) / sum }));
-  const shares = new Map(exact.map(({ key, share }) => [key, Math.floor(share)]));
-  let left = totalCents - [...shares.values()].reduce((total, share) => total + share, 0);
-  const byRemainder = [...exact].sort(
-    (a, b) => b.share - Math.floor(b.share) - (a.share - Math.floor(a.share)),
-  );
-  for (const { key } of byRemainder) {
+  if (!Number.isFinite(sum * Math.max(totalCents, 1))) throw new RangeError("weights are too large");
+  const shares = sorted.map(([key, weight]) => {
+    const exact = (totalCents * weight) / sum;
+    return { key, cents: Math.floor(exact), remainder: exact - Math.floor(exact) };
+  });
+  let left = totalCents - shares.reduce((total, share) => total + share.cents, 0);
+  for (const share of [...shares].sort((a, b) => b.remainder - a.remainder)) {
     if (left === 0) break;
-    shares.set(key, (shares.get(key) ?? 0) + 1);
+    share.cents += 1;
     left -= 1;
   }
-  return shares;
+  // Rounding of the exact shares could reach a whole cent only for totals near 2^53.
+  invariant(left === 0, `a split of ${totalCents} left ${left} cents`);
+  return new Map(shares.map(({ key, cents }) => [key, cents]));
 }

@@ -82,7 +82,8 @@ export function quote({
   const expectedCents = Math.round(expectedTasks * typicalCents);
   return {
     expectedCents,
-    expectedFeeCents: feeFor(expectedCents, feeBps),
+    // The fee of each task is floored, as it will be when it is charged: of the whole it could exceed the worst case.
+    expectedFeeCents: Math.round(expectedTasks * feeFor(Math.round(typicalCents), feeBps)),
     worstCents: requireNonNegative(worstTasks * pay.capCents, "the worst case"),
     worstFeeCents: requireNonNegative(worstTasks * feeFor(pay.capCents, feeBps), "the worst fee"),
   };
