@@ -116,7 +116,7 @@ function judge(
   const says = saysOf(image, candidate, model);
   const posterior =
     settings.votes === "dawid-skene"
-      ? posteriorOf(model, says, image.voterCount)
+      ? posteriorOf(model, says)
       : countVotes(image, candidate, settings, reliability, model, says);
   const nothing = model.classIds.length;
   let classIndex = 0;

@@ -14,7 +14,7 @@ import {
   type LabelledInstance,
   type Reliability,
 } from "./types";
-import { inventedRate, typicalReliability } from "./votes";
+import { logInvented, typicalReliability } from "./votes";
 
 /** Known truth of some images of the batch, by index into the images. */
 export type Gold = ReadonlyMap<number, readonly LabelledInstance[]>;
@@ -27,7 +27,6 @@ export type ImageRecord = {
   annotatorIds: readonly string[];
   /** Share of a vote: 1 for the independent, 1 / k for each of k people whose labels here are copies. */
   weights: readonly number[];
-  voters: number;
   candidates: VotedCandidate[];
   /** IoU of two annotators' drawings of one object: indices into annotatorIds, then the IoU, then 1 for boxes. */
   pairs: readonly (readonly [a: number, b: number, iou: number, boxes: 0 | 1])[];
@@ -40,7 +39,7 @@ export type ImageRecord = {
 };
 
 /** Prior strength, in observations, of what is common to all annotators. */
-const STRENGTH = { person: 4, row: 6, inventions: 4, pooled: 2, outline: 6, classShare: 1 };
+const STRENGTH = { person: 4, row: 6, inventions: 4, pooled: 2, outline: 6, coincidence: 10, objects: 1 };
 /** A gold drawing says as much about an outline as this many comparisons with others. */
 const GOLD_WEIGHT = 3;
 const ITERATIONS_MAX = 200;
@@ -126,7 +125,6 @@ export function recordOf(
   return {
     annotatorIds: image.annotatorIds,
     weights: [...image.voterOf].map((voter) => 1 / sharers[voter]!),
-    voters: image.voterCount,
     candidates,
     pairs,
     goldIous,
@@ -189,7 +187,8 @@ type Tables = {
   rows: Float64Array;
   inventions: Float64Array;
   inventedClass: Float64Array;
-  share: Float64Array;
+  objects: Float64Array;
+  coincidence: number;
   found: Float64Array;
   real: Float64Array;
   right: Float64Array;
@@ -262,8 +261,13 @@ type FlatVotes = {
   annotators: Int32Array;
   said: Int16Array;
   weights: Float64Array;
-  voters: Int32Array;
+  /** Weighted votes for something, and weighted people, per candidate. */
+  drawn: Float64Array;
+  people: Float64Array;
   truth: Int16Array;
+  /** Images in all, and per annotator. */
+  imageCount: number;
+  imagesOf: Float64Array;
 };
 
 function flatten(
@@ -284,8 +288,11 @@ function flatten(
     annotators: new Int32Array(votes),
     said: new Int16Array(votes),
     weights: new Float64Array(votes),
-    voters: new Int32Array(items),
+    drawn: new Float64Array(items),
+    people: new Float64Array(items),
     truth: new Int16Array(items).fill(-1),
+    imageCount: records.length,
+    imagesOf: new Float64Array(idIndex.size),
   };
   let item = 0;
   let vote = 0;
@@ -296,14 +303,16 @@ function flatten(
       const alike = people.filter((other, j) => j !== k && closeOf(people[k]!, other)).length;
       return Math.min(weight, 1 / (1 + alike));
     });
+    for (const k of people) flat.imagesOf[k]! += 1;
     for (const { said, truth } of record.candidates) {
       said.forEach((classId, k) => {
         flat.annotators[vote] = people[k]!;
         flat.said[vote] = classId === null ? nothing : classIndex.get(classId)!;
         flat.weights[vote] = weights[k]!;
+        flat.people[item]! += weights[k]!;
+        if (classId !== null) flat.drawn[item]! += weights[k]!;
         vote++;
       });
-      flat.voters[item] = record.voters;
       if (truth !== undefined) flat.truth[item] = truth === null ? nothing : classIndex.get(truth)!;
       item++;
       flat.offsets[item] = vote;
@@ -319,7 +328,7 @@ function runEm(
   typical: Reliability,
 ): { posterior: Float64Array; tables: Tables; iterations: number; converged: boolean } {
   const size = classCount + 1;
-  const items = flat.voters.length;
+  const items = flat.drawn.length;
   const posterior = new Float64Array(items * size);
   for (let i = 0; i < items; i++) startFromShares(flat, i, size, posterior);
   let iterations = 0;
@@ -350,29 +359,33 @@ function startFromShares(flat: FlatVotes, i: number, size: number, posterior: Fl
 
 function expect(
   flat: FlatVotes,
-  { rows, inventions, inventedClass, share }: Tables,
+  { rows, inventions, inventedClass, objects, coincidence }: Tables,
   classCount: number,
   posterior: Float64Array,
   scores: Float64Array,
 ): number {
   const size = classCount + 1;
   const logRows = rows.map(Math.log);
-  const logShare = share.map(Math.log);
-  const logInvented = inventedClass.map(Math.log);
+  const logObjects = objects.map(Math.log);
+  const logCoincidence = Math.log(coincidence);
+  const logInventedClass = inventedClass.map(Math.log);
   let moved = 0;
-  for (let i = 0; i < flat.voters.length; i++) {
+  for (let i = 0; i < flat.drawn.length; i++) {
     if (flat.truth[i]! >= 0) continue;
-    scores.set(logShare);
+    scores.set(logObjects);
+    let inventedBy = 0;
+    let named = 0;
     for (let v = flat.offsets[i]!; v < flat.offsets[i + 1]!; v++) {
       const annotator = flat.annotators[v]!;
       const said = flat.said[v]!;
       const weight = flat.weights[v]!;
       const base = annotator * classCount * size + said;
       for (let t = 0; t < classCount; t++) scores[t]! += weight * logRows[base + t * size]!;
-      const rate = inventedRate(inventions[annotator]!, flat.voters[i]!);
-      scores[classCount]! +=
-        weight * (said === classCount ? Math.log(1 - rate) : Math.log(rate) + logInvented[said]!);
+      if (said === classCount) continue;
+      inventedBy += weight * inventions[annotator]!;
+      named += weight * logInventedClass[said]!;
     }
+    scores[classCount] = logInvented(flat.drawn[i]!, inventedBy, logCoincidence, 1) + named;
     let best = -Infinity;
     for (let t = 0; t < size; t++) if (scores[t]! > best) best = scores[t]!;
     let sum = 0;
@@ -396,26 +409,33 @@ function maximise(
 ): Tables {
   const size = classCount + 1;
   const rows = new Float64Array(people * classCount * size);
-  const share = new Float64Array(size);
+  const objects = new Float64Array(classCount);
+  let repeats = STRENGTH.coincidence * typical.coincidence;
+  let repeatChances = STRENGTH.coincidence;
   const invented = new Float64Array(people);
-  const chances = new Float64Array(people);
   const inventedClass = new Float64Array(classCount);
-  for (let i = 0; i < flat.voters.length; i++) {
-    for (let t = 0; t < size; t++) share[t]! += posterior[i * size + t]!;
+  for (let i = 0; i < flat.drawn.length; i++) {
+    for (let t = 0; t < classCount; t++) objects[t]! += posterior[i * size + t]!;
     const absent = posterior[i * size + classCount]!;
+    const drawn = flat.drawn[i]!;
+    repeats += absent * Math.max(0, drawn - 1);
+    repeatChances += absent * Math.max(0, flat.people[i]! - 1);
     for (let v = flat.offsets[i]!; v < flat.offsets[i + 1]!; v++) {
       const annotator = flat.annotators[v]!;
       const said = flat.said[v]!;
       const base = annotator * classCount * size + said;
       for (let t = 0; t < classCount; t++) rows[base + t * size]! += posterior[i * size + t]!;
-      chances[annotator]! += absent / flat.voters[i]!;
       if (said < classCount) {
-        invented[annotator]! += absent;
+        // One of those who drew it began; which one, nobody knows.
+        invented[annotator]! += (absent * flat.weights[v]!) / drawn;
         inventedClass[said]! += absent;
       }
     }
   }
-  normaliseShare(share, typical);
+  for (let t = 0; t < classCount; t++) {
+    const prior = STRENGTH.objects * typical.objectsPerImage[t]!;
+    objects[t] = (objects[t]! + prior) / (flat.imageCount + STRENGTH.objects);
+  }
   // What all have in common: detection, right class given detection, and where wrong classes go.
   const common = new Float64Array(classCount * size);
   for (let t = 0; t < classCount; t++) {
@@ -470,22 +490,24 @@ function maximise(
     }
   }
   const inventions = new Float64Array(people);
-  const allInvented = invented.reduce((sum, count) => sum + count, 1);
-  const allChances = chances.reduce((sum, count) => sum + count, 1);
+  const allInvented = invented.reduce((sum, count) => sum + count, typical.typical.inventions);
+  const allImages = flat.imagesOf.reduce((sum, count) => sum + count, 1);
   for (let a = 0; a < people; a++) {
-    inventions[a] =
-      (invented[a]! + (STRENGTH.inventions * allInvented) / allChances) / (chances[a]! + STRENGTH.inventions);
+    const prior = (STRENGTH.inventions * allInvented) / allImages;
+    inventions[a] = (invented[a]! + prior) / (flat.imagesOf[a]! + STRENGTH.inventions);
   }
   const classTotal = inventedClass.reduce((sum, count) => sum + count, classCount);
   for (let t = 0; t < classCount; t++) inventedClass[t] = (inventedClass[t]! + 1) / classTotal;
-  return { rows, inventions, inventedClass, share, found, real, right };
-}
-
-function normaliseShare(share: Float64Array, typical: Reliability): void {
-  let total = 0;
-  for (let t = 0; t < share.length; t++)
-    total += share[t]! += STRENGTH.classShare * typical.prevalence[t]! * share.length;
-  for (let t = 0; t < share.length; t++) share[t]! /= total;
+  return {
+    rows,
+    inventions,
+    inventedClass,
+    objects,
+    coincidence: repeats / repeatChances,
+    found,
+    real,
+    right,
+  };
 }
 
 type OutlineLosses = { loss: Float64Array; weight: Float64Array; typical: number };
@@ -567,21 +589,19 @@ function describe(
   const images = new Float64Array(ids.length);
   const goldImages = new Float64Array(ids.length);
   const instances = new Float64Array(ids.length);
-  const meanVoters = new Float64Array(ids.length);
   const idIndex = new Map(ids.map((id, k) => [id, k]));
   for (const record of records) {
     record.annotatorIds.forEach((id, local) => {
       const k = idIndex.get(id)!;
       images[k]! += 1;
       instances[k]! += record.instances[local]!;
-      meanVoters[k]! += record.voters;
       if (record.isGold) goldImages[k]! += 1;
     });
   }
   const drawn = new Float64Array(ids.length);
   const rightly = new Float64Array(ids.length);
   const falsely = new Float64Array(ids.length);
-  for (let i = 0; i < flat.voters.length; i++) {
+  for (let i = 0; i < flat.drawn.length; i++) {
     for (let v = flat.offsets[i]!; v < flat.offsets[i + 1]!; v++) {
       const said = flat.said[v]!;
       if (said === classCount) continue;
@@ -598,7 +618,8 @@ function describe(
       const base = (a * classCount + t) * size;
       confusion.push([...tables.rows.subarray(base, base + size)]);
     }
-    const rate = inventedRate(tables.inventions[a]!, meanVoters[a]! / Math.max(1, images[a]!));
+    // Of what is not there: drawn by chance where somebody else drew it.
+    const rate = tables.coincidence;
     confusion.push([...[...tables.inventedClass].map((share) => share * rate), 1 - rate]);
     const loss = outline.loss[a]!;
     const errors = drawn[a]! - rightly[a]! + (tables.real[a]! - rightly[a]!);
@@ -623,7 +644,8 @@ function describe(
   });
   return {
     classIds: [...classIds],
-    prevalence: [...tables.share],
+    objectsPerImage: [...tables.objects],
+    coincidence: tables.coincidence,
     annotators,
     typical: { ...typical.typical, ...commonRow(annotators, typical, outline.typical) },
     copies: [...copies],

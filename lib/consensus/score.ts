@@ -127,7 +127,7 @@ function judgedByOthers(state: JudgedImage, model: VoteModel, one: Judged, annot
   const { image } = state;
   const voter = image.voterOf[annotator]!;
   const says = saysOf(image, one.candidate, model).filter((_, other) => image.voterOf[other] !== voter);
-  const posterior = posteriorOf(model, says, image.voterCount);
+  const posterior = posteriorOf(model, says);
   const nothing = model.classIds.length;
   let classIndex = 0;
   for (let t = 1; t < nothing; t++) if (posterior[t]! > posterior[classIndex]!) classIndex = t;

@@ -127,10 +127,7 @@ export type AnnotatorReliability = {
   falseAlarm: Estimate;
   /** P(drawn class or nothing | true class or nothing): rows and columns are the classes, then "nothing". */
   confusion: number[][];
-  /**
-   * How many of the votes for something that is not there are this annotator's, relative to an equal share
-   * among those who looked: 1 for a typical annotator, more for one who invents.
-   */
+  /** False objects an image, in expectation. */
   inventions: number;
   /** Weight of the outline in a fusion, relative to a typical annotator (1). */
   outlineWeight: number;
@@ -155,8 +152,10 @@ export type CopyGroup = {
 /** What the whole batch tells about its annotators; made by estimateReliability, used by mergeImage. */
 export type Reliability = {
   classIds: string[];
-  /** Share of each class, then of "nothing", among the candidate objects. */
-  prevalence: number[];
+  /** Real objects of each class an image, in expectation. */
+  objectsPerImage: number[];
+  /** Chance that someone else draws a false object where one person has drawn one; 0..1. */
+  coincidence: number;
   annotators: Record<string, AnnotatorReliability>;
   /** What is assumed of an annotator about whom nothing is known. */
   typical: AnnotatorReliability;

@@ -7,7 +7,9 @@ type LogTable = { present: Float64Array; inventions: number; inventedClass: Floa
 export type VoteModel = {
   readonly classIds: readonly string[];
   readonly classIndex: ReadonlyMap<string, number>;
-  readonly logShare: Float64Array;
+  readonly logObjects: Float64Array;
+  readonly logCoincidence: number;
+  readonly typicalInventions: number;
   tableOf(annotatorId: string): LogTable;
 };
 
@@ -15,8 +17,9 @@ export type VoteModel = {
 const TYPICAL = {
   detection: 0.87,
   rightClass: 0.93,
-  realShare: 0.75,
-  inventions: 1.1,
+  objectsPerImage: 6,
+  inventions: 0.5,
+  coincidence: 0.05,
   quality: 0.72,
   outlineLoss: 0.2,
 };
@@ -28,7 +31,8 @@ export function typicalReliability(classIds: readonly string[]): Reliability {
   const unknown = { value: TYPICAL.detection, low: 0, high: 1 };
   return {
     classIds: [...classIds],
-    prevalence: [...classIds.map(() => TYPICAL.realShare / Math.max(1, count)), 1 - TYPICAL.realShare],
+    objectsPerImage: classIds.map(() => TYPICAL.objectsPerImage / Math.max(1, count)),
+    coincidence: TYPICAL.coincidence,
     annotators: {},
     typical: {
       annotatorId: "",
@@ -79,7 +83,9 @@ export function voteModel(reliability: Reliability): VoteModel {
   const model: VoteModel = {
     classIds: reliability.classIds,
     classIndex: new Map(reliability.classIds.map((id, k) => [id, k])),
-    logShare: Float64Array.from(reliability.prevalence, (share) => Math.log(Math.max(share, 1e-12))),
+    logObjects: Float64Array.from(reliability.objectsPerImage, (count) => Math.log(Math.max(count, 1e-9))),
+    logCoincidence: Math.log(Math.max(reliability.coincidence, 1e-6)),
+    typicalInventions: Math.max(1e-3, reliability.typical.inventions),
     tableOf: (annotatorId) => tables.get(annotatorId) ?? typical,
   };
   modelCache.set(reliability, model);
@@ -102,38 +108,51 @@ function logTable({ confusion, inventions }: AnnotatorReliability): LogTable {
   return { present, inventions, inventedClass };
 }
 
-/** P(an annotator is among those who drew something that is not there), of `voters` who looked. */
-export function inventedRate(inventions: number, voters: number): number {
-  return Math.min(0.97, Math.max(0.01, inventions / Math.max(1, voters)));
-}
-
-export const TEMPER = { at: 1 };
 /** One annotator's say on one candidate: class index, or the number of classes for "nothing". */
 export type Say = { table: LogTable; said: number; weight: number };
 
 /**
  * P(class | votes) for every class and, last, for "nothing there", by Bayes' rule under independent
- * annotators. `weight` shares one vote among people who copy each other. `voters` is how many
- * independent people looked. O(says x classes).
+ * annotators. Real objects of class t come up `objectsPerImage[t]` times an image and are seen, missed or misnamed
+ * by everybody as their confusion says. False ones come up as often as those who drew them invent, and a
+ * second person joins in by `coincidence`; whoever stays silent says nothing about a false object,
+ * because most of the image is free of them. `weight` shares one vote among people who copy each other.
+ * O(says x classes).
  */
-export function posteriorOf(model: VoteModel, says: readonly Say[], voters: number): Float64Array {
+export function posteriorOf(model: VoteModel, says: readonly Say[]): Float64Array {
   const classCount = model.classIds.length;
   const size = classCount + 1;
   const scores = new Float64Array(size);
-  for (let t = 0; t < size; t++) scores[t] = model.logShare[t]!;
+  for (let t = 0; t < classCount; t++) scores[t] = model.logObjects[t]!;
+  let drawn = 0;
+  let inventions = 0;
+  let named = 0;
   for (const { table, said, weight } of says) {
     for (let t = 0; t < classCount; t++) scores[t]! += weight * table.present[t * size + said]!;
-    const rate = inventedRate(table.inventions, voters);
-    scores[classCount]! +=
-      weight * (said === classCount ? Math.log(1 - rate) : Math.log(rate) + table.inventedClass[said]!);
+    if (said === classCount) continue;
+    drawn += weight;
+    inventions += weight * table.inventions;
+    named += weight * table.inventedClass[said]!;
   }
-  if (TEMPER.at !== 1)
-    for (let t = 0; t < size; t++)
-      scores[t] = model.logShare[t]! + TEMPER.at * (scores[t]! - model.logShare[t]!);
+  scores[classCount] = logInvented(drawn, inventions, model.logCoincidence, model.typicalInventions) + named;
   let best = -Infinity;
   for (const score of scores) if (score > best) best = score;
   let sum = 0;
   for (let t = 0; t < size; t++) sum += scores[t] = Math.exp(scores[t]! - best);
   for (let t = 0; t < size; t++) scores[t]! /= sum;
   return scores;
+}
+
+/**
+ * Logarithm of the expected number of false objects an image that just these people would draw. Where nobody
+ * among them drew it (the one who did is left out), a typical person's.
+ */
+export function logInvented(
+  drawn: number,
+  inventions: number,
+  logCoincidence: number,
+  typical: number,
+): number {
+  if (drawn < 1e-9) return Math.log(typical);
+  return Math.log(Math.max(inventions, 1e-6)) + Math.max(0, drawn - 1) * logCoincidence;
 }
