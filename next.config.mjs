@@ -44,6 +44,8 @@ const nextConfig = {
   poweredByHeader: false,
   typedRoutes: false,
   reactStrictMode: true,
+  // Types are checked once by `npm run typecheck` (CI runs it), tests and tools included, not again by each build.
+  typescript: { ignoreBuildErrors: true },
   turbopack: { root: import.meta.dirname },
   serverExternalPackages: [
     "better-sqlite3",
