@@ -23,6 +23,8 @@ export function openDatabase(file: string): Db {
   sqlite.pragma("synchronous = FULL");
   sqlite.pragma("foreign_keys = ON");
   sqlite.pragma("busy_timeout = 5000");
+  // Without it, "insert or replace" deletes rows of the append-only tables past their triggers.
+  sqlite.pragma("recursive_triggers = ON");
   return drizzle(sqlite, { schema });
 }
 

@@ -1,4 +1,4 @@
-import { and, asc, count, desc, eq, gt, inArray, lt, ne, sql } from "drizzle-orm";
+import { and, asc, count, desc, eq, gt, gte, inArray, lt, ne, sql } from "drizzle-orm";
 import type { Reader } from "@/db/client";
 import {
   batches,
@@ -26,24 +26,15 @@ export function listLiveClaims(db: Reader, annotatorId: string, nowMs: number): 
   return db
     .select()
     .from(claims)
-    .where(and(eq(claims.annotatorId, annotatorId), eq(claims.status, "live"), gt(claims.expiresAtMs, nowMs)))
+    .where(
+      and(eq(claims.annotatorId, annotatorId), eq(claims.status, "live"), gte(claims.expiresAtMs, nowMs)),
+    )
     .orderBy(desc(claims.claimedAtMs))
     .all();
 }
 
 export function findDraft(db: Reader, claimId: string) {
   return db.select().from(drafts).where(eq(drafts.claimId, claimId)).get();
-}
-
-/** Live claims whose lease has run out, oldest first. */
-export function listExpiredClaims(db: Reader, nowMs: number, limit: number): ClaimRow[] {
-  return db
-    .select()
-    .from(claims)
-    .where(and(eq(claims.status, "live"), lt(claims.expiresAtMs, nowMs)))
-    .orderBy(asc(claims.expiresAtMs))
-    .limit(limit)
-    .all();
 }
 
 /** Slots of an image that are held or filled. */

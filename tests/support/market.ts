@@ -203,12 +203,15 @@ export function drawing(kind: string, boxes: readonly Box[]): DeskDocument {
   return { instances, dismissedProposalIds: [] };
 }
 
-/** Three bottles; everybody who draws these agrees. `shiftPx` moves them a little, as hands do. */
-export function bottles(shiftPx = 0): Box[] {
+/**
+ * Three bottles as one person draws them: the same objects for every `hand`, a few px apart, as hands are.
+ * Nearly equal boxes would be taken for copies of one another, and copies have one vote.
+ */
+export function bottles(hand = 0): Box[] {
   return [
-    [40 + shiftPx, 60, 80, 120],
-    [250, 200 + shiftPx, 90, 90],
-    [460 - shiftPx, 320, 100, 70],
+    [40 + 4 * hand, 60, 80, 120 - 5 * hand],
+    [250, 200 + 4 * hand, 90 + 3 * hand, 90],
+    [460 - 4 * hand, 320, 100, 70 + 2 * hand],
   ];
 }
 

@@ -9,7 +9,13 @@ import { findImage } from "@/db/queries/batches";
 import { mergeImage } from "@/lib/consensus/mergeImage";
 import { requireBatch } from "@/lib/market/access";
 import { audit } from "@/lib/market/audit";
-import { applyScores, labelsOf, recordRun, settingsOf } from "@/lib/market/consensus/settleImage";
+import {
+  applyScores,
+  labelsOf,
+  recordRun,
+  reliabilityOf,
+  settingsOf,
+} from "@/lib/market/consensus/settleImage";
 import { closeBatchEscrow } from "@/lib/market/money/settlement";
 import { expireClaims } from "@/lib/market/work/expireClaims";
 
@@ -62,6 +68,7 @@ export function closeBatch({ actor, nowMs, batchId }: By): { returnedCents: numb
       invariant(batch, "the batch was loaded");
       const key = listClasses(tx, batchId);
       const settings = settingsOf(batch, key);
+      const reliability = reliabilityOf(tx, batch, settings);
       const waiting = tx
         .selectDistinct({ imageId: submissions.imageId })
         .from(submissions)
@@ -78,7 +85,7 @@ export function closeBatch({ actor, nowMs, batchId }: By): { returnedCents: numb
         const image = findImage(tx, imageId);
         invariant(image, "a submission has an image");
         const list = listSubmissionsOf(tx, imageId);
-        const result = mergeImage(labelsOf(image, list), settings);
+        const result = mergeImage(labelsOf(image, list), settings, reliability);
         const runId = recordRun(tx, {
           image,
           origin: "engine",
@@ -89,7 +96,15 @@ export function closeBatch({ actor, nowMs, batchId }: By): { returnedCents: numb
           millis: 0,
           nowMs,
         });
-        tx.update(images).set({ currentRunId: runId }).where(eq(images.id, imageId)).run();
+        // An image whose consensus was due and is good enough belongs to the releases.
+        const settled = result.verdict === "settled" && {
+          consensusState: "settled" as const,
+          settledAtMs: nowMs,
+        };
+        tx.update(images)
+          .set({ currentRunId: runId, ...settled })
+          .where(eq(images.id, imageId))
+          .run();
         applyScores(tx, { batch, key, list, scores: result.scores, runId, disputeId: null, nowMs });
       }
     }

@@ -1,5 +1,5 @@
-import { and, eq, inArray } from "drizzle-orm";
-import { getDb, inTransaction, type Tx } from "@/db/client";
+import { eq } from "drizzle-orm";
+import { getDb, inTransaction, type Reader, type Tx } from "@/db/client";
 import {
   findBatch,
   findImage,
@@ -13,7 +13,13 @@ import { listSubmissionsOf, type SubmissionRow } from "@/db/queries/work";
 import { consensusRuns, images, submissions } from "@/db/schema";
 import { mergeImage } from "@/lib/consensus/mergeImage";
 import { estimateReliability } from "@/lib/consensus/reliability";
-import type { AnnotatorScore, ConsensusSettings, ImageConsensus, ImageLabels } from "@/lib/consensus/types";
+import type {
+  AnnotatorScore,
+  ConsensusSettings,
+  ImageConsensus,
+  ImageLabels,
+  Reliability,
+} from "@/lib/consensus/types";
 import { invariant } from "@/lib/errors";
 import { newId } from "@/lib/ids";
 import { enqueue } from "@/lib/jobs/queue";
@@ -44,6 +50,16 @@ export function settingsOf(batch: BatchRow, key: readonly ClassRow[]): Partial<C
   };
 }
 
+/** What the batch's submissions so far tell about its annotators; undefined before two people drew one image. */
+export function reliabilityOf(
+  db: Reader,
+  batch: BatchRow,
+  settings: Partial<ConsensusSettings>,
+): Reliability | undefined {
+  const history = listReliabilityLabels(db, batch.id, RELIABILITY_IMAGES_MAX);
+  return history.length > 0 ? estimateReliability(history, { settings }) : undefined;
+}
+
 /**
  * The job behind each image that has its submissions: merges them, and then, in one transaction, records the
  * run and acts on it. Settled: pays each annotator by the score. Short: asks for one more. Split: opens a
@@ -53,19 +69,19 @@ export function settleImage({ imageId, nowMs }: { imageId: string; nowMs: number
   const db = getDb();
   const image = findImage(db, imageId);
   const batch = image && findBatch(db, image.batchId);
-  if (!image || !batch || image.consensusState === "settled" || image.consensusState === "split") return;
+  if (!image || !batch || batch.status === "closed") return; // closing paid what was there
+  if (image.consensusState === "settled" || image.consensusState === "split") return;
   const list = listSubmissionsOf(db, imageId);
   if (list.length < image.slotsWanted) return;
   const key = listClasses(db, batch.id);
   const settings = settingsOf(batch, key);
   const startMs = performance.now();
-  const history = listReliabilityLabels(db, batch.id, RELIABILITY_IMAGES_MAX);
-  const reliability = history.length > 0 ? estimateReliability(history, { settings }) : undefined;
-  const result = mergeImage(labelsOf(image, list), settings, reliability);
+  const result = mergeImage(labelsOf(image, list), settings, reliabilityOf(db, batch, settings));
   const millis = Math.round(performance.now() - startMs);
   inTransaction(db, (tx) => {
     const current = findImage(tx, imageId);
     if (!current || current.consensusState === "settled" || current.consensusState === "split") return;
+    if (findBatch(tx, batch.id)?.status === "closed") return;
     if (listSubmissionsOf(tx, imageId).length !== list.length) return; // one more came in: its own job follows
     const runId = recordRun(tx, {
       image,
@@ -152,6 +168,20 @@ export function settle(
   });
 }
 
+/** What each submission earns by its score, the largest reductions first, so that there is money for what rises. */
+function paysOf({ batch, key, list, scores }: Pick<Scored, "batch" | "key" | "list" | "scores">) {
+  const scoreOf = new Map(scores.map((score) => [score.annotatorId, score]));
+  return list
+    .map((submission) => {
+      const score = scoreOf.get(submission.annotatorId);
+      invariant(score, "each annotator of an image is scored");
+      const { payCents, feeCents } = payOf(batch, key, submission.document, score);
+      const costCents = payCents + feeCents - (submission.payCents ?? 0) - (submission.feeCents ?? 0);
+      return { submission, score, payCents, feeCents, costCents };
+    })
+    .sort((a, b) => a.costCents - b.costCents);
+}
+
 type Scored = {
   batch: BatchRow;
   key: readonly ClassRow[];
@@ -167,12 +197,8 @@ type Scored = {
  * difference by a posting linked to the first. Returns the cents by which pay rose in sum.
  */
 export function applyScores(tx: Tx, { batch, key, list, scores, runId, disputeId, nowMs }: Scored): number {
-  const scoreOf = new Map(scores.map((score) => [score.annotatorId, score]));
   let movedCents = 0;
-  for (const submission of list) {
-    const score = scoreOf.get(submission.annotatorId);
-    invariant(score, "each annotator of an image is scored");
-    const { payCents, feeCents } = payOf(batch, key, submission.document, score);
+  for (const { submission, score, payCents, feeCents } of paysOf({ batch, key, list, scores })) {
     const parties = { submissionId: submission.id, batchId: batch.id, annotatorId: submission.annotatorId };
     if (submission.payCents === null) {
       if (payCents > 0) releaseForSubmission(tx, { ...parties, payCents, feeCents, nowMs });
@@ -202,14 +228,4 @@ export function applyScores(tx: Tx, { batch, key, list, scores, runId, disputeId
       .run();
   }
   return movedCents;
-}
-
-/** Images of an open batch whose consensus is due but has no job: after a crash or a lowered target. */
-export function listUnsettled(tx: Tx, batchId: string): string[] {
-  return tx
-    .select({ id: images.id })
-    .from(images)
-    .where(and(eq(images.batchId, batchId), inArray(images.consensusState, ["none", "short"])))
-    .all()
-    .map((row) => row.id);
 }

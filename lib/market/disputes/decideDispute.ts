@@ -1,6 +1,7 @@
 import { and, eq, inArray } from "drizzle-orm";
 import { getDb, inTransaction, type Tx } from "@/db/client";
 import { findBatch, findImage, listClasses } from "@/db/queries/batches";
+import { getTeamRole } from "@/db/queries/people";
 import {
   findDispute,
   findRun,
@@ -8,7 +9,7 @@ import {
   type DisputeRow,
   type SubmissionRow,
 } from "@/db/queries/work";
-import { disputes, images, teamMembers, users } from "@/db/schema";
+import { disputes, teamMembers, users } from "@/db/schema";
 import type { Actor } from "@/lib/auth/actor";
 import type { AgreedInstance, ImageConsensus, LabelledInstance } from "@/lib/consensus/types";
 import type { DecideInput } from "@/lib/contracts/work";
@@ -32,13 +33,17 @@ export function decideDispute({ actor, nowMs, disputeId, decision }: Input): { m
     const dispute = findDispute(tx, disputeId);
     if (!dispute) throw new AppError("not_found", "There is no such dispute.");
     if (dispute.status !== "open") throw new AppError("conflict", "This dispute was decided already.");
-    if (dispute.openedBy === actor.id)
-      throw new AppError("forbidden", "You opened this dispute; another admin decides it.");
     const batch = findBatch(tx, dispute.batchId);
     const image = findImage(tx, dispute.imageId);
     const before = image?.currentRunId ? findRun(tx, image.currentRunId) : undefined;
     invariant(batch && image && before, "a dispute has a batch, an image and a run");
     const list = listSubmissionsOf(tx, image.id);
+    const tookPart =
+      dispute.openedBy === actor.id ||
+      list.some((submission) => submission.annotatorId === actor.id) ||
+      getTeamRole(tx, batch.teamId, actor.id) !== undefined;
+    if (tookPart)
+      throw new AppError("forbidden", "You took part in what is disputed; another admin decides it.");
     const key = listClasses(tx, batch.id);
     const settings = settingsOf(batch, key);
     const result = decidedResult({
@@ -239,5 +244,4 @@ function tellEverybody(
       nowMs,
     );
   }
-  tx.update(images).set({ settledAtMs: nowMs }).where(eq(images.id, dispute.imageId)).run();
 }

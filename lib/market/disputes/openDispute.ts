@@ -150,6 +150,16 @@ function requireWindow(batch: BatchRow, sinceMs: number, nowMs: number): void {
   }
 }
 
+/** What was contested and decided once is not contested again, not even when the decision was to keep it. */
+function requireUndecided(tx: Tx, subject: string): void {
+  const decided = tx
+    .select({ id: disputes.id })
+    .from(disputes)
+    .where(and(eq(disputes.subject, subject), eq(disputes.status, "decided")))
+    .get();
+  if (decided) throw new AppError("conflict", "An admin has decided on this already. Write to us to appeal.");
+}
+
 /** An annotator contests the score of an own submission. */
 export function contestScore({
   actor,
@@ -165,6 +175,7 @@ export function contestScore({
     if (!run) throw new AppError("conflict", "There is no score to contest yet.");
     if (run.origin === "decision")
       throw new AppError("conflict", "An admin has decided on this image already. Write to us to appeal.");
+    requireUndecided(tx, submission.id);
     const batch = findBatch(tx, submission.batchId);
     const image = findImage(tx, submission.imageId);
     invariant(batch && image, "a submission has a batch and an image");
@@ -198,6 +209,7 @@ export function contestImage({
       throw new AppError("conflict", "Only a settled image can be contested.");
     if (run.origin === "decision")
       throw new AppError("conflict", "An admin has decided on this image already. Write to us to appeal.");
+    requireUndecided(tx, image.id);
     requireWindow(batch, run.createdAtMs, nowMs);
     return insertDispute(tx, {
       batch,

@@ -26,6 +26,9 @@ export function claimTask({ actor, nowMs, batchId, imageId }: Input): ClaimRow {
     expireClaims(tx, nowMs);
     const batch = findBatch(tx, batchId);
     if (!batch || batch.status === "draft") throw new AppError("not_found", "There is no such batch.");
+    const live = listLiveClaims(tx, actor.id, nowMs);
+    const held = live.find((claim) => claim.batchId === batchId && (!imageId || claim.imageId === imageId));
+    if (held) return held;
     if (batch.status !== "open")
       throw new AppError("conflict", "This batch takes no new work at the moment.");
     const person = findUser(tx, actor.id);
@@ -35,9 +38,6 @@ export function claimTask({ actor, nowMs, batchId, imageId }: Input): ClaimRow {
         "This batch has sensitive content. You can opt in on your account page.",
       );
     }
-    const live = listLiveClaims(tx, actor.id, nowMs);
-    const held = live.find((claim) => claim.batchId === batchId && (!imageId || claim.imageId === imageId));
-    if (held) return held;
     if (live.length >= LIVE_CLAIMS_MAX) {
       throw new AppError(
         "conflict",

@@ -1,12 +1,13 @@
-import { and, eq, sql } from "drizzle-orm";
+import { and, eq, inArray } from "drizzle-orm";
 import { getDb, inTransaction, type Tx } from "@/db/client";
 import { findClaim, findDraft, listTakenSlots, type ClaimRow } from "@/db/queries/work";
 import { findBatch, findImage } from "@/db/queries/batches";
 import { claims, drafts } from "@/db/schema";
 import type { Actor } from "@/lib/auth/actor";
 import type { DeskDocument } from "@/lib/contracts/desk";
-import { AppError } from "@/lib/errors";
+import { AppError, invariant } from "@/lib/errors";
 import { LEASE_MS } from "./claimTask";
+import { expireClaims } from "./expireClaims";
 
 type By = { actor: Actor; nowMs: number; claimId: string };
 
@@ -20,39 +21,51 @@ export function requireLiveClaim(tx: Tx, { actor, nowMs, claimId }: By): ClaimRo
   return claim;
 }
 
-/** A claim that ran out while its slot is still free goes on, so that a lost hour of network costs nothing. */
+/**
+ * A claim that ran out while its image still has a place goes on, so that a lost hour of network costs
+ * nothing; in a paused batch too, because work that is under way is not touched.
+ */
 function revive(tx: Tx, claim: ClaimRow, nowMs: number): ClaimRow {
+  expireClaims(tx, nowMs); // places that others lost are free as well
   const batch = findBatch(tx, claim.batchId);
   const image = findImage(tx, claim.imageId);
+  invariant(batch && image, "a claim has a batch and an image");
+  const newer = tx
+    .select({ id: claims.id })
+    .from(claims)
+    .where(
+      and(
+        eq(claims.imageId, claim.imageId),
+        eq(claims.annotatorId, claim.annotatorId),
+        inArray(claims.status, ["live", "submitted"]),
+      ),
+    )
+    .get();
+  if (newer) throw new AppError("gone", "You hold this image under a newer claim. Open it from the board.");
   const taken = listTakenSlots(tx, claim.imageId);
-  const others = claim.status === "live" ? taken.filter((slot) => slot !== claim.slot) : taken;
-  const isOpen =
-    batch?.status === "open" &&
-    image &&
+  const isWanted =
+    (batch.status === "open" || batch.status === "paused") &&
     (image.consensusState === "none" || image.consensusState === "short");
-  if (!isOpen || others.length >= image.slotsWanted) {
+  if (!isWanted) {
+    throw new AppError(
+      "gone",
+      "Your claim ran out and this image takes no more work. Your drawing is kept in this browser.",
+    );
+  }
+  if (taken.length >= image.slotsWanted) {
     throw new AppError(
       "gone",
       "Your claim ran out and somebody else has the place. Your drawing is kept in this browser.",
     );
   }
   let slot = 1;
-  while (others.includes(slot)) slot += 1;
-  const revived = tx
+  while (taken.includes(slot)) slot += 1;
+  return tx
     .update(claims)
     .set({ status: "live", slot, heartbeatAtMs: nowMs, expiresAtMs: nowMs + LEASE_MS, endedAtMs: null })
-    .where(
-      and(
-        eq(claims.id, claim.id),
-        // the same person may have claimed the image anew in the meantime
-        sql`not exists (select 1 from claims c where c.image_id = ${claim.imageId} and c.annotator_id = ${claim.annotatorId} and c.status in ('live', 'submitted') and c.id <> ${claim.id})`,
-      ),
-    )
+    .where(eq(claims.id, claim.id))
     .returning()
     .get();
-  if (!revived)
-    throw new AppError("gone", "You hold this image under a newer claim. Open it from the board.");
-  return revived;
 }
 
 /** A sign of life: the lease starts anew. */

@@ -7,6 +7,7 @@ import { claims, drafts, submissions } from "@/db/schema";
 import type { Actor } from "@/lib/auth/actor";
 import type { DeskDocument } from "@/lib/contracts/desk";
 import { AppError, invariant } from "@/lib/errors";
+import { ringsArea } from "@/lib/geometry/region";
 import { newId } from "@/lib/ids";
 import { enqueue } from "@/lib/jobs/queue";
 import { requireLiveClaim } from "./keepClaim";
@@ -62,7 +63,8 @@ export function submitWork({ actor, nowMs, claimId, document, activeSeconds }: I
         kind: "consensus.settle",
         payload: { imageId: image.id },
         subject: image.batchId,
-        uniqueKey: `settle:${image.id}`,
+        // With the count, so that a job still running on fewer submissions does not swallow this one.
+        uniqueKey: `settle:${image.id}:${handedIn}`,
         nowMs,
         priority: 4,
       });
@@ -78,11 +80,15 @@ export function checkDocument(document: DeskDocument, image: ImageRow, key: Clas
   const height = image.height ?? 0;
   const inside = (x: number, y: number) =>
     x >= -0.01 && y >= -0.01 && x <= width + 0.01 && y <= height + 0.01;
+  const ids = new Set<string>();
   document.instances.forEach((instance, index) => {
     const refuse = (why: string) =>
       new AppError("invalid", `Shape ${index + 1}: ${why}`, { [`document/instances/${index}`]: why });
     const kind = byId.get(instance.classId);
     if (!kind) throw refuse("its class is not in the key.");
+    // Scores and pay are kept by id: a repeated one would be paid again for each copy.
+    if (ids.has(instance.id)) throw refuse("another shape has the same id.");
+    ids.add(instance.id);
     if (kind.geometry === "polygon" && instance.shape.kind === "box")
       throw refuse(`"${kind.name}" wants an outline, not a box.`);
     if (instance.shape.kind === "box") {
@@ -90,6 +96,8 @@ export function checkDocument(document: DeskDocument, image: ImageRow, key: Clas
       if (!inside(x, y) || !inside(x + w, y + h)) throw refuse("it leaves the image.");
     } else if (!instance.shape.rings.every((ring) => ring.every(([x, y]) => inside(x, y)))) {
       throw refuse("it leaves the image.");
+    } else if (!(ringsArea(instance.shape.rings) > 0)) {
+      throw refuse("its outline has no area.");
     }
   });
 }
