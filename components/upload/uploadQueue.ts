@@ -151,6 +151,15 @@ export class UploadQueue {
         if (!entry || this.isPaused) break;
         try {
           entry.sha256 = await sha256Of(entry.file);
+          const twin = this.entries.find(
+            (other) => other !== entry && other.sha256 === entry.sha256 && other.state !== "failed",
+          );
+          if (twin) {
+            entry.state = "duplicate";
+            entry.reason = `The same picture is here already as ${twin.name}.`;
+            this.changed();
+            continue;
+          }
           if (entry.state === "reading") entry.state = "waiting";
           if (this.store)
             await set(`${this.batchId}/${entry.sha256}`, entry.file, this.store).catch(() => undefined);
