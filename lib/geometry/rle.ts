@@ -1,6 +1,6 @@
 import { boxIntersectionArea } from "./box";
 import { blankMask, forEachSpan, trimMask, type Mask } from "./mask";
-import type { Box } from "./types";
+import type { Box, Shape } from "./types";
 
 /**
  * A mask of a whole image as run lengths down the columns, columns from left to right; the first run is background
@@ -309,3 +309,6 @@ export function rleIou(label: RleRuns, truth: RleRuns, isCrowd = false): number 
 
 /** A region given as pixels rather than as an outline. */
 export type MaskShape = { readonly kind: "mask"; readonly rle: Rle };
+
+/** A box, an outline (even-odd) or the pixels themselves. */
+export type LabelShape = Shape | MaskShape;

@@ -4,7 +4,7 @@ import { partsOfRings } from "@/lib/geometry/nest";
 import { mergeRle, prepareRle, rleFromMask, type Rle, type RleRuns } from "@/lib/geometry/rle";
 import { ringOfBox } from "@/lib/geometry/box";
 import type { Box } from "@/lib/geometry/types";
-import type { LabelShape } from "./comparable";
+import type { LabelShape } from "@/lib/geometry/rle";
 
 /** IoU of a label's box with a true box as the COCO evaluation computes it; over the label's area for a crowd. */
 export function cocoBoxIou(label: Box, truth: Box, isCrowd: boolean): number {

@@ -9,13 +9,10 @@ import {
   rleFromMask,
   rleIntersectionArea,
   rleIou,
-  type MaskShape,
+  type LabelShape,
   type RleRuns,
 } from "@/lib/geometry/rle";
-import type { Box, Shape } from "@/lib/geometry/types";
-
-/** What one side drew: a box, an outline, or the pixels themselves. */
-export type LabelShape = Shape | MaskShape;
+import type { Box } from "@/lib/geometry/types";
 
 /** A shape with everything that comparisons of it need, each made at most once and only when asked for. */
 export type Comparable = {

@@ -1,5 +1,5 @@
 import type { AveragePrecision } from "./averagePrecision";
-import type { LabelShape } from "./comparable";
+import type { LabelShape } from "@/lib/geometry/rle";
 
 /** One true object. A crowd is many objects outlined as one: labels in it are neither hits nor misses. */
 export type TrueObject = {
