@@ -64,7 +64,9 @@ function refuseForeignOrigin(request: Request): void {
   const origin = request.headers.get("origin");
   if (!origin) return; // not a browser, or same-origin in one that leaves it out
   const allowed = new URL(env().APP_URL).origin;
-  if (origin !== allowed && new URL(origin).host !== request.headers.get("host")) {
+  // "null" (a sandboxed frame, a redirect across sites) and what is no address are foreign too.
+  const host = URL.canParse(origin) ? new URL(origin).host : null;
+  if (origin !== allowed && (host === null || host !== request.headers.get("host"))) {
     throw new AppError("forbidden", "This request came from another site.");
   }
 }

@@ -1,4 +1,4 @@
-import { and, asc, desc, eq, inArray, lte, lt, sql } from "drizzle-orm";
+import { and, asc, desc, eq, gte, inArray, lte, lt, sql } from "drizzle-orm";
 import type { Db, Reader, Tx } from "@/db/client";
 import { inTransaction } from "@/db/client";
 import { jobs } from "@/db/schema";
@@ -48,13 +48,20 @@ const LEASE_MS = 60_000;
 
 /**
  * Takes the most urgent due job, or undefined. A running job whose lease ran out (its worker died) is due
- * again. Order: priority, then due time, then id.
+ * again, unless it has had its attempts: a job that kills its worker each time ends among the dead. Order:
+ * priority, then due time, then id.
  */
 export function takeJob(db: Db, workerId: string, nowMs: number): JobRow | undefined {
   return inTransaction(db, (tx) => {
+    const lapsed = and(eq(jobs.status, "running"), lt(jobs.lockedUntilMs, nowMs));
+    const free = { lockedBy: null, lockedUntilMs: null };
     tx.update(jobs)
-      .set({ status: "queued", lockedBy: null, lockedUntilMs: null })
-      .where(and(eq(jobs.status, "running"), lt(jobs.lockedUntilMs, nowMs)))
+      .set({ ...free, status: "dead", finishedAtMs: nowMs, lastError: "Its worker died each time." })
+      .where(and(lapsed, gte(jobs.attempts, jobs.attemptsMax)))
+      .run();
+    tx.update(jobs)
+      .set({ ...free, status: "queued" })
+      .where(lapsed)
       .run();
     const due = tx
       .select()
@@ -89,12 +96,17 @@ export function reportProgress(
   const changed = db
     .update(jobs)
     .set({ progress, progressNote: note, lockedUntilMs: nowMs + LEASE_MS })
-    .where(and(eq(jobs.id, job.id), eq(jobs.lockedBy, job.lockedBy ?? ""), eq(jobs.status, "running")))
+    .where(isHeld(job))
     .run();
   return changed.changes === 1;
 }
 
-/** Marks the job done. Runs in the handler's own transaction where it has one. */
+/** Whether the row is still the job as this worker took it: after a lost lease it is another's. */
+function isHeld(job: JobRow) {
+  return and(eq(jobs.id, job.id), eq(jobs.status, "running"), eq(jobs.lockedBy, job.lockedBy ?? ""));
+}
+
+/** Marks the job done, if it is still this worker's. Runs in the handler's own transaction where it has one. */
 export function finishJob(tx: Db | Tx, job: JobRow, nowMs: number): void {
   tx.update(jobs)
     .set({
@@ -105,7 +117,7 @@ export function finishJob(tx: Db | Tx, job: JobRow, nowMs: number): void {
       lockedUntilMs: null,
       lastError: null,
     })
-    .where(eq(jobs.id, job.id))
+    .where(isHeld(job))
     .run();
 }
 
@@ -120,7 +132,7 @@ export function backOffMs(jobId: string, attempts: number): number {
   return base + Math.floor((base / 4) * ((hash % 1000) / 1000));
 }
 
-/** Puts the job back for a later attempt, or among the dead when it has had its attempts. */
+/** Puts this worker's job back for a later attempt, or among the dead when it has had its attempts. */
 export function failJob(db: Db, job: JobRow, error: unknown, nowMs: number, retry = true): void {
   const message = error instanceof Error ? error.message : String(error);
   const dead = !retry || job.attempts >= job.attemptsMax;
@@ -133,16 +145,22 @@ export function failJob(db: Db, job: JobRow, error: unknown, nowMs: number, retr
       lockedUntilMs: null,
       finishedAtMs: dead ? nowMs : null,
     })
-    .where(and(eq(jobs.id, job.id), eq(jobs.status, "running")))
+    .where(isHeld(job))
     .run();
 }
 
-/** Gives a dead job another set of attempts. */
+/** Gives a dead job another set of attempts; false if it is not dead, or a newer job holds its key. */
 export function reviveJob(db: Db, jobId: string, nowMs: number): boolean {
   const changed = db
     .update(jobs)
     .set({ status: "queued", attempts: 0, runAtMs: nowMs, finishedAtMs: null })
-    .where(and(eq(jobs.id, jobId), eq(jobs.status, "dead")))
+    .where(
+      and(
+        eq(jobs.id, jobId),
+        eq(jobs.status, "dead"),
+        sql`not exists (select 1 from jobs other where other.unique_key = ${jobs.uniqueKey} and other.status in ('queued', 'running'))`,
+      ),
+    )
     .run();
   return changed.changes === 1;
 }

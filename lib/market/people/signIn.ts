@@ -30,15 +30,21 @@ export function sendSignInLink({ email, nowMs }: { email: string; nowMs: number 
 
 /**
  * The person that a link from a mail belongs to: a sign-in link, or the first confirmation of an address
- * (which both prove that the mailbox is theirs). Uses the link up; null when it is spent or too old.
+ * (which both prove that the mailbox is theirs). Uses the link up; null when it is spent or too old. A
+ * password that was set before the address was confirmed goes when a sign-in link confirms it: whoever signed
+ * up with somebody else's address must not keep a key to the account.
  */
 export function redeemSignInLink({ secret, nowMs }: { secret: string; nowMs: number }): UserRow | null {
   return inTransaction(getDb(), (tx) => {
-    const token = redeemToken(tx, "sign-in", secret, nowMs) ?? redeemToken(tx, "verify", secret, nowMs);
+    const confirmation = redeemToken(tx, "verify", secret, nowMs);
+    const token = confirmation ?? redeemToken(tx, "sign-in", secret, nowMs);
     const user = token?.userId ? findUser(tx, token.userId) : undefined;
     if (!user || user.status !== "active") return null;
     if (user.emailVerifiedAtMs === null) {
-      tx.update(users).set({ emailVerifiedAtMs: nowMs }).where(eq(users.id, user.id)).run();
+      tx.update(users)
+        .set({ emailVerifiedAtMs: nowMs, ...(!confirmation && { passwordHash: null }) })
+        .where(eq(users.id, user.id))
+        .run();
     }
     return { ...user, emailVerifiedAtMs: user.emailVerifiedAtMs ?? nowMs };
   });

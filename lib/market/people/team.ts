@@ -118,6 +118,12 @@ export function acceptInvitation({
       throw new AppError("gone", "This invitation was used, withdrawn or is too old. Ask for a new one.");
     }
     const existing = findUserByEmail(tx, invite.email);
+    if (existing && existing.role !== "requester") {
+      throw new AppError(
+        "conflict",
+        "Your account is of another kind. Ask for an invitation to a different address.",
+      );
+    }
     const userId = existing?.id ?? newId("usr");
     if (!existing) {
       tx.insert(users)
@@ -166,6 +172,7 @@ export function changeMember({
 }: By & { teamId: string; userId: string; role: TeamRole | "remove" }) {
   inTransaction(getDb(), (tx) => {
     requireOwner(tx, teamId, actor);
+    if (!getTeamRole(tx, teamId, userId)) throw new AppError("not_found", "There is no such member.");
     const owners = listTeamMembers(tx, teamId).filter((member) => member.role === "owner");
     if (role !== "owner" && owners.length === 1 && owners[0]?.userId === userId) {
       throw new AppError("conflict", "A team keeps at least one owner. Make somebody else owner first.");
