@@ -1,22 +1,35 @@
-import { createHash } from "node:crypto";
-import { and, asc, desc, eq, gte, inArray, isNull, like, lt, sql } from "drizzle-orm";
+import { and, asc, desc, eq, gte, inArray, isNull, lt, sql } from "drizzle-orm";
 import type { Reader, Tx } from "@/db/client";
 import { ledgerAccounts, ledgerAlerts, ledgerEntries, ledgerPostings } from "@/db/schema";
-import { AppError } from "@/lib/errors";
+import { AppError, invariant } from "@/lib/errors";
 import { newId } from "@/lib/ids";
-import { kindOf, NEVER_NEGATIVE, type AccountId, type Posting } from "@/lib/ledger/posting";
+import {
+  kindOf,
+  NEVER_NEGATIVE,
+  NEVER_POSITIVE,
+  type AccountId,
+  type Entry,
+  type Posting,
+} from "@/lib/ledger/posting";
+import { digestOf } from "./ledgerDigest";
+
+export { ledgerViolations } from "./ledgerChecks";
+export { digestOf };
 
 export type PostingRow = typeof ledgerPostings.$inferSelect;
 
 type Cause = { source: string; sourceId: string; kind: string };
-type NewPosting = Cause & { posting: Posting; memo: string; nowMs: number; linkedTo?: string | null };
-
-/** SHA-256 of a posting's entries, hex. */
-export function digestOf(posting: Posting): string {
-  return createHash("sha256")
-    .update(JSON.stringify(posting.map((e) => [e.accountId, e.cents])))
-    .digest("hex");
-}
+type NewPosting = Cause & {
+  posting: Posting;
+  memo: string;
+  nowMs: number;
+  linkedTo?: string | null;
+  /**
+   * Whether a repeat asks for what was posted first, for postings whose entries depend on balances that have
+   * moved on since (a debt repaid out of a pay). Without it the entries must be the same.
+   */
+  isRepeatOf?: (first: readonly Entry[]) => boolean;
+};
 
 export function findPosting(db: Reader, { source, sourceId, kind }: Cause): PostingRow | undefined {
   return db
@@ -32,17 +45,33 @@ export function findPosting(db: Reader, { source, sourceId, kind }: Cause): Post
     .get();
 }
 
+/** The entries of a posting, sorted by account as `posting()` sorts them. */
+export function entriesOf(db: Reader, postingId: string): Entry[] {
+  return db
+    .select({ accountId: ledgerEntries.accountId, cents: ledgerEntries.cents })
+    .from(ledgerEntries)
+    .where(eq(ledgerEntries.postingId, postingId))
+    .orderBy(asc(ledgerEntries.id))
+    .all()
+    .map((entry) => ({ accountId: entry.accountId as AccountId, cents: entry.cents }));
+}
+
 /**
  * Writes a posting once for each cause: a repeat returns the first row and moves nothing, the same cause
  * with other entries is a conflict. An account that may not be negative refuses with a conflict. Balances
  * move in the same transaction.
  */
-export function insertPosting(tx: Tx, { posting, memo, nowMs, linkedTo, ...cause }: NewPosting): PostingRow {
+export function insertPosting(
+  tx: Tx,
+  { posting, memo, nowMs, linkedTo, isRepeatOf, ...cause }: NewPosting,
+): PostingRow {
   const digest = digestOf(posting);
   const first = findPosting(tx, cause);
-  if (first && first.digest !== digest)
-    throw new AppError("conflict", "This was posted already with another amount.");
-  if (first) return first;
+  if (first) {
+    const isRepeat = first.digest === digest || isRepeatOf?.(entriesOf(tx, first.id)) === true;
+    if (!isRepeat) throw new AppError("conflict", "This was posted already with another amount.");
+    return first;
+  }
   const row = tx
     .insert(ledgerPostings)
     .values({ id: newId("pst"), ...cause, digest, memo, postedAtMs: nowMs, linkedTo: linkedTo ?? null })
@@ -64,6 +93,10 @@ export function insertPosting(tx: Tx, { posting, memo, nowMs, linkedTo, ...cause
     if (cents < 0 && balanceCents < 0 && NEVER_NEGATIVE.includes(kind)) {
       throw new AppError("conflict", `There is not enough money in the ${kind}.`);
     }
+    invariant(
+      balanceCents <= 0 || !NEVER_POSITIVE.includes(kind),
+      `${accountId} would hold ${balanceCents} cents, and may only be owed`,
+    );
     tx.insert(ledgerEntries)
       .values({ postingId: row.id, accountId, cents, balanceCents, postedAtMs: nowMs })
       .run();
@@ -167,16 +200,6 @@ export function listPostings(db: Reader, limit: number) {
   return postings.map((row) => ({ ...row, entries: entries.filter((entry) => entry.postingId === row.id) }));
 }
 
-/** Sums over the escrow accounts of batches, for the check that what went in came out or is there. */
-export function listAccounts(db: Reader, kind: string) {
-  return db
-    .select()
-    .from(ledgerAccounts)
-    .where(like(ledgerAccounts.id, `${kind}%`))
-    .orderBy(asc(ledgerAccounts.id))
-    .all();
-}
-
 export function listOpenAlerts(db: Reader) {
   return db
     .select()
@@ -204,35 +227,27 @@ export function raiseAlert(
       .run();
 }
 
-/** What in the ledger does not hold; empty when all does. O(entries). */
-export function ledgerViolations(db: Reader): string[] {
-  const unbalanced = db.all<{ posting_id: string; sum: number }>(
-    sql`select posting_id, sum(cents) as sum from ${ledgerEntries} group by posting_id having sum(cents) <> 0`,
+/** Takes an alert off the page: a person has looked at it. False when it was off already. */
+export function resolveAlert(tx: Reader, alertId: string, nowMs: number): boolean {
+  return (
+    tx
+      .update(ledgerAlerts)
+      .set({ resolvedAtMs: nowMs })
+      .where(and(eq(ledgerAlerts.id, alertId), isNull(ledgerAlerts.resolvedAtMs)))
+      .run().changes === 1
   );
-  const drifted = db.all<{ id: string; balance_cents: number; total: number }>(
-    sql`select a.id, a.balance_cents, coalesce((select sum(e.cents) from ledger_entries e where e.account_id = a.id), 0) as total from ${ledgerAccounts} a where a.balance_cents <> total`,
-  );
-  const negative = db
+}
+
+/** The posting of a Stripe balance transaction that stands: one in suspense and taken out again does not. */
+export function findStripePosting(db: Reader, transactionId: string): PostingRow | undefined {
+  const rows = db
     .select()
-    .from(ledgerAccounts)
-    .where(and(inArray(ledgerAccounts.kind, [...NEVER_NEGATIVE]), lt(ledgerAccounts.balanceCents, 0)))
+    .from(ledgerPostings)
+    .where(and(eq(ledgerPostings.source, "stripe"), eq(ledgerPostings.sourceId, transactionId)))
     .all();
-  const positiveDebt = db
-    .select()
-    .from(ledgerAccounts)
-    .where(and(eq(ledgerAccounts.kind, "debt"), sql`${ledgerAccounts.balanceCents} > 0`))
-    .all();
-  const unlinked = db.all<{ id: string }>(
-    sql`select p.id from ledger_postings p where p.linked_to is not null and not exists (select 1 from ledger_postings q where q.id = p.linked_to)`,
+  const isCleared = rows.some((row) => row.kind === "suspense-cleared");
+  return rows.find(
+    (row) =>
+      row.kind !== "available" && row.kind !== "suspense-cleared" && !(row.kind === "suspense" && isCleared),
   );
-  const total =
-    db.get<{ sum: number | null }>(sql`select sum(balance_cents) as sum from ${ledgerAccounts}`)?.sum ?? 0;
-  return [
-    ...unbalanced.map((row) => `posting ${row.posting_id} sums to ${row.sum}`),
-    ...drifted.map((row) => `account ${row.id} says ${row.balance_cents}, its entries ${row.total}`),
-    ...negative.map((row) => `account ${row.id} is negative: ${row.balanceCents}`),
-    ...positiveDebt.map((row) => `account ${row.id} owes a negative debt: ${row.balanceCents}`),
-    ...unlinked.map((row) => `posting ${row.id} is linked to one that is not there`),
-    ...(total === 0 ? [] : [`the trial balance is ${total}, not zero`]),
-  ];
 }

@@ -1,8 +1,46 @@
 import { invariant, InvariantError } from "@/lib/errors";
 
-/** The one currency at first, with its exponent of ISO 4217 (two digits: cents). */
+/** The one currency at first. */
 export const CURRENCY = "usd";
-export const MINOR_UNITS_PER_UNIT = 100;
+
+/**
+ * Digits after the point, by ISO 4217 (table A.1, column "minor unit"; values from memory): the currencies of
+ * those who may pay by card here one day. Only USD is booked now.
+ */
+const MINOR_UNIT_DIGITS: Readonly<Record<string, number>> = {
+  usd: 2,
+  eur: 2,
+  gbp: 2,
+  chf: 2,
+  cad: 2,
+  aud: 2,
+  jpy: 0,
+  krw: 0,
+  kwd: 3,
+  bhd: 3,
+};
+
+/** Digits of a currency's minor unit: 2 for USD, 0 for JPY, 3 for KWD. RangeError for one that is not known. */
+export function minorUnitDigits(currency: string): number {
+  const digits = MINOR_UNIT_DIGITS[currency.toLowerCase()];
+  if (digits === undefined) throw new RangeError(`the minor unit of ${currency} is not known`);
+  return digits;
+}
+
+/** An amount of minor units as plain decimal text, exact at any size: 123456 in USD is "1234.56". */
+export function toDecimal(minorUnits: number, currency: string = CURRENCY): string {
+  const digits = minorUnitDigits(currency);
+  const text = String(Math.abs(requireCents(minorUnits, "the amount"))).padStart(digits + 1, "0");
+  const sign = minorUnits < 0 ? "-" : "";
+  if (digits === 0) return sign + text;
+  return `${sign}${text.slice(0, -digits)}.${text.slice(-digits)}`;
+}
+
+/** An amount of US cents as people read it: -123456 is "-$1,234.56". */
+export function formatUsd(cents: number): string {
+  const [whole = "", fraction = ""] = toDecimal(Math.abs(cents)).split(".");
+  return `${cents < 0 ? "-" : ""}$${whole.replace(/\B(?=(\d{3})+$)/g, ",")}.${fraction}`;
+}
 
 /** Throws InvariantError unless the value is a whole, safe number of cents. */
 export function requireCents(value: number, what: string): number {

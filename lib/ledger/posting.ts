@@ -3,20 +3,28 @@ import { requireCents } from "./amounts";
 
 /**
  * Kinds of account. Positive cents are what the account holds for its owner; `stripe` is the world outside,
- * so its balance is minus what Stripe keeps for the platform (pending and available together).
+ * so its balance is minus what Stripe keeps for the platform: `stripe` what is available there, and
+ * `stripe:pending` what is not yet. `refunding` and `transit` hold money whose way out has begun and is not
+ * yet confirmed. A `hold` (one for each card dispute) may have either sign and ends at zero. Debts and costs
+ * are negative.
  */
-export type AccountKind =
-  | "stripe"
-  | "wallet"
-  | "escrow"
-  | "payable"
-  | "transit"
-  | "debt"
-  | "fee"
-  | "processing"
-  | "hold"
-  | "loss"
-  | "suspense";
+export const ACCOUNT_KINDS = [
+  "stripe",
+  "wallet",
+  "refunding",
+  "escrow",
+  "payable",
+  "transit",
+  "debt",
+  "fee",
+  "processing",
+  "hold",
+  "loss",
+  "shortfall",
+  "suspense",
+] as const;
+
+export type AccountKind = (typeof ACCOUNT_KINDS)[number];
 
 export type AccountId = string & { readonly __account: unique symbol };
 
@@ -30,7 +38,9 @@ export function kindOf(id: AccountId): AccountKind {
 }
 
 /** Accounts whose balance may never be negative: nobody can spend what is not there. */
-export const NEVER_NEGATIVE: readonly AccountKind[] = ["wallet", "escrow", "payable", "transit", "hold"];
+export const NEVER_NEGATIVE: readonly AccountKind[] = ["wallet", "refunding", "escrow", "payable", "transit"];
+/** Accounts whose balance may never be positive: what is owed to the platform, and what it has spent. */
+export const NEVER_POSITIVE: readonly AccountKind[] = ["debt", "shortfall"];
 
 export type Entry = { accountId: AccountId; cents: number };
 

@@ -2,7 +2,13 @@ import fc from "fast-check";
 import { describe, expect, it } from "vitest";
 import { splitCents } from "@/lib/ledger/amounts";
 import { posting, reversal, type AccountKind, accountId } from "@/lib/ledger/posting";
-import { adjustmentPosting, chargebackPosting, releasePosting } from "@/lib/ledger/postings";
+import {
+  adjustmentPosting,
+  disputeClosedPosting,
+  disputeMovePosting,
+  freezePosting,
+  releasePosting,
+} from "@/lib/ledger/postings";
 import { feeFor, payFor, quote } from "@/lib/ledger/pricing";
 
 const cents = (max: number) => fc.integer({ min: 0, max });
@@ -106,14 +112,32 @@ describe("every posting", () => {
     );
   });
 
-  it("of a card dispute sums to zero and leaves the wallet at zero or more", () => {
+  it("of a card dispute sums to zero, and won or lost its hold ends at zero without a negative wallet", () => {
+    const amounts = fc.record({
+      amount: fc.integer({ min: 1, max: 1_000_000 }),
+      wallet: cents(1_000_000),
+      fee: cents(2000),
+      isWon: fc.boolean(),
+    });
     fc.assert(
-      fc.property(fc.integer({ min: 1, max: 1_000_000 }), cents(1_000_000), (amount, walletCents) => {
-        const made = chargebackPosting("t", amount, walletCents);
-        expect(sumOf(made)).toBe(0);
-        const wallet = made.find((entry) => entry.accountId === accountId("wallet", "t"))?.cents ?? 0;
-        expect(walletCents + wallet).toBeGreaterThanOrEqual(0);
+      fc.property(amounts, ({ amount, wallet, fee, isWon }) => {
+        const balance = new Map<string, number>([["wallet:t", wallet]]);
+        const of = (id: string) => balance.get(id) ?? 0;
+        const book = (made: readonly { accountId: string; cents: number }[]) => {
+          expect(sumOf(made)).toBe(0);
+          for (const entry of made) balance.set(entry.accountId, of(entry.accountId) + entry.cents);
+          expect(of("wallet:t")).toBeGreaterThanOrEqual(0);
+        };
+        const frozen = Math.min(wallet, amount);
+        if (frozen > 0) book(freezePosting("t", "d", frozen));
+        book(disputeMovePosting({ disputeId: "d", amountCents: -amount, feeCents: fee }));
+        if (isWon) book(disputeMovePosting({ disputeId: "d", amountCents: amount, feeCents: 0 }));
+        if (of("hold:d") !== 0) book(disputeClosedPosting("t", "d", of("hold:d")));
+        expect(of("hold:d")).toBe(0);
+        expect(of("wallet:t")).toBe(isWon ? wallet : wallet - frozen);
+        expect(of("loss")).toBe(isWon ? 0 : frozen - amount || 0);
       }),
+      { numRuns: 2000 },
     );
   });
 

@@ -1,20 +1,15 @@
 import type { Tx } from "@/db/client";
+import { findBatch } from "@/db/queries/batches";
 import { balanceOf, findPosting, insertPosting } from "@/db/queries/ledger";
 import type { Actor } from "@/lib/auth/actor";
 import { AppError, invariant } from "@/lib/errors";
-import { accountId } from "@/lib/ledger/posting";
+import { accountId, type AccountId, type Entry } from "@/lib/ledger/posting";
 import { adjustmentPosting, closePosting, fundPosting, releasePosting } from "@/lib/ledger/postings";
 
+type Fund = { actor: Actor; batchId: string; teamId: string; amountCents: number; nowMs: number };
+
 /** Holds a batch's worst-case cost: from the team's wallet into the batch's escrow, once. */
-export function fundBatch(
-  tx: Tx,
-  {
-    batchId,
-    teamId,
-    amountCents,
-    nowMs,
-  }: { actor: Actor; batchId: string; teamId: string; amountCents: number; nowMs: number },
-): void {
+export function fundBatch(tx: Tx, { batchId, teamId, amountCents, nowMs }: Fund): void {
   if (balanceOf(tx, accountId("wallet", teamId)) < amountCents) {
     throw new AppError("conflict", "The wallet does not hold enough. Top it up first.");
   }
@@ -28,6 +23,11 @@ export function fundBatch(
   });
 }
 
+const debtOf = (tx: Tx, annotatorId: string) => -balanceOf(tx, accountId("debt", annotatorId));
+
+const centsIn = (entries: readonly Entry[], id: AccountId) =>
+  entries.find((entry) => entry.accountId === id)?.cents ?? 0;
+
 type Release = {
   submissionId: string;
   batchId: string;
@@ -37,13 +37,17 @@ type Release = {
   nowMs: number;
 };
 
-/** Pays a settled submission out of escrow, once. */
+/** Pays a settled submission out of escrow, once. What the annotator owes is settled first. */
 export function releaseForSubmission(tx: Tx, { submissionId, nowMs, ...release }: Release): void {
+  const { batchId, annotatorId, payCents, feeCents } = release;
   insertPosting(tx, {
     source: "submission",
     sourceId: submissionId,
     kind: "release",
-    posting: releasePosting(release),
+    posting: releasePosting({ ...release, debtCents: debtOf(tx, annotatorId) }),
+    isRepeatOf: (first) =>
+      centsIn(first, accountId("escrow", batchId)) === -(payCents + feeCents) &&
+      centsIn(first, accountId("fee")) === feeCents,
     memo: "Pay for a settled picture",
     nowMs,
   });
@@ -61,24 +65,37 @@ type Adjust = {
   nowMs: number;
 };
 
-/** Sets right the pay of a submission after a decision, by a posting linked to the first. Once a dispute. */
+/**
+ * Sets right the pay of a submission after a decision, by a posting linked to the first. Once a dispute. After
+ * the batch is closed the difference moves between the annotator and the team's wallet.
+ */
 export function adjustSubmissionPay(tx: Tx, change: Adjust): void {
   const { submissionId, batchId, annotatorId, disputeId, nowMs } = change;
   const first = findPosting(tx, { source: "submission", sourceId: submissionId, kind: "release" });
   invariant(first || change.oldPayCents === 0, "pay that is corrected was posted");
-  const posting = adjustmentPosting({
-    batchId,
-    annotatorId,
-    payDeltaCents: change.newPayCents - change.oldPayCents,
-    feeDeltaCents: change.newFeeCents - change.oldFeeCents,
-    payableCents: balanceOf(tx, accountId("payable", annotatorId)),
-    debtCents: -balanceOf(tx, accountId("debt", annotatorId)),
-  });
+  const payDeltaCents = change.newPayCents - change.oldPayCents;
+  const feeDeltaCents = change.newFeeCents - change.oldFeeCents;
+  if (payDeltaCents === 0 && feeDeltaCents === 0) return;
+  const batch = findBatch(tx, batchId);
   insertPosting(tx, {
     source: "submission",
     sourceId: submissionId,
     kind: `adjust:${disputeId}`,
-    posting,
+    posting: adjustmentPosting({
+      batchId,
+      annotatorId,
+      payDeltaCents,
+      feeDeltaCents,
+      payableCents: balanceOf(tx, accountId("payable", annotatorId)),
+      debtCents: debtOf(tx, annotatorId),
+      ...(batch?.status === "closed" && {
+        closed: { teamId: batch.teamId, walletCents: balanceOf(tx, accountId("wallet", batch.teamId)) },
+      }),
+    }),
+    isRepeatOf: (entries) =>
+      centsIn(entries, accountId("payable", annotatorId)) +
+        centsIn(entries, accountId("debt", annotatorId)) ===
+        payDeltaCents && centsIn(entries, accountId("fee")) === feeDeltaCents,
     memo: "Pay corrected by a decision",
     linkedTo: first?.id ?? null,
     nowMs,

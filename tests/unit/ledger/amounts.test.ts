@@ -1,6 +1,13 @@
 import { describe, expect, it } from "vitest";
 import { InvariantError } from "@/lib/errors";
-import { requireCents, requireNonNegative, splitCents } from "@/lib/ledger/amounts";
+import {
+  formatUsd,
+  minorUnitDigits,
+  requireCents,
+  requireNonNegative,
+  splitCents,
+  toDecimal,
+} from "@/lib/ledger/amounts";
 
 describe("an amount", () => {
   it.each([0.5, Number.NaN, Number.POSITIVE_INFINITY, Number.MAX_SAFE_INTEGER + 1])(
@@ -14,6 +21,34 @@ describe("an amount", () => {
     expect(requireCents(-1, "it")).toBe(-1);
     expect(requireNonNegative(0, "it")).toBe(0);
     expect(() => requireNonNegative(-1, "it")).toThrow(InvariantError);
+  });
+});
+
+describe("an amount in words of its currency (ISO 4217 minor units)", () => {
+  it.each([
+    [123456, "usd", "1234.56"],
+    [-5, "USD", "-0.05"],
+    [0, "eur", "0.00"],
+    [500, "jpy", "500"],
+    [-500, "jpy", "-500"],
+    [1234, "kwd", "1.234"],
+    [Number.MAX_SAFE_INTEGER, "usd", "90071992547409.91"],
+  ])("%d of %s is %s", (minorUnits, currency, text) => {
+    expect(toDecimal(minorUnits, currency)).toBe(text);
+  });
+
+  it("is not guessed for a currency that is not known", () => {
+    expect(() => minorUnitDigits("zzz")).toThrow(RangeError);
+    expect(() => toDecimal(0.5)).toThrow(InvariantError);
+  });
+
+  it.each([
+    [0, "$0.00"],
+    [99, "$0.99"],
+    [123456789, "$1,234,567.89"],
+    [-123456, "-$1,234.56"],
+  ])("%d cents reads %s", (cents, text) => {
+    expect(formatUsd(cents)).toBe(text);
   });
 });
 
