@@ -16,6 +16,8 @@ type Checked =
   | { ok: false; reason: string }
   | {
       ok: true;
+      /** What the first bytes say that the upload is. */
+      mediaType: string;
       working: Buffer;
       workingType: "image/jpeg" | "image/png";
       thumb: Buffer;
@@ -32,7 +34,8 @@ type Checked =
 export async function checkImage({ imageId, nowMs }: { imageId: string; nowMs: number }): Promise<void> {
   const db = getDb();
   const image = findImage(db, imageId);
-  if (!image || image.status !== "checking") return;
+  if (!image || image.status === "awaiting") return;
+  if (image.status !== "checking") return deleteObject(image.originalKey); // a crash may have left it
   const bytes = await getObject(image.originalKey);
   const sha256 = createHash("sha256").update(bytes).digest("hex");
   const checked =
@@ -40,22 +43,20 @@ export async function checkImage({ imageId, nowMs }: { imageId: string; nowMs: n
       ? await inspect(bytes)
       : ({ ok: false, reason: "The file changed on its way. Upload it again." } as const);
   if (!checked.ok) {
-    await deleteObject(image.originalKey);
     db.update(images).set({ status: "refused", refusal: checked.reason }).where(eq(images.id, imageId)).run();
-    return;
+    return deleteObject(image.originalKey);
   }
   const workingKey = `batches/${image.batchId}/images/${imageId}`;
   const thumbKey = `batches/${image.batchId}/thumbs/${imageId}.webp`;
   await putObject(workingKey, checked.working, checked.workingType);
   await putObject(thumbKey, checked.thumb, "image/webp");
-  // The original carries camera and place: the upright, stripped copy replaces it.
-  await deleteObject(image.originalKey);
   inTransaction(db, (tx) => {
     tx.update(images)
       .set({
         status: "ready",
         workingKey,
         thumbKey,
+        mediaType: checked.mediaType, // what the bytes are, not what the browser said
         width: checked.width,
         height: checked.height,
         exifOrientation: checked.orientation,
@@ -72,6 +73,9 @@ export async function checkImage({ imageId, nowMs }: { imageId: string; nowMs: n
       attemptsMax: 3,
     });
   });
+  // The original carries camera and place: the upright, stripped copy replaces it. Last, so that an attempt
+  // that was cut short finds it again.
+  await deleteObject(image.originalKey);
 }
 
 /** Checks and converts the bytes of one upload. Never throws for a bad file: it answers with the reason. */
@@ -108,6 +112,7 @@ export async function inspect(bytes: Buffer): Promise<Checked> {
       .toBuffer();
     return {
       ok: true,
+      mediaType,
       working: upright.data,
       workingType: isLossless ? "image/png" : "image/jpeg",
       thumb,
