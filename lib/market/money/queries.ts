@@ -1,4 +1,4 @@
-import { and, eq, sql } from "drizzle-orm";
+import { and, eq, inArray, sql } from "drizzle-orm";
 import type { Reader } from "@/db/client";
 import { balanceOf, listMovements, sumByKind } from "@/db/queries/ledger";
 import { ledgerEntries, submissions } from "@/db/schema";
@@ -17,26 +17,31 @@ export function walletSummary(
   };
 }
 
-/** A batch's money: funded = released + fees + returned + remaining. */
+/**
+ * A batch's money in cents: funded = released + fees + returned + remaining, at every moment. What decisions
+ * corrected after the batch was closed went through the team's wallet and counts as less or more returned.
+ */
 export function batchMoney(db: Reader, batchId: string) {
   const escrow = accountId("escrow", batchId);
-  const sums = sumByKind(db, escrow);
-  const fundedCents = sums.get("fund") ?? 0;
-  const returnedCents = -(sums.get("close") ?? 0);
+  const fundedCents = sumByKind(db, escrow).get("fund") ?? 0;
   const remainingCents = balanceOf(db, escrow);
-  const spentCents = fundedCents - returnedCents - remainingCents;
-  const feeCents = feesOf(db, batchId);
-  return { fundedCents, returnedCents, remainingCents, releasedCents: spentCents - feeCents, feeCents };
+  const { releasedCents, feeCents } = billOf(db, batchId);
+  const returnedCents = fundedCents - remainingCents - releasedCents - feeCents;
+  return { fundedCents, returnedCents, remainingCents, releasedCents, feeCents };
 }
 
-/** Fees of the batch's settled submissions, corrections included. */
-function feesOf(db: Reader, batchId: string): number {
+/** Pay and fees of the batch's settled submissions, corrections included. */
+function billOf(db: Reader, batchId: string): { releasedCents: number; feeCents: number } {
+  const { payCents, feeCents } = submissions;
   const row = db
-    .select({ cents: sql<number>`coalesce(sum(${submissions.feeCents}), 0)` })
+    .select({
+      releasedCents: sql<number>`coalesce(sum(${payCents}), 0)`,
+      feeCents: sql<number>`coalesce(sum(${feeCents}), 0)`,
+    })
     .from(submissions)
     .where(eq(submissions.batchId, batchId))
     .get();
-  return row?.cents ?? 0;
+  return row ?? { releasedCents: 0, feeCents: 0 };
 }
 
 /** What an annotator has earned, may ask for, has on the way, and owes. */
@@ -46,6 +51,8 @@ export function earnings(
   { limit = 50, beforeId }: { limit?: number; beforeId?: number } = {},
 ) {
   const payable = accountId("payable", annotatorId);
+  const debt = accountId("debt", annotatorId);
+  // Pay that settled a debt was earned as well, so both accounts count.
   const months = db
     .select({
       month: sql<string>`strftime('%Y-%m', ${ledgerEntries.postedAtMs} / 1000, 'unixepoch')`,
@@ -54,7 +61,7 @@ export function earnings(
     .from(ledgerEntries)
     .where(
       and(
-        eq(ledgerEntries.accountId, payable),
+        inArray(ledgerEntries.accountId, [payable, debt]),
         sql`exists (select 1 from ledger_postings p where p.id = ${ledgerEntries.postingId} and p.source = 'submission')`,
       ),
     )
@@ -64,7 +71,7 @@ export function earnings(
   return {
     payableCents: balanceOf(db, payable),
     transitCents: balanceOf(db, accountId("transit", annotatorId)),
-    debtCents: -balanceOf(db, accountId("debt", annotatorId)),
+    debtCents: 0 - balanceOf(db, debt), // never "-0"
     earnedCents: months.reduce((sum, row) => sum + row.cents, 0),
     months,
     movements: listMovements(db, payable, { limit, ...(beforeId && { beforeId }) }),
