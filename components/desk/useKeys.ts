@@ -18,7 +18,7 @@ export function useKeys(controller: DeskController, actions: Actions): boolean {
   useEffect(() => {
     const down = (event: KeyboardEvent) => {
       const target = event.target instanceof HTMLElement ? event.target : null;
-      const isTyping = target?.closest("input:not([type=range]), textarea, select, [role=dialog]");
+      const isTyping = target?.closest("input:not([type=range]), textarea, select, [role=dialog], [role=alertdialog]");
       if (isTyping || event.isComposing) return;
       const isButton = target?.closest("button, a, summary");
       if (isButton && (event.key === " " || event.key === "Enter")) return;

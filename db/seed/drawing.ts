@@ -24,7 +24,6 @@ const SECONDS: Record<Annotator["care"], { image: number; instance: number }> = 
   careful: { image: 24, instance: 16 },
   steady: { image: 20, instance: 13 },
   hasty: { image: 14, instance: 9 },
-  boxy: { image: 14, instance: 7 },
   careless: { image: 10, instance: 7 },
 };
 
