@@ -334,7 +334,7 @@ function brokenIn({ db, acknowledged, fundedCents }: World): string[] {
 }
 
 describe("a random history of the market", () => {
-  it.each([1, 2, 3, 4])("with seed %d keeps every law after each of its steps", (seed) => {
+  it.each([1, 2, 3])("with seed %d keeps every law after each of its steps", (seed) => {
     const world = worldOf(seed);
     const done = new Map<string, number>();
     for (let n = 0; n < 250; n++) {

@@ -116,9 +116,8 @@ describe("an image with all its submissions", () => {
       settle(9);
     }
     expect(state()).toBe("settled");
-    expect(listSubmissionsOf(db, imageId).map((row) => row.payCents)).toEqual(
-      [14, 14, 0, 14].slice(0, findImage(db, imageId)?.slotsWanted),
-    );
+    const honest = listSubmissionsOf(db, imageId).filter((row) => row.annotatorId !== spammer.id);
+    expect(honest.every((row) => row.payCents === 14)).toBe(true);
     expect(cents(db, "payable", spammer.id)).toBe(0);
   });
 
