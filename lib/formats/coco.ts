@@ -23,7 +23,7 @@ import {
 import {
   asFields,
   asList,
-  asNumber,
+  asCoordinate,
   asSize,
   asText,
   asWhole,
@@ -123,21 +123,17 @@ function parseRing(value: unknown, record: string, index: number): Ring {
   }
   const ring: Point[] = [];
   for (let i = 0; i < flat.length; i += 2) {
-    const x = asNumber(flat[i], record, `segmentation[${index}][${i}]`);
-    const y = asNumber(flat[i + 1], record, `segmentation[${index}][${i + 1}]`);
+    const x = asCoordinate(flat[i], record, `segmentation[${index}][${i}]`);
+    const y = asCoordinate(flat[i + 1], record, `segmentation[${index}][${i + 1}]`);
     ring.push([x, y]);
   }
   return ring;
 }
 
-/** Coordinates beyond this are no outline that an operation on it could make sense of. */
-const COORDINATE_MAX = 1e7;
-
 function withoutOverlap(rings: Rings): Rings {
   const boxes = rings.map(boxOfRing);
   const mayMeet = boxes.some((a, i) => boxes.slice(0, i).some((b) => boxIntersectionArea(a, b) > 0));
-  if (!mayMeet || rings.flat().some((point) => point.some((value) => Math.abs(value) > COORDINATE_MAX)))
-    return rings;
+  if (!mayMeet) return rings;
   const separate = rings.reduce((sum, ring) => sum + ringsArea([ring]), 0);
   return Math.abs(separate - ringsArea(rings)) <= 1e-9 * separate
     ? rings

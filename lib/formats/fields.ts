@@ -29,6 +29,17 @@ export function asNumber(value: unknown, record: string, field: string): number 
   return value;
 }
 
+/** No image is larger; a coordinate beyond is a mistake that later sums would turn into nonsense. */
+const COORDINATE_PX_MAX = 1e7;
+
+/** A coordinate or length in px. It may lie outside the image, as in published sets, but not without bounds. */
+export function asCoordinate(value: unknown, record: string, field: string): number {
+  const number = asNumber(value, record, field);
+  if (Math.abs(number) > COORDINATE_PX_MAX)
+    throw new FormatError(record, `${field} is ${number}, which no image reaches`);
+  return number;
+}
+
 export function asWhole(value: unknown, record: string, field: string, min = 0): number {
   if (typeof value !== "number" || !Number.isSafeInteger(value) || value < min) {
     throw new FormatError(record, `${field} is ${describe(value)}, not a whole number from ${min} on`);

@@ -2,14 +2,13 @@ import { ringOfBox } from "@/lib/geometry/box";
 import { maskFromRle, rleFromMask } from "@/lib/geometry/rle";
 import { rasteriseRings } from "@/lib/geometry/mask";
 import { partsOfRings, withSense } from "@/lib/geometry/nest";
-import { signedRingArea } from "@/lib/geometry/ring";
 import { traceMask } from "@/lib/geometry/trace";
 import type { LabelShape } from "@/lib/geometry/rle";
 import type { Point, Ring, Rings } from "@/lib/geometry/types";
 import { contextOf } from "./cocoFile";
 import { parseCocoClass, parseCocoImage, type CocoContext } from "./coco";
 import { classNames, FormatError, type Dataset, type DatasetAnnotation, type DatasetSource } from "./dataset";
-import { asFields, asList, asNumber, asWhole, describe, findFlag, present, type Fields } from "./fields";
+import { asFields, asList, asCoordinate, asWhole, describe, findFlag, present, type Fields } from "./fields";
 import { extraFields, parseExtras } from "./properties";
 
 /** Says what the numbers mean, since RFC 7946 knows only longitude and latitude. */
@@ -19,8 +18,8 @@ const COORDINATES =
 /**
  * Writes a dataset as one GeoJSON-shaped feature collection, a piece at a time: a feature an annotation, a MultiPolygon
  * or Polygon with holes, classes and images as foreign members. The geometry is RFC 7946's; the coordinates are
- * pixels, so the file does not conform to its reference system. Outer rings run as a right-handed y-up reader
- * expects (anticlockwise in its axes). Masks are traced along their pixels' edges, without loss.
+ * pixels, so the file does not conform to its reference system. Outer rings run
+ * anticlockwise and holes clockwise for a reader whose y points up. Masks are traced along their pixels' edges, without loss.
  */
 export function* writeGeoJson(source: DatasetSource): Generator<string> {
   const nameOf = classNames(source.classes);
@@ -67,8 +66,8 @@ function geometryOf(shape: LabelShape): Fields {
         ? shape.rings
         : traceMask(maskFromRle(shape.rle));
   const parts = partsOfRings(rings.filter((ring) => ring.length >= 3)).map(({ outer, holes }) =>
-    // With y down, anticlockwise in y-up axes is clockwise on screen; readers that draw y up see it their way round.
-    [withSense(outer, false), ...holes.map((hole) => withSense(hole, true))].map(closed),
+    // RFC 7946 wants outer rings anticlockwise in axes with y up, which is clockwise on our screen.
+    [withSense(outer, true), ...holes.map((hole) => withSense(hole, false))].map(closed),
   );
   return parts.length === 1
     ? { type: "Polygon", coordinates: parts[0] }
@@ -152,16 +151,15 @@ function parseGeometry({ type, coordinates }: Fields, record: string): Rings {
   throw new FormatError(record, `geometry is ${describe(type)}, not Polygon or MultiPolygon`);
 }
 
-/** A linear ring has four positions or more, the last one the first again; ours runs clockwise and open. */
+/** A linear ring has four positions or more, the last one the first again. */
 function parseRing(value: unknown, record: string): Ring {
   const ring = asList(value, record, "a ring").map((position): Point => {
     const [x, y] = asList(position, record, "a position");
-    return [asNumber(x, record, "a coordinate"), asNumber(y, record, "a coordinate")];
+    return [asCoordinate(x, record, "a coordinate"), asCoordinate(y, record, "a coordinate")];
   });
   const [first, last] = [ring[0], ring[ring.length - 1]];
   if (!first || !last || ring.length < 4 || first[0] !== last[0] || first[1] !== last[1]) {
     throw new FormatError(record, "a ring needs four positions or more, the last the same as the first");
   }
-  const open = ring.slice(0, -1);
-  return signedRingArea(open) < 0 ? open : open.toReversed();
+  return ring.slice(0, -1);
 }

@@ -1,6 +1,6 @@
 import type { Box } from "@/lib/geometry/types";
 import { FormatError, type DatasetAnnotation } from "./dataset";
-import { asList, asNumber, findFlag, findNumber, present, type Fields } from "./fields";
+import { asCoordinate, asList, findFlag, findNumber, present, type Fields } from "./fields";
 
 type Extras = Pick<
   DatasetAnnotation,
@@ -29,7 +29,9 @@ export function parseExtras(fields: Fields, record: string): Extras {
 
 /** Four numbers: x, y, width, height. */
 export function parseFour(value: unknown, record: string): Box {
-  const numbers = asList(value, record, "bbox").map((number) => asNumber(number, record, "a number of bbox"));
+  const numbers = asList(value, record, "bbox").map((number) =>
+    asCoordinate(number, record, "a number of bbox"),
+  );
   const [x, y, width, height] = numbers;
   if (
     numbers.length !== 4 ||

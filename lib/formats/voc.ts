@@ -9,7 +9,7 @@ import {
   type DatasetSource,
   type OutputFile,
 } from "./dataset";
-import { asFields, asList, asSize, asText, describe, present, type Fields } from "./fields";
+import { asCoordinate, asFields, asList, asSize, asText, describe, present, type Fields } from "./fields";
 import { withExtension } from "./names";
 
 const encoder = new TextEncoder();
@@ -153,13 +153,7 @@ function parseVoc({ path, text }: TextFile, id: number) {
 function parseObject(value: unknown, record: string) {
   const fields = asFields(value, record);
   const bounds = asFields(fields.bndbox, `${record}: bndbox`);
-  const read = (key: string) => {
-    const number = whole(bounds[key]);
-    if (typeof number !== "number" || !Number.isFinite(number)) {
-      throw new FormatError(record, `${key} is ${describe(bounds[key])}, not a finite number`);
-    }
-    return number;
-  };
+  const read = (key: string) => asCoordinate(whole(bounds[key]), record, key);
   const [left, top, right, bottom] = [read("xmin"), read("ymin"), read("xmax"), read("ymax")];
   if (right < left || bottom < top) throw new FormatError(record, `the box ends before it begins`);
   const box: Box = [left - 1, top - 1, right - left + 1, bottom - top + 1];

@@ -13,7 +13,17 @@ import {
   type DatasetImage,
   type DatasetSource,
 } from "./dataset";
-import { asFields, asList, asText, asWhole, describe, findFlag, present, type Fields } from "./fields";
+import {
+  asCoordinate,
+  asFields,
+  asList,
+  asText,
+  asWhole,
+  describe,
+  findFlag,
+  present,
+  type Fields,
+} from "./fields";
 import { extraFields, parseExtras } from "./properties";
 
 const CONTEXT = ["http://www.w3.org/ns/anno.jsonld", { schema: "https://schema.org/" }];
@@ -184,7 +194,9 @@ function parseSelector(selector: Fields, kind: unknown, image: DatasetImage, rec
       value,
     );
     if (!match) throw new FormatError(record, `selector.value ${describe(value)} is no xywh=pixel fragment`);
-    const [x = 0, y = 0, width = 0, height = 0] = match.slice(1).map(Number);
+    const [x = 0, y = 0, width = 0, height = 0] = match
+      .slice(1)
+      .map((number) => asCoordinate(Number(number), record, "a number of the fragment"));
     return { kind: "box", box: [x, y, width, height] };
   }
   if (selector.type !== "SvgSelector") {
@@ -226,7 +238,7 @@ function parsePath(path: string, record: string): Rings {
     if (!ring || tokens[i + 2] === undefined || !Number.isFinite(x) || !Number.isFinite(y)) {
       throw new FormatError(record, "the path has a point that is not two finite numbers");
     }
-    ring.push([x, y]);
+    ring.push([asCoordinate(x, record, "a coordinate"), asCoordinate(y, record, "a coordinate")]);
     i += 3;
   }
   if (rings.some((ring) => ring.length < 3))

@@ -1,5 +1,6 @@
 import { Clipper, ClipType, FillRule, type PathsD } from "clipper2-ts";
 import { boxOfRings } from "./box";
+import { clipRingToBox } from "./clipRing";
 import { withoutRepeats, withoutSpikes } from "./clean";
 import { prepareRings, regionIntersectionArea, type Region } from "./region";
 import { ringPerimeter } from "./ring";
@@ -75,42 +76,14 @@ export function cutHole(rings: Rings, hole: Ring): Rings {
 }
 
 /**
- * The part of a region inside an image of this size, as rings that do not cross. Source: Sutherland and Hodgman, 1974,
- * one side of the image after the other; the edges that it leaves along a side cancel under the even-odd rule
- * and are then resolved.
+ * The part of a region inside an image of this size, as rings that do not cross.
  */
 export function clipRingsToImage(rings: Rings, width: number, height: number): Rings {
-  const sides = [
-    { axis: 0, sign: 1, at: 0 },
-    { axis: 0, sign: -1, at: width },
-    { axis: 1, sign: 1, at: 0 },
-    { axis: 1, sign: -1, at: height },
-  ] as const;
-  const inside = sides.reduce((kept, side) => kept.map((ring) => clipToSide(ring, side)), rings);
+  const inside = rings.map((ring) => clipRingToBox(ring, [0, 0, width, height]));
   // Rounding of the clipper may leave a corner a hair outside.
   return normaliseRings(inside).map((ring) =>
     ring.map(([x, y]): Point => [Math.min(width, Math.max(0, x)), Math.min(height, Math.max(0, y))]),
   );
-}
-
-type Side = { readonly axis: 0 | 1; readonly sign: 1 | -1; readonly at: number };
-
-function clipToSide(ring: Ring, { axis, sign, at }: Side): Ring {
-  const kept: Point[] = [];
-  let from = ring[ring.length - 1];
-  for (const to of ring) {
-    if (from === undefined) break;
-    const fromIn = sign * (from[axis] - at) >= 0;
-    const toIn = sign * (to[axis] - at) >= 0;
-    if (fromIn !== toIn) {
-      const t = (at - from[axis]) / (to[axis] - from[axis]);
-      const across = from[1 - axis]! + t * (to[1 - axis]! - from[1 - axis]!);
-      kept.push(axis === 0 ? [at, across] : [across, at]);
-    }
-    if (toIn) kept.push(to);
-    from = to;
-  }
-  return kept;
 }
 
 /**

@@ -1,3 +1,4 @@
+import { clipRingToBox } from "./clipRing";
 import type { Rle } from "./rle";
 import type { Ring } from "./types";
 
@@ -11,7 +12,7 @@ const SCALE = 5;
  * only. Source: Lin et al., 2014, reference code. O(outline length + runs log runs).
  */
 export function rleFromCocoPolygon(ring: Ring, width: number, height: number): Rle {
-  const boundary = downsampled(walk(ring), width, height);
+  const boundary = downsampled(walk(nearby(ring, width, height)), width, height);
   boundary.push(width * height);
   const ends = Uint32Array.from(boundary).sort();
   const runs = ends.map((end, i) => end - (ends[i - 1] ?? 0));
@@ -21,6 +22,12 @@ export function rleFromCocoPolygon(ring: Ring, width: number, height: number): R
     else if (++i < runs.length) counts[counts.length - 1]! += runs[i]!;
   }
   return { width, height, counts };
+}
+
+/** Outlines that leave the image by more than its own size are cut there, or the walk would have no end. */
+function nearby(ring: Ring, width: number, height: number): Ring {
+  const isFar = ring.some(([x, y]) => x < -width || y < -height || x > 2 * width || y > 2 * height);
+  return isFar ? clipRingToBox(ring, [-width, -height, 3 * width, 3 * height]) : ring;
 }
 
 /** Every point of the outline on the fine grid. The line is walked from its lower end, so both directions agree. */
