@@ -29,6 +29,11 @@ export type Candidates = {
   readonly explained: ReadonlyMap<number, Explanation>;
 };
 
+/** More people, and people who are trusted more: one person's word never explains away another's. */
+function outweighs(a: Draft, b: Draft): boolean {
+  return a.voters > b.voters && a.weight > b.weight;
+}
+
 /** Share of a covered object's area that the covering instance holds at least. */
 const COVERED_MIN = 0.6;
 /** Share of the covering instance that is made up of the objects it covers. */
@@ -130,8 +135,8 @@ function takeOutCoverers(
       });
       if (suspects.length === 0 || suspects.length === drafts[c]!.members.length) continue;
       const rest = redraft(drafts[c]!.members.filter((item) => !suspects.includes(item)));
-      const weight = redraft(suspects).weight * 1.001;
-      if (rest.weight <= weight || other.weight <= weight) continue;
+      const united = redraft(suspects);
+      if (!outweighs(rest, united) || !outweighs(other, united)) continue;
       for (const item of suspects) {
         const { spans } = image.items[item]!;
         const { commonPx2, bPx2 } = overlapOf(spans, rest.spans);
@@ -212,7 +217,7 @@ function explainItem(
   for (let c = 0; c < drafts.length; c++) {
     const other = drafts[c]!;
     if (c === own || dissolved.has(c) || !boxesMeet(spans.box, other.spans.box)) continue;
-    const heavier = other.weight > drafts[own]!.weight * 1.001;
+    const heavier = outweighs(other, drafts[own]!);
     // Two people who draw the same two objects independently have seen a border; one who unites them overlooked it.
     const borne = heavier || (other.voters >= 2 && other.weight * COVERER_WEIGHT_MAX >= drafts[own]!.weight);
     if (!borne) continue;

@@ -230,8 +230,11 @@ function byLabel(list: readonly number[], labels: Int32Array): Clusters {
   return [...lists.values(), ...alone];
 }
 
-/** Cost of opening a facility, in units of similarity: small, so that a lone instance still stands for itself. */
-const FACILITY_COST = 0.1;
+/**
+ * Cost of opening a facility, in units of similarity: below the 1 - iouCut that a lone instance gains by
+ * standing for itself, above what a second exemplar of one object gains.
+ */
+const FACILITY_COST = 0.5;
 
 function byFacility(input: ClusterInput, cut: number): Clusters {
   const near = neighbours(input);

@@ -690,24 +690,37 @@ export function wilson(successes: number, trials: number): Estimate {
   return { value: p, low: Math.max(0, middle - half), high: Math.min(1, middle + half) };
 }
 
-/** Mean difference, in logits, between measured and predicted IoU on gold images; shrunk while they are few. */
+/**
+ * The shift in logits at which predicted and measured IoU on gold images have the same mean; shrunk while they
+ * are few, as if SHIFT_PRIOR further objects had shown no need of one.
+ */
 function shiftFrom(
   gold: readonly { labels: ImageLabels; truth: readonly LabelledInstance[] }[],
   settings: ConsensusSettings,
   reliability: Reliability,
 ): number {
-  let sum = 0;
-  let count = 0;
+  const predicted: number[] = [];
+  let measured = 0;
   for (const { labels, truth } of gold) {
     const shapes = truth.map(({ shape }) => spansOf(shape));
     for (const { fused, fusion } of judgeImage(labels, settings, reliability).judged) {
       if (!fused) continue;
       const spans = spansOf(fused.shape);
       const best = shapes.reduce((most, shape) => Math.max(most, drawnIou(spans, shape)), 0);
-      if (best <= 0.5) continue;
-      sum += iouLogit(best) - iouLogit(predictIou(fusion));
-      count++;
+      if (best <= 0.3) continue;
+      predicted.push(iouLogit(predictIou(fusion)));
+      measured += best;
     }
   }
-  return count === 0 ? 0 : sum / (count + 10);
+  if (predicted.length === 0) return 0;
+  let [low, high] = [-4, 4];
+  for (let step = 0; step < 40; step++) {
+    const middle = (low + high) / 2;
+    const sum = predicted.reduce((total, logit) => total + 1 / (1 + Math.exp(-logit - middle)), 0);
+    if (sum < measured) low = middle;
+    else high = middle;
+  }
+  return (((low + high) / 2) * predicted.length) / (predicted.length + SHIFT_PRIOR);
 }
+
+const SHIFT_PRIOR = 15;

@@ -19,7 +19,15 @@ export type AnnotatorLabels = { annotatorId: string; instances: readonly Labelle
 export type ImageLabels = { width: number; height: number; annotators: readonly AnnotatorLabels[] };
 
 /** How instances of several annotators are gathered into one object; see the docstrings in cluster.ts. */
-export type ConsensusMethod = "average" | "suppression" | "mean-shift" | "single" | "hdbscan" | "facility";
+export const CONSENSUS_METHODS = [
+  "average",
+  "suppression",
+  "mean-shift",
+  "single",
+  "hdbscan",
+  "facility",
+] as const;
+export type ConsensusMethod = (typeof CONSENSUS_METHODS)[number];
 
 /** How the members of one object become one outline. */
 export type FusionMethod = "weighted" | "majority" | "staple" | "medoid";
