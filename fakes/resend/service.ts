@@ -182,18 +182,21 @@ export function createResend(options: ResendOptions): ResendService {
     );
   }
 
-  const summary = (mail: Mail): Record<string, unknown> => ({
-    id: mail.id,
-    to: mail.to,
-    from: mail.from,
-    created_at: mail.createdAt,
-    subject: mail.subject,
-    bcc: mail.bcc,
-    cc: mail.cc,
-    reply_to: mail.replyTo,
-    last_event: statusOf(mail),
-    scheduled_at: null,
-  });
+  function summary(mail: Mail): Record<string, unknown> {
+    const { id, to, from, subject, bcc, cc } = mail;
+    return {
+      id,
+      to,
+      from,
+      created_at: mail.createdAt,
+      subject,
+      bcc,
+      cc,
+      reply_to: mail.replyTo,
+      last_event: statusOf(mail),
+      scheduled_at: null,
+    };
+  }
 
   async function sendOnce(call: Call, isBatch: boolean): Promise<Answer> {
     const body = await readAll(call.body, BODY_BYTES_MAX);

@@ -64,12 +64,8 @@ export function canonicalQuery(query: string): string {
 
 const compare = (a: string, b: string): number => (a < b ? -1 : a > b ? 1 : 0);
 
-/** Values joined by commas are trimmed one by one, as when each stood on a line of its own. */
-const trimmed = (value: string): string =>
-  value
-    .split(",")
-    .map((part) => part.trim().replace(/\s+/g, " "))
-    .join(",");
+/** Outer blanks go and inner runs become one. Repeated headers come joined by commas, each trimmed by the parser. */
+const trimmed = (value: string): string => value.trim().replace(/\s+/g, " ");
 
 /** S3 signs the path as it is: dots and doubled slashes are part of a key and are not normalised. */
 export function canonicalRequest({

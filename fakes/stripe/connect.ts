@@ -63,6 +63,7 @@ export function createAccount(world: World, params: Params): Account {
         minority_owned_business_designation: null,
         name: null,
         product_description: null,
+        specified_commercial_transactions_act_url: null,
         support_address: null,
         support_email: null,
         support_phone: null,
@@ -102,6 +103,8 @@ export function createAccount(world: World, params: Params): Account {
           statement_descriptor: null,
           statement_descriptor_kana: null,
           statement_descriptor_kanji: null,
+          statement_descriptor_prefix_kana: null,
+          statement_descriptor_prefix_kanji: null,
         },
         payouts: {
           debit_negative_balances: true,

@@ -73,7 +73,12 @@ export function openDispute(world: World, charge: Charge, reason = "fraudulent")
       livemode: false,
       payment_method_details: {
         type: "card",
-        card: { brand: brandOf(charge._card ?? ""), case_type: "chargeback", network_reason_code: "10.4" },
+        card: {
+          brand: brandOf(charge._card ?? ""),
+          case_type: "chargeback",
+          network: brandOf(charge._card ?? ""),
+          network_reason_code: "10.4",
+        },
       },
       reason,
     },

@@ -9,7 +9,9 @@ const LEVELS_MAX = 4;
 const RANGES = ["gt", "gte", "lt", "lte"] as const;
 
 /** Parameters that every list takes. */
-export const LIST_PARAMS = ["limit", "starting_after", "ending_before", "created"];
+export const PAGE_PARAMS = ["limit", "starting_after", "ending_before"];
+/** Most lists are narrowed by time, too. */
+export const LIST_PARAMS = [...PAGE_PARAMS, "created"];
 
 /** A page of rows, newest first, with cursors (https://docs.stripe.com/api/pagination). */
 export function listPage<T extends { id: string; created?: number }>(

@@ -15,7 +15,7 @@ import {
 import { closeDispute, updateDispute } from "./disputes";
 import { StripeError, badParameter, invalid, noSuch } from "./errors";
 import type { Params } from "./form";
-import { LIST_PARAMS, expand, lineItems, listPage, matching } from "./lists";
+import { LIST_PARAMS, PAGE_PARAMS, expand, lineItems, listPage, matching } from "./lists";
 import type {
   Account,
   Charge,
@@ -66,7 +66,6 @@ const INTENT_PARAMS = [
   "receipt_email",
   "payment_method",
   "payment_method_types",
-  "automatic_payment_methods",
   "statement_descriptor",
   "statement_descriptor_suffix",
   "setup_future_usage",
@@ -93,12 +92,13 @@ function reading<T extends Kept>(
   what: string,
   table: (world: World) => Table<T>,
   filters: readonly (keyof T & string)[] = [],
+  base: readonly string[] = LIST_PARAMS,
 ): Route[] {
   return [
     {
       method: "GET",
       path,
-      params: [...LIST_PARAMS, ...filters],
+      params: [...base, ...filters],
       run: ({ world, params, account }) =>
         listPage(matching(table(world), account, params, filters), params, path, (row) => world.render(row)),
     },
@@ -194,7 +194,7 @@ export const ROUTES: Route[] = [
   {
     method: "GET",
     path: "/v1/checkout/sessions/:id/line_items",
-    params: LIST_PARAMS,
+    params: PAGE_PARAMS,
     run: ({ world, account, ids }) =>
       lineItems(world, world.get(world.sessions, "checkout.session", first(ids), account).id),
   },
@@ -340,10 +340,13 @@ export const ROUTES: Route[] = [
       return { id, object: "customer", deleted: true };
     },
   },
-  ...reading<PaymentMethod>("/v1/payment_methods", "PaymentMethod", (world) => world.methods, [
-    "customer",
-    "type",
-  ]),
+  ...reading<PaymentMethod>(
+    "/v1/payment_methods",
+    "PaymentMethod",
+    (world) => world.methods,
+    ["customer", "type"],
+    PAGE_PARAMS,
+  ),
   {
     method: "POST",
     path: "/v1/payment_methods",
@@ -441,7 +444,7 @@ export const ROUTES: Route[] = [
   {
     method: "GET",
     path: "/v1/accounts/:id/external_accounts",
-    params: [...LIST_PARAMS, "object"],
+    params: PAGE_PARAMS,
     run: (request) =>
       listPage(
         accountOf(request)._banks,
@@ -503,7 +506,7 @@ export const ROUTES: Route[] = [
   {
     method: "GET",
     path: "/v1/transfers/:id/reversals",
-    params: LIST_PARAMS,
+    params: PAGE_PARAMS,
     run: (request) => {
       const { id } = transferOf(request);
       return listPage(
@@ -604,7 +607,13 @@ export const ROUTES: Route[] = [
     params: [],
     run: ({ world, account, ids }) => world.get(world.events, "event", first(ids), account),
   },
-  ...reading<Endpoint>("/v1/webhook_endpoints", "webhook endpoint", (world) => world.endpoints),
+  ...reading<Endpoint>(
+    "/v1/webhook_endpoints",
+    "webhook endpoint",
+    (world) => world.endpoints,
+    [],
+    PAGE_PARAMS,
+  ),
   {
     method: "POST",
     path: "/v1/webhook_endpoints",
