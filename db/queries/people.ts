@@ -16,6 +16,10 @@ export function findUserByEmail(db: Reader, email: string): UserRow | undefined 
   return db.select().from(users).where(eq(users.email, email.trim().toLowerCase())).get();
 }
 
+export function findTeam(db: Reader, teamId: string): TeamRow | undefined {
+  return db.select().from(teams).where(eq(teams.id, teamId)).get();
+}
+
 /** A person's role in a team, or undefined for an outsider. */
 export function getTeamRole(db: Reader, teamId: string, userId: string): TeamRole | undefined {
   return db

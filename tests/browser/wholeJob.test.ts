@@ -33,12 +33,18 @@ beforeAll(async () => {
   stack = await startStack();
   browser = await launchBrowser();
   pictures = [
-    ...(await Promise.all(Array.from({ length: 10 }, (_, index) => pebblePicture(`pebbles-${String(index + 1).padStart(2, "0")}.jpg`, 40 + index)))),
+    ...(await Promise.all(
+      Array.from({ length: 10 }, (_, index) =>
+        pebblePicture(`pebbles-${String(index + 1).padStart(2, "0")}.jpg`, 40 + index),
+      ),
+    )),
     await turned(await pebblePicture("turned.jpg", 77)),
     coinsPicture(),
   ];
   const db = new Database(stack.databaseFile);
-  db.prepare("insert into users (id, email, name, role, password_hash, email_verified_at_ms, created_at_ms) values (?, ?, ?, 'admin', ?, 1, 1)").run("usr_admin", ADMIN.email, "Ada Merrin", await hashPassword(ADMIN.password));
+  db.prepare(
+    "insert into users (id, email, name, role, password_hash, email_verified_at_ms, created_at_ms) values (?, ?, ?, 'admin', ?, 1, 1)",
+  ).run("usr_admin", ADMIN.email, "Ada Merrin", await hashPassword(ADMIN.password));
   db.close();
 });
 
@@ -58,142 +64,207 @@ async function freshPage(): Promise<Page> {
 const truthOf = (name: string) => pictures.find((picture) => picture.name === name)?.truth ?? [];
 
 /** A ring shifted by a person's own error, px. */
-const shifted = (ring: readonly Point[], dx: number, dy: number): Point[] => ring.map(([x, y]) => [Math.max(0, x + dx), Math.max(0, y + dy)]);
+const shifted = (ring: readonly Point[], dx: number, dy: number): Point[] =>
+  ring.map(([x, y]) => [Math.max(0, x + dx), Math.max(0, y + dy)]);
 
 describe("the whole job", () => {
-  it("goes from an empty database to a release that fits the truth, and the books balance", { timeout: 420_000 }, async () => {
-    // ---- the requester signs up by mail link and uploads
-    const requester = await freshPage();
-    await signUpByMail(requester, stack, { name: "Ines Calder", email: "ines@skerrow.example", role: "requester" });
-    await requester.getByRole("link", { name: "New batch" }).first().click();
-    await requester.getByLabel("Title").fill("Pebbles and coins");
-    await requester.getByRole("button", { name: "Go on to the pictures" }).click();
-    await requester.waitForURL(/\/setup\/images$/);
-    const batchId = /batches\/([^/]+)\//.exec(requester.url())?.[1] ?? "";
-    await requester.locator("input[type=file]").setInputFiles([
-      ...pictures.map(({ name, bytes }) => ({ name, buffer: bytes, mimeType: name.endsWith("png") ? "image/png" : "image/jpeg" })),
-      { name: "notes.jpg", buffer: Buffer.from("these are notes, not a picture"), mimeType: "image/jpeg" },
-      { name: "report.pdf", buffer: Buffer.from("%PDF-1.7"), mimeType: "application/pdf" },
-      { name: "copy-of-01.jpg", buffer: pictures[0]?.bytes ?? Buffer.alloc(0), mimeType: "image/jpeg" },
-    ]);
-    await requester.getByRole("heading", { name: "In the batch: 12" }).waitFor({ timeout: 60_000 });
-    await requester.getByText("whatever its name says").waitFor();
-    await requester.getByText("Not a JPEG, PNG, WebP, AVIF or TIFF picture.").waitFor();
-    await requester.getByText(/The same picture is here already/).waitFor();
-    // The turned photograph is upright, and nothing of its camera is left in the stored copy.
-    const list = (await (await requester.request.get(`${stack.url}/api/batches/${batchId}/images`)).json()) as { images: { id: string; fileName: string; status: string; width: number; height: number }[] };
-    const turnedImage = list.images.find((image) => image.fileName === "turned.jpg");
-    expect([turnedImage?.width, turnedImage?.height]).toEqual([640, 480]);
-    const stored = await (await requester.request.get(`${stack.url}/api/images/${turnedImage?.id}/working`)).body();
-    expect(stored.includes("Testcam") || stored.includes("Exif")).toBe(false);
-    const idOf = new Map(list.images.map((image) => [image.fileName, image.id]));
+  it(
+    "goes from an empty database to a release that fits the truth, and the books balance",
+    { timeout: 420_000 },
+    async () => {
+      // ---- the requester signs up by mail link and uploads
+      const requester = await freshPage();
+      await signUpByMail(requester, stack, {
+        name: "Ines Calder",
+        email: "ines@skerrow.example",
+        role: "requester",
+      });
+      await requester.getByRole("link", { name: "New batch" }).first().click();
+      await requester.getByLabel("Title").fill("Pebbles and coins");
+      await requester.getByRole("button", { name: "Go on to the pictures" }).click();
+      await requester.waitForURL(/\/setup\/images$/);
+      const batchId = /batches\/([^/]+)\//.exec(requester.url())?.[1] ?? "";
+      await requester
+        .locator("input[type=file]")
+        .setInputFiles([
+          ...pictures.map(({ name, bytes }) => ({
+            name,
+            buffer: bytes,
+            mimeType: name.endsWith("png") ? "image/png" : "image/jpeg",
+          })),
+          {
+            name: "notes.jpg",
+            buffer: Buffer.from("these are notes, not a picture"),
+            mimeType: "image/jpeg",
+          },
+          { name: "report.pdf", buffer: Buffer.from("%PDF-1.7"), mimeType: "application/pdf" },
+          { name: "copy-of-01.jpg", buffer: pictures[0]?.bytes ?? Buffer.alloc(0), mimeType: "image/jpeg" },
+        ]);
+      await requester.getByRole("heading", { name: "In the batch: 12" }).waitFor({ timeout: 60_000 });
+      await requester.getByText("whatever its name says").waitFor();
+      await requester.getByText("Not a JPEG, PNG, WebP, AVIF or TIFF picture.").waitFor();
+      await requester.getByText(/The same picture is here already/).waitFor();
+      // The turned photograph is upright, and nothing of its camera is left in the stored copy.
+      const list = (await (
+        await requester.request.get(`${stack.url}/api/batches/${batchId}/images`)
+      ).json()) as {
+        images: { id: string; fileName: string; status: string; width: number; height: number }[];
+      };
+      const turnedImage = list.images.find((image) => image.fileName === "turned.jpg");
+      expect([turnedImage?.width, turnedImage?.height]).toEqual([640, 480]);
+      const stored = await (
+        await requester.request.get(`${stack.url}/api/images/${turnedImage?.id}/working`)
+      ).body();
+      expect(stored.includes("Testcam") || stored.includes("Exif")).toBe(false);
+      const idOf = new Map(list.images.map((image) => [image.fileName, image.id]));
 
-    // ---- key and brief, quality and pay
-    await requester.getByRole("link", { name: "Go on to key and brief" }).click();
-    await requester.getByLabel("Name of class 1").fill("pebble");
-    await requester.getByRole("button", { name: "Add a class" }).click();
-    await requester.getByLabel("Name of class 2").fill("coin");
-    await requester.getByLabel("Drawn as").nth(1).selectOption("box");
-    await requester.getByRole("button", { name: "Save and go on" }).click();
-    await requester.waitForURL(/\/setup\/pay$/);
-    await requester.getByLabel("Fewest annotators a picture").fill("3");
-    await requester.getByLabel("Most annotators a picture").fill("3");
-    await requester.getByText("Never more than").waitFor();
-    await requester.getByRole("button", { name: "Save and go on" }).click();
-    await requester.waitForURL(/\/setup\/review$/);
+      // ---- key and brief, quality and pay
+      await requester.getByRole("link", { name: "Go on to key and brief" }).click();
+      await requester.getByLabel("Name of class 1").fill("pebble");
+      await requester.getByRole("button", { name: "Add a class" }).click();
+      await requester.getByLabel("Name of class 2").fill("coin");
+      await requester.getByLabel("Drawn as").nth(1).selectOption("box");
+      await requester.getByRole("button", { name: "Save and go on" }).click();
+      await requester.waitForURL(/\/setup\/pay$/);
+      await requester.getByLabel("Fewest annotators a picture").fill("3");
+      await requester.getByLabel("Most annotators a picture").fill("3");
+      await requester.getByText("Never more than").waitFor();
+      await requester.getByRole("button", { name: "Save and go on" }).click();
+      await requester.waitForURL(/\/setup\/review$/);
 
-    // ---- the card is declined once, then pays
-    await requester.getByRole("button", { name: "Pay by card" }).click();
-    await requester.waitForURL(/\/checkout\//);
-    await pay(requester, "4000 0000 0000 0002");
-    await requester.getByText("Your card was declined.").waitFor();
-    await pay(requester, "4242 4242 4242 4242");
-    await requester.waitForURL(/\/setup\/review/);
-    await expect.poll(async () => {
-      await requester.reload();
-      return requester.getByRole("button", { name: "Fund and open" }).count();
-    }, { timeout: 20_000 }).toBe(1);
-    await requester.getByRole("button", { name: "Fund and open" }).click();
-    await requester.getByRole("dialog").getByRole("button", { name: "Fund and open" }).click();
-    await requester.waitForURL((url) => url.pathname === `/batches/${batchId}`);
-    await waitForProposals(batchId);
+      // ---- the card is declined once, then pays
+      await requester.getByRole("button", { name: "Pay by card" }).click();
+      await requester.waitForURL(/\/checkout\//);
+      await pay(requester, "4000 0000 0000 0002");
+      await requester.getByText("Your card was declined.").waitFor();
+      await pay(requester, "4242 4242 4242 4242");
+      await requester.waitForURL(/\/setup\/review/);
+      await expect
+        .poll(
+          async () => {
+            await requester.reload();
+            return requester.getByRole("button", { name: "Fund and open" }).count();
+          },
+          { timeout: 20_000 },
+        )
+        .toBe(1);
+      await requester.waitForLoadState("networkidle");
+      await requester.getByRole("button", { name: "Fund and open" }).click();
+      await requester.getByRole("alertdialog").getByRole("button", { name: "Fund and open" }).click();
+      await requester.waitForURL((url) => url.pathname === `/batches/${batchId}`);
+      await waitForProposals(batchId);
 
-    // ---- three annotators draw
-    const annotators = [];
-    for (const [index, name] of ["Tomas Brandt", "Lioba Fenn", "Maren Holt"].entries()) {
-      const page = await freshPage();
-      await signUpByMail(page, stack, { name, email: `annotator${index}@skerrow.example`, role: "annotator" });
-      annotators.push(page);
-    }
-    for (const [index, page] of annotators.entries()) {
-      for (const picture of pictures) {
-        if (BY_HAND.has(picture.name)) await drawByHand(page, batchId, idOf.get(picture.name) ?? "", picture, index);
-        else await handIn(page, batchId, idOf.get(picture.name) ?? "", picture, index);
+      // ---- three annotators draw
+      const annotators = [];
+      for (const [index, name] of ["Tomas Brandt", "Lioba Fenn", "Maren Holt"].entries()) {
+        const page = await freshPage();
+        await signUpByMail(page, stack, {
+          name,
+          email: `annotator${index}@skerrow.example`,
+          role: "annotator",
+        });
+        annotators.push(page);
       }
-    }
+      for (const [index, page] of annotators.entries()) {
+        for (const picture of pictures) {
+          if (BY_HAND.has(picture.name))
+            await drawByHand(page, batchId, idOf.get(picture.name) ?? "", picture, index);
+          else await handIn(page, batchId, idOf.get(picture.name) ?? "", picture, index);
+        }
+      }
 
-    // ---- consensus settles all but one; that one is on the docket
-    await expect.poll(() => states(batchId), { timeout: 60_000 }).toEqual({ settled: 11, split: 1 });
-    const taken = query<{ document: string }>("select document from submissions where batch_id = ?", batchId).flatMap((row) => (JSON.parse(row.document) as DeskDocument).instances.filter((instance) => instance.origin !== "drawn"));
-    expect(taken.length).toBeGreaterThan(0);
+      // ---- consensus settles all but one; that one is on the docket
+      await expect.poll(() => states(batchId), { timeout: 60_000 }).toEqual({ settled: 11, split: 1 });
+      const taken = query<{ document: string }>(
+        "select document from submissions where batch_id = ?",
+        batchId,
+      ).flatMap((row) =>
+        (JSON.parse(row.document) as DeskDocument).instances.filter(
+          (instance) => instance.origin !== "drawn",
+        ),
+      );
+      expect(taken.length).toBeGreaterThan(0);
 
-    const admin = await freshPage();
-    await signIn(admin, stack, ADMIN.email, ADMIN.password);
-    await admin.waitForURL(/\/docket$/);
-    await admin.getByRole("link", { name: SPLIT }).click();
-    await admin.getByText("Earlier decisions like this one").waitFor();
-    await admin.getByLabel(/what Tomas Brandt drew/).check();
-    await admin.getByLabel("Reason").fill("This submission follows the visible edges as the brief asks.");
-    await admin.getByRole("button", { name: "Decide" }).click();
-    await admin.getByRole("dialog").getByRole("button", { name: "Decide" }).click();
-    await admin.getByText("Decided: one submission picked").waitFor();
-    expect(states(batchId)).toEqual({ settled: 12 });
+      const admin = await freshPage();
+      await signIn(admin, stack, ADMIN.email, ADMIN.password);
+      await admin.waitForURL(/\/docket$/);
+      await admin.getByRole("link", { name: SPLIT }).click();
+      await admin.getByText("Earlier decisions like this one").waitFor();
+      await admin.waitForLoadState("networkidle");
+      await admin.getByLabel(/what Tomas Brandt drew/).check();
+      await admin
+        .getByRole("textbox", { name: "Reason" })
+        .fill("This submission follows the visible edges as the brief asks.");
+      await admin.getByRole("button", { name: "Decide" }).click();
+      await admin.getByRole("alertdialog").getByRole("button", { name: "Decide" }).click();
+      await admin.getByText("Decided: one submission picked").waitFor();
+      expect(states(batchId)).toEqual({ settled: 12 });
 
-    // ---- everybody is paid out
-    for (const page of annotators) {
-      await page.goto(`${stack.url}/earnings`);
-      await page.getByRole("button", { name: "Register a bank account" }).click();
-      await page.waitForURL(/\/onboarding\//);
-      await page.getByRole("button", { name: "Finish onboarding" }).click();
-      await page.waitForURL(/\/earnings/);
-      await page.getByRole("button", { name: "Pay out" }).click();
-      await page.getByRole("dialog").getByRole("button", { name: "Pay out" }).click();
-      await page.getByText("It is on its way.").waitFor();
-    }
-    await expect.poll(() => query<{ status: string }>("select status from payouts").map((row) => row.status), { timeout: 30_000 }).toEqual(["paid", "paid", "paid"]);
+      // ---- everybody is paid out
+      for (const page of annotators) {
+        await page.goto(`${stack.url}/earnings`, { waitUntil: "networkidle" });
+        await page.getByRole("button", { name: "Register a bank account" }).click();
+        await page.waitForURL(/\/onboarding\//);
+        await page.getByRole("button", { name: "Finish onboarding" }).click();
+        await page.waitForURL(/\/earnings/);
+        await page.waitForLoadState("networkidle");
+        await page.getByRole("button", { name: "Pay out" }).click();
+        await page.getByRole("alertdialog").getByRole("button", { name: "Pay out" }).click();
+        await page.getByText("It is on its way.").waitFor();
+      }
+      await expect
+        .poll(() => query<{ status: string }>("select status from payouts").map((row) => row.status), {
+          timeout: 30_000,
+        })
+        .toEqual(["paid", "paid", "paid"]);
 
-    // ---- the release is downloaded and fits the truth
-    await requester.goto(`${stack.url}/batches/${batchId}`);
-    await requester.getByRole("button", { name: "Build a release" }).click();
-    const link = requester.getByRole("link", { name: "Download" });
-    await link.waitFor({ timeout: 30_000 });
-    const [download] = await Promise.all([requester.waitForEvent("download"), link.click()]);
-    const files = await unzip(await download.path());
-    const manifest = files.get("manifest-sha256.txt")?.toString("utf8") ?? "";
-    for (const line of manifest.trim().split("\n")) {
-      const [sum = "", name = ""] = line.split("  ");
-      expect(createHash("sha256").update(files.get(name) ?? "").digest("hex"), name).toBe(sum);
-    }
-    const coco = [...files].find(([name]) => /coco.*\.json$/.test(name))?.[1].toString("utf8") ?? "{}";
-    expectTruth(JSON.parse(coco) as Coco);
+      // ---- the release is downloaded and fits the truth
+      await requester.goto(`${stack.url}/batches/${batchId}`, { waitUntil: "networkidle" });
+      await requester.getByRole("button", { name: "Build a release" }).click();
+      const link = requester.getByRole("link", { name: "Download" });
+      await link.waitFor({ timeout: 30_000 });
+      const [download] = await Promise.all([requester.waitForEvent("download"), link.click()]);
+      const files = await unzip(await download.path());
+      const manifest = files.get("manifest-sha256.txt")?.toString("utf8") ?? "";
+      for (const line of manifest.trim().split("\n")) {
+        const [sum = "", name = ""] = line.split("  ");
+        expect(
+          createHash("sha256")
+            .update(files.get(name) ?? "")
+            .digest("hex"),
+          name,
+        ).toBe(sum);
+      }
+      const coco = [...files].find(([name]) => /coco.*\.json$/.test(name))?.[1].toString("utf8") ?? "{}";
+      expectTruth(JSON.parse(coco) as Coco);
 
-    // ---- the batch is closed, and the books balance with Stripe to the cent
-    await requester.getByRole("button", { name: "Close" }).click();
-    await requester.getByLabel(/Type/).fill("Pebbles and coins");
-    await requester.getByRole("button", { name: "Close the batch" }).click();
-    await requester.getByText("The batch is closed.").waitFor();
-    await admin.goto(`${stack.url}/ledger`);
-    await admin.getByText("It balances").waitFor();
-    await admin.getByRole("button", { name: "Compare with Stripe" }).click();
-    await admin.getByText("The ledger and Stripe agree to the cent.").waitFor();
-    const accounts = query<{ kind: string; cents: number }>("select kind, sum(balance_cents) as cents from ledger_accounts group by kind");
-    expect(accounts.reduce((sum, row) => sum + row.cents, 0)).toBe(0);
-    expect(accounts.find((row) => row.kind === "escrow")?.cents).toBe(0);
-    const escrow = query<{ kind: string; cents: number }>("select p.kind as kind, sum(e.cents) as cents from ledger_entries e join ledger_postings p on p.id = e.posting_id where e.account_id = ? group by p.kind", `escrow:${batchId}`);
-    expect(escrow.reduce((sum, row) => sum + row.cents, 0)).toBe(0);
-    const paid = query<{ cents: number }>("select sum(pay_cents) as cents from submissions where batch_id = ?", batchId)[0]?.cents ?? 0;
-    expect(query<{ cents: number }>("select sum(amount_cents) as cents from payouts")[0]?.cents).toBe(paid);
-  });
+      // ---- the batch is closed, and the books balance with Stripe to the cent
+      await requester.getByRole("button", { name: "Close" }).click();
+      await requester.getByLabel(/Type/).fill("Pebbles and coins");
+      await requester.getByRole("button", { name: "Close the batch" }).click();
+      await requester.getByText("The batch is closed.").waitFor();
+      await admin.goto(`${stack.url}/ledger`, { waitUntil: "networkidle" });
+      await admin.getByText("It balances").waitFor();
+      await admin.getByRole("button", { name: "Compare with Stripe" }).click();
+      await admin.getByText("The ledger and Stripe agree to the cent.").waitFor();
+      const accounts = query<{ kind: string; cents: number }>(
+        "select kind, sum(balance_cents) as cents from ledger_accounts group by kind",
+      );
+      expect(accounts.reduce((sum, row) => sum + row.cents, 0)).toBe(0);
+      expect(accounts.find((row) => row.kind === "escrow")?.cents).toBe(0);
+      const escrow = query<{ kind: string; cents: number }>(
+        "select p.kind as kind, sum(e.cents) as cents from ledger_entries e join ledger_postings p on p.id = e.posting_id where e.account_id = ? group by p.kind",
+        `escrow:${batchId}`,
+      );
+      expect(escrow.reduce((sum, row) => sum + row.cents, 0)).toBe(0);
+      const paid =
+        query<{ cents: number }>(
+          "select sum(pay_cents) as cents from submissions where batch_id = ?",
+          batchId,
+        )[0]?.cents ?? 0;
+      expect(query<{ cents: number }>("select sum(amount_cents) as cents from payouts")[0]?.cents).toBe(paid);
+    },
+  );
 });
 
 async function pay(page: Page, card: string): Promise<void> {
@@ -213,11 +284,25 @@ function query<T>(sql: string, ...values: unknown[]): T[] {
 }
 
 function states(batchId: string): Record<string, number> {
-  return Object.fromEntries(query<{ state: string; n: number }>("select consensus_state as state, count(*) as n from images where batch_id = ? and status = 'ready' group by 1 order by 1", batchId).map((row) => [row.state, row.n]));
+  return Object.fromEntries(
+    query<{ state: string; n: number }>(
+      "select consensus_state as state, count(*) as n from images where batch_id = ? and status = 'ready' group by 1 order by 1",
+      batchId,
+    ).map((row) => [row.state, row.n]),
+  );
 }
 
 async function waitForProposals(batchId: string): Promise<void> {
-  await expect.poll(() => query("select 1 from images where batch_id = ? and status = 'ready' and proposal_state <> 'done'", batchId).length, { timeout: 120_000 }).toBe(0);
+  await expect
+    .poll(
+      () =>
+        query(
+          "select 1 from images where batch_id = ? and status = 'ready' and proposal_state <> 'done'",
+          batchId,
+        ).length,
+      { timeout: 120_000 },
+    )
+    .toBe(0);
 }
 
 async function claim(page: Page, batchId: string, imageId: string): Promise<DeskTask> {
@@ -228,17 +313,32 @@ async function claim(page: Page, batchId: string, imageId: string): Promise<Desk
 }
 
 /** Hands in through the desk's endpoints what a steady hand would have drawn; nonsense on the picture meant to split. */
-async function handIn(page: Page, batchId: string, imageId: string, picture: TestPicture, who: number): Promise<void> {
+async function handIn(
+  page: Page,
+  batchId: string,
+  imageId: string,
+  picture: TestPicture,
+  who: number,
+): Promise<void> {
   const task = await claim(page, batchId, imageId);
   const pebble = task.classes.find((kind) => kind.name === "pebble");
-  const [dx, dy] = [[0, 0], [2, 1], [-1, 2]][who] ?? [0, 0];
+  const [dx, dy] = [
+    [0, 0],
+    [2, 1],
+    [-1, 2],
+  ][who] ?? [0, 0];
   const isSplit = picture.name === SPLIT;
   const instances = truthOf(picture.name)
     .filter((_, index) => !isSplit || who === 0 || index % 3 === who)
     .map((entry, index) => ({
       id: `s${index}`,
       classId: pebble?.id ?? "",
-      shape: { kind: "polygon", rings: [isSplit && who > 0 ? shifted(entry.ring, 60 * who, 50) : shifted(entry.ring, dx ?? 0, dy ?? 0)] },
+      shape: {
+        kind: "polygon",
+        rings: [
+          isSplit && who > 0 ? shifted(entry.ring, 60 * who, 50) : shifted(entry.ring, dx ?? 0, dy ?? 0),
+        ],
+      },
       origin: "drawn",
       proposalId: null,
       crowd: false,
@@ -246,13 +346,29 @@ async function handIn(page: Page, batchId: string, imageId: string, picture: Tes
       truncated: false,
       note: "",
     }));
-  const inside = instances.map((instance) => ({ ...instance, shape: { ...instance.shape, rings: instance.shape.rings.map((ring) => ring.map(([x, y]) => [Math.min(picture.width, x), Math.min(picture.height, y)])) } }));
-  const answer = await page.request.post(`${stack.url}/api/claims/${task.claimId}/submission`, { data: { document: { instances: inside, dismissedProposalIds: [] }, activeSeconds: 60 } });
+  const inside = instances.map((instance) => ({
+    ...instance,
+    shape: {
+      ...instance.shape,
+      rings: instance.shape.rings.map((ring) =>
+        ring.map(([x, y]) => [Math.min(picture.width, x), Math.min(picture.height, y)]),
+      ),
+    },
+  }));
+  const answer = await page.request.post(`${stack.url}/api/claims/${task.claimId}/submission`, {
+    data: { document: { instances: inside, dismissedProposalIds: [] }, activeSeconds: 60 },
+  });
   expect(answer.status(), await answer.text()).toBe(201);
 }
 
 /** Draws on the desk: outlines by clicks, boxes by drags, and what the tray deals where it fits. */
-async function drawByHand(page: Page, batchId: string, imageId: string, picture: TestPicture, who: number): Promise<void> {
+async function drawByHand(
+  page: Page,
+  batchId: string,
+  imageId: string,
+  picture: TestPicture,
+  who: number,
+): Promise<void> {
   const task = await claim(page, batchId, imageId);
   await page.goto(`${stack.url}/desk/${task.claimId}`);
   const hands = new DeskHands(page);
@@ -266,7 +382,12 @@ async function drawByHand(page: Page, batchId: string, imageId: string, picture:
     const dealt = [...task.proposals].sort((a, b) => b.score - a.score);
     for (let turn = 0; turn < 4 && (await tray.getByRole("listitem").count()) > 0; turn++) {
       const before = await hands.count();
-      const fits = dealt.find((proposal) => left.some((entry) => shapeIou({ kind: "box", box: boxOf(proposal.shape) }, { kind: "box", box: entry.box }) > 0.75));
+      const fits = dealt.find((proposal) =>
+        left.some(
+          (entry) =>
+            shapeIou({ kind: "box", box: boxOf(proposal.shape) }, { kind: "box", box: entry.box }) > 0.75,
+        ),
+      );
       if (!fits) break;
       const position = await tray.getByRole("listitem").count();
       await hands.press(position > 0 ? "j" : "l");
@@ -274,20 +395,29 @@ async function drawByHand(page: Page, batchId: string, imageId: string, picture:
       // Whatever was taken by this key is checked against the truth below; a wrong one is removed again.
       const submission = await keptDraft(page, task.claimId);
       const takenBox = boxOf(submission?.instances.at(-1)?.shape ?? { kind: "box", box: [0, 0, 1, 1] });
-      const index = left.findIndex((entry) => shapeIou({ kind: "box", box: takenBox }, { kind: "box", box: entry.box }) > 0.6);
+      const index = left.findIndex(
+        (entry) => shapeIou({ kind: "box", box: takenBox }, { kind: "box", box: entry.box }) > 0.6,
+      );
       if (index >= 0) left.splice(index, 1);
       else await page.keyboard.press("Control+z").then(() => hands.press("l"));
     }
   }
   for (const entry of left) {
     if (isCoins) await hands.box([entry.box[0] + who - 1, entry.box[1], entry.box[2], entry.box[3]]);
-    else await hands.outline(shifted(entry.ring.filter((_, index) => index % 2 === 0), who, 0));
+    else
+      await hands.outline(
+        shifted(
+          entry.ring.filter((_, index) => index % 2 === 0),
+          who,
+          0,
+        ),
+      );
     await hands.press("Escape");
   }
   expect(await hands.count()).toBe(picture.truth.length);
   await page.locator("[data-save=saved]").waitFor({ timeout: 15_000 });
   await page.getByRole("button", { name: "Hand in" }).click();
-  await page.getByRole("dialog").getByRole("button", { name: "Hand in" }).click();
+  await page.getByRole("alertdialog").getByRole("button", { name: "Hand in" }).click();
   await page.getByText("Handed in.").first().waitFor();
   await page.waitForURL((url) => !url.pathname.endsWith(task.claimId));
   // The next picture was claimed at once; this test chooses its own, so that one goes back.
@@ -306,7 +436,12 @@ function boxOf(shape: Shape): Box {
   const points = shape.rings.flat();
   const xs = points.map(([x]) => x);
   const ys = points.map(([, y]) => y);
-  return [Math.min(...xs), Math.min(...ys), Math.max(...xs) - Math.min(...xs), Math.max(...ys) - Math.min(...ys)];
+  return [
+    Math.min(...xs),
+    Math.min(...ys),
+    Math.max(...xs) - Math.min(...xs),
+    Math.max(...ys) - Math.min(...ys),
+  ];
 }
 
 function unzip(file: string): Promise<Map<string, Buffer>> {
@@ -335,12 +470,20 @@ function unzip(file: string): Promise<Map<string, Buffer>> {
 type Coco = {
   images: { id: number; file_name: string; width: number; height: number }[];
   categories: { id: number; name: string }[];
-  annotations: { image_id: number; category_id: number; bbox: [number, number, number, number]; segmentation: number[][]; support: number }[];
+  annotations: {
+    image_id: number;
+    category_id: number;
+    bbox: [number, number, number, number];
+    segmentation: number[][];
+    support: number;
+  }[];
 };
 
 /** Every true object is in the release once, in its class, with an IoU of 0.85 or more, and nothing else is. */
 function expectTruth(coco: Coco): void {
-  expect(coco.images.map((image) => image.file_name).sort()).toEqual(pictures.map((picture) => picture.name).sort());
+  expect(coco.images.map((image) => image.file_name).sort()).toEqual(
+    pictures.map((picture) => picture.name).sort(),
+  );
   const nameOf = new Map(coco.categories.map((category) => [category.id, category.name]));
   for (const image of coco.images) {
     const picture = pictures.find((candidate) => candidate.name === image.file_name);
@@ -351,8 +494,14 @@ function expectTruth(coco: Coco): void {
       const best = Math.max(
         ...labels.map((label) => {
           if (nameOf.get(label.category_id) !== entry.kind) return 0;
-          if (entry.kind === "coin") return shapeIou({ kind: "box", box: label.bbox }, { kind: "box", box: entry.box });
-          const rings = label.segmentation.map((flat) => Array.from({ length: flat.length / 2 }, (_, index): Point => [flat[2 * index] ?? 0, flat[2 * index + 1] ?? 0]));
+          if (entry.kind === "coin")
+            return shapeIou({ kind: "box", box: label.bbox }, { kind: "box", box: entry.box });
+          const rings = label.segmentation.map((flat) =>
+            Array.from({ length: flat.length / 2 }, (_, index): Point => [
+              flat[2 * index] ?? 0,
+              flat[2 * index + 1] ?? 0,
+            ]),
+          );
           return shapeIou({ kind: "polygon", rings }, { kind: "polygon", rings: [entry.ring] });
         }),
       );
