@@ -1,6 +1,6 @@
-import { desc, eq } from "drizzle-orm";
+import { and, desc, eq, sql, type SQL } from "drizzle-orm";
 import type { Reader } from "@/db/client";
-import { auditLog, jobs, users } from "@/db/schema";
+import { auditLog, images, jobs, releases, users } from "@/db/schema";
 
 /** Jobs in one state, latest first. */
 export function listRecentJobs(db: Reader, status: (typeof jobs.$inferSelect)["status"], limit: number) {
@@ -22,4 +22,30 @@ export function listAudit(db: Reader, limit: number) {
     .orderBy(desc(auditLog.sequence))
     .limit(limit)
     .all();
+}
+
+/**
+ * Tells what waits for a job that is dead: its image is refused or has no proposals, its release has failed,
+ * so that the pages say so and a person can try again. Changes only what still waits. Returns how many.
+ */
+export function noteDeadJobs(db: Reader): number {
+  const died = (kind: string, field: string, id: SQL) =>
+    sql`exists (select 1 from jobs j where j.kind = ${kind} and j.status = 'dead' and json_extract(j.payload, ${`$.${field}`}) = ${id})
+      and not exists (select 1 from jobs j where j.kind = ${kind} and j.status in ('queued', 'running') and json_extract(j.payload, ${`$.${field}`}) = ${id})`;
+  const proposals = db
+    .update(images)
+    .set({ proposalState: "failed" })
+    .where(and(eq(images.proposalState, "queued"), died("image.propose", "imageId", sql`${images.id}`)))
+    .run();
+  const checks = db
+    .update(images)
+    .set({ status: "refused", refusal: "The picture could not be checked. Upload it again." })
+    .where(and(eq(images.status, "checking"), died("image.check", "imageId", sql`${images.id}`)))
+    .run();
+  const builds = db
+    .update(releases)
+    .set({ status: "failed", failure: "the build broke off" })
+    .where(and(eq(releases.status, "building"), died("release.build", "releaseId", sql`${releases.id}`)))
+    .run();
+  return proposals.changes + checks.changes + builds.changes;
 }
