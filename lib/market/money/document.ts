@@ -77,6 +77,11 @@ export async function renderPaper(paper: Paper, nowMs: number): Promise<Uint8Arr
     y -= LEADING;
   }
   y -= LEADING;
+  if (paper.lines.some((line) => line.balance !== undefined)) {
+    write("Moved", { x: AMOUNT_RIGHT, color: MUTED, alignRight: true });
+    write("Balance", { x: RIGHT, color: MUTED, alignRight: true });
+    y -= LEADING;
+  }
   for (const line of paper.lines) {
     turn();
     const font = line.isSum ? bold : plain;
