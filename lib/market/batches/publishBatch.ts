@@ -14,6 +14,7 @@ import { AppError } from "@/lib/errors";
 import { quote, type Quote } from "@/lib/ledger/pricing";
 import { requireBatch } from "@/lib/market/access";
 import { audit } from "@/lib/market/audit";
+import { tellFunded } from "./batchLetters";
 import { fundBatch } from "@/lib/market/money/settlement";
 
 type By = { actor: Actor; nowMs: number; batchId: string };
@@ -98,6 +99,7 @@ export function publishBatch({
       .set({ status: "open", openedAtMs: by.nowMs, version: batch.version + 1 })
       .where(eq(batches.id, batch.id))
       .run();
+    tellFunded(tx, batch, holdCents, by.nowMs);
     audit(tx, {
       actorId: by.actor.id,
       action: "batch.funded",

@@ -23,6 +23,7 @@ import type {
 import { invariant } from "@/lib/errors";
 import { newId } from "@/lib/ids";
 import { enqueue } from "@/lib/jobs/queue";
+import { tellIfAllSettled } from "@/lib/market/batches/batchLetters";
 import { openSplitDispute } from "@/lib/market/disputes/openDispute";
 import { adjustSubmissionPay, releaseForSubmission } from "@/lib/market/money/settlement";
 import { payOf } from "./payOf";
@@ -102,6 +103,7 @@ export function settleImage({ imageId, nowMs }: { imageId: string; nowMs: number
     }
     if (result.verdict === "settled") {
       settle(tx, { image, runId, nowMs });
+      tellIfAllSettled(tx, batch, nowMs);
       applyScores(tx, { batch, key, list, scores: result.scores, runId, disputeId: null, nowMs });
       return;
     }

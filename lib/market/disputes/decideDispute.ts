@@ -15,6 +15,7 @@ import type { AgreedInstance, ImageConsensus, LabelledInstance } from "@/lib/con
 import type { DecideInput } from "@/lib/contracts/work";
 import { AppError, invariant } from "@/lib/errors";
 import { boxOfShape } from "@/lib/geometry/box";
+import { tellIfAllSettled } from "@/lib/market/batches/batchLetters";
 import { audit } from "@/lib/market/audit";
 import { scoreAgainst } from "@/lib/market/consensus/scoreAgainst";
 import { applyScores, recordRun, settingsOf, settle } from "@/lib/market/consensus/settleImage";
@@ -66,6 +67,7 @@ export function decideDispute({ actor, nowMs, disputeId, decision }: Input): { m
         nowMs,
       });
       settle(tx, { image, runId, nowMs });
+      if (dispute.kind === "split") tellIfAllSettled(tx, batch, nowMs);
       movedCents = applyScores(tx, { batch, key, list, scores: result.scores, runId, disputeId, nowMs });
     }
     const { reason, ...outcome } = decision;
