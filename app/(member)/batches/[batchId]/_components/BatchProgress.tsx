@@ -23,9 +23,9 @@ export function BatchProgress({ batchId, initial }: { batchId: string; initial: 
     initialData: initial,
     refetchInterval: ({ state }) => (state.data && isBusy(state.data) ? BUSY_POLL_MS : CALM_POLL_MS),
   });
-  const seen = useRef(JSON.stringify(initial.progress));
+  const seen = useRef(whatPagesShow(initial));
   useEffect(() => {
-    const now = JSON.stringify(data.progress);
+    const now = whatPagesShow(data);
     if (now === seen.current) return;
     seen.current = now;
     router.refresh();
@@ -54,6 +54,11 @@ export function BatchProgress({ batchId, initial }: { batchId: string; initial: 
       </div>
     </section>
   );
+}
+
+/** What the page around shows of the status: when it changes, the page is read again. */
+function whatPagesShow({ status, progress, training, releases }: BatchStatus): string {
+  return JSON.stringify([status, progress, training, releases]);
 }
 
 function isBusy(status: BatchStatus): boolean {

@@ -1,6 +1,7 @@
 "use client";
 
 import { Download } from "lucide-react";
+import { useQueryClient } from "@tanstack/react-query";
 import { useRouter } from "next/navigation";
 import { useTransition } from "react";
 import { toast } from "sonner";
@@ -33,12 +34,15 @@ export function Releases({
   settled: number;
 }) {
   const router = useRouter();
+  const client = useQueryClient();
   const [pending, startTransition] = useTransition();
   const isBuilding = releases.some((release) => release.status === "building");
   const build = () =>
     startTransition(async () => {
       const answer = await buildRelease(null, { batchId });
       if (!answer.ok) toast.error(answer.message);
+      // The status is polled faster while something is being built.
+      await client.invalidateQueries({ queryKey: ["batch-status", batchId] });
       router.refresh();
     });
   return (
