@@ -1,4 +1,4 @@
-import { maskHas, type Mask } from "./mask";
+import { forEachSpan, type Mask } from "./mask";
 import type { Point, Ring, Rings } from "./types";
 
 const RIGHT = 1;
@@ -29,16 +29,22 @@ export function traceMask(mask: Mask, connectivity: 4 | 8 = 4): Rings {
 /** For each corner of the pixel grid, the directions in which an outline leaves it, inside on its right. */
 function outgoingEdges(mask: Mask, columns: number): Uint8Array {
   const outgoing = new Uint8Array(columns * (mask.height + 1));
+  // One byte a pixel with a margin on every side, so that no neighbour needs a bounds check.
+  const stride = mask.width + 2;
+  const inside = new Uint8Array(stride * (mask.height + 2));
+  forEachSpan(mask, (row, from, to) => {
+    const start = (row - mask.y + 1) * stride + 1 - mask.x;
+    inside.fill(1, start + from, start + to);
+  });
   for (let row = 0; row < mask.height; row++) {
-    for (let column = 0; column < mask.width; column++) {
-      const x = mask.x + column;
-      const y = mask.y + row;
-      if (!maskHas(mask, x, y)) continue;
-      const corner = row * columns + column;
-      if (!maskHas(mask, x, y - 1)) outgoing[corner]! |= RIGHT;
-      if (!maskHas(mask, x + 1, y)) outgoing[corner + 1]! |= DOWN;
-      if (!maskHas(mask, x, y + 1)) outgoing[corner + columns + 1]! |= LEFT;
-      if (!maskHas(mask, x - 1, y)) outgoing[corner + columns]! |= UP;
+    let pixel = (row + 1) * stride + 1;
+    let corner = row * columns;
+    for (let column = 0; column < mask.width; column++, pixel++, corner++) {
+      if (inside[pixel] === 0) continue;
+      if (inside[pixel - stride] === 0) outgoing[corner]! |= RIGHT;
+      if (inside[pixel + 1] === 0) outgoing[corner + 1]! |= DOWN;
+      if (inside[pixel + stride] === 0) outgoing[corner + columns + 1]! |= LEFT;
+      if (inside[pixel - 1] === 0) outgoing[corner + columns]! |= UP;
     }
   }
   return outgoing;
