@@ -10,6 +10,10 @@ export type TwinCounts = {
   readonly drawn: Float64Array;
   readonly taken: Float64Array;
   readonly images: Float64Array;
+  /** Drawings that somebody else's all but equals. */
+  readonly twinned: Float64Array;
+  /** Other people met, summed over images. */
+  readonly others: Float64Array;
 };
 
 /** Matched pairs before two people can be called copies. */
@@ -17,7 +21,9 @@ const MATCHED_MIN = 8;
 /** Share of them that is near 1; between honest careful people it stays below a tenth (simulated pools). */
 const CLOSE_SHARE_MIN = 0.6;
 /** Share of a person's drawings with a near twin by somebody, from which the person copies whoever is there. */
-const TWIN_SHARE_MIN = 0.5;
+const TWIN_SHARE_MIN = 0.6;
+/** A share must be this many times what chance gives in the batch: plain objects are drawn alike by honest people. */
+const CHANCE_FACTOR = 3;
 /** Share of a person's instances that are untouched proposals, from which the proposals are what votes. */
 const TAKEN_SHARE_MIN = 0.97;
 const TAKEN_MIN = 20;
@@ -40,11 +46,8 @@ export function findCopies(ids: readonly string[], twins: TwinCounts): Copies {
   const copyOf: (string | null)[] = ids.map(() => null);
   const together = new Set<number>();
   const copies: CopyGroup[] = [];
-  const twinShare = ids.map((_, a) => {
-    let sum = 0;
-    for (let b = 0; b < count; b++) sum += close[a * count + b]!;
-    return sum / Math.max(1, drawn[a]!);
-  });
+  const chance = chanceOfTwins(twins);
+  const twinShare = ids.map((_, a) => twins.twinned[a]! / Math.max(1, drawn[a]!));
   const untouched = ids.filter(
     (_, a) => drawn[a]! >= TAKEN_MIN && images[a]! >= 3 && taken[a]! >= TAKEN_SHARE_MIN * drawn[a]!,
   );
@@ -60,7 +63,8 @@ export function findCopies(ids: readonly string[], twins: TwinCounts): Copies {
   for (let a = 0; a < count; a++) {
     for (let b = a + 1; b < count; b++) {
       const pair = a * count + b;
-      if (matched[pair]! < MATCHED_MIN || close[pair]! < CLOSE_SHARE_MIN * matched[pair]!) continue;
+      if (matched[pair]! < MATCHED_MIN || close[pair]! < needed(CLOSE_SHARE_MIN, chance) * matched[pair]!)
+        continue;
       together.add(pair).add(b * count + a);
       const share = close[pair]! / matched[pair]!;
       copies.push({ annotatorIds: [ids[a]!, ids[b]!], source: "annotator", share });
@@ -69,7 +73,8 @@ export function findCopies(ids: readonly string[], twins: TwinCounts): Copies {
     }
   }
   ids.forEach((_, a) => {
-    if (copyOf[a] || drawn[a]! < MATCHED_MIN || twinShare[a]! < TWIN_SHARE_MIN) return;
+    const byChance = 1 - (1 - chance) ** (twins.others[a]! / Math.max(1, images[a]!));
+    if (copyOf[a] || drawn[a]! < MATCHED_MIN || twinShare[a]! < needed(TWIN_SHARE_MIN, byChance)) return;
     let source = -1;
     for (let b = 0; b < count; b++) {
       if (b !== a && close[a * count + b]! > (source < 0 ? 0 : close[a * count + source]!)) source = b;
@@ -77,4 +82,21 @@ export function findCopies(ids: readonly string[], twins: TwinCounts): Copies {
     if (source >= 0) copyOf[a] = ids[source]!;
   });
   return { copies, copyOf, closeOf: (a, b) => together.has(a * count + b) };
+}
+
+/** The share that convicts: at least `least`, and clearly above chance; never reached where chance is high. */
+function needed(least: number, chance: number): number {
+  return Math.max(least, CHANCE_FACTOR * chance);
+}
+
+/** Median over pairs of people of the share of their matched drawings that are near twins. */
+function chanceOfTwins({ count, close, matched }: TwinCounts): number {
+  const shares: number[] = [];
+  for (let a = 0; a < count; a++) {
+    for (let b = a + 1; b < count; b++) {
+      if (matched[a * count + b]! >= 3) shares.push(close[a * count + b]! / matched[a * count + b]!);
+    }
+  }
+  shares.sort((x, y) => x - y);
+  return shares[(shares.length - 1) >> 1] ?? 0;
 }

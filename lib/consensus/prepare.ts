@@ -36,7 +36,7 @@ export const CLASS_DOUBT = 0.8;
  * Median IoU over an image's matched instances from which two people's labels are taken for one drawing.
  * Independent outlines of experts reach 0.93 to 0.96 (Gupta et al., LVIS, 2019).
  */
-export const COPY_IOU_MIN = 0.975;
+export const COPY_IOU_MIN = 0.98;
 /** Share of the smaller set that must be matched that closely. */
 export const COPY_SHARE_MIN = 0.6;
 
@@ -148,9 +148,7 @@ function voters(
   return voterOf;
 }
 
-/** Two people who took the same proposal as it was are alike for an honest reason. */
+/** Two people who started from the same proposal are alike for an honest reason. */
 export function tookTheSame(a: LabelledInstance, b: LabelledInstance): boolean {
-  return (
-    a.origin === "taken" && b.origin === "taken" && a.proposalId != null && a.proposalId === b.proposalId
-  );
+  return a.proposalId != null && a.proposalId === b.proposalId;
 }

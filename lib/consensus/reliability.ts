@@ -35,6 +35,8 @@ export type ImageRecord = {
   instances: readonly number[];
   taken: readonly number[];
   twins: readonly (readonly [a: number, b: number, close: number, matched: number])[];
+  /** Drawings of each annotator that somebody else's all but equals. */
+  twinned: readonly number[];
   isGold: boolean;
 };
 
@@ -133,6 +135,7 @@ export function recordOf(
       (items) => items.filter((item) => image.items[item]!.instance.origin === "taken").length,
     ),
     twins: twinsOf(image),
+    twinned: twinnedOf(image),
     isGold: truth !== undefined,
   };
 }
@@ -151,6 +154,15 @@ function twinsOf(image: PreparedImage): [number, number, number, number][] {
     found.set(from * count + to, entry);
   }
   return [...found.values()];
+}
+
+function twinnedOf(image: PreparedImage): number[] {
+  const twinned = new Set<number>();
+  for (const { a, b, iou } of image.pairs) {
+    if (iou < COPY_IOU_MIN || tookTheSame(image.items[a]!.instance, image.items[b]!.instance)) continue;
+    twinned.add(a).add(b);
+  }
+  return image.itemsOf.map((items) => items.filter((item) => twinned.has(item)).length);
 }
 
 /** Truth of each candidate by the best total IoU (over one half); objects that nobody drew become candidates too. */
@@ -230,12 +242,16 @@ class TwinTotals implements TwinCounts {
   readonly drawn: Float64Array;
   readonly taken: Float64Array;
   readonly images: Float64Array;
+  readonly twinned: Float64Array;
+  readonly others: Float64Array;
   constructor(readonly count: number) {
     this.close = new Float64Array(count * count);
     this.matched = new Float64Array(count * count);
     this.drawn = new Float64Array(count);
     this.taken = new Float64Array(count);
     this.images = new Float64Array(count);
+    this.twinned = new Float64Array(count);
+    this.others = new Float64Array(count);
   }
   add(record: ImageRecord, indexOf: (local: number) => number): void {
     record.annotatorIds.forEach((_, local) => {
@@ -243,6 +259,8 @@ class TwinTotals implements TwinCounts {
       this.drawn[k]! += record.instances[local]!;
       this.taken[k]! += record.taken[local]!;
       this.images[k]! += 1;
+      this.twinned[k]! += record.twinned[local]!;
+      this.others[k]! += record.annotatorIds.length - 1;
     });
     for (const [a, b, close, matched] of record.twins) {
       const x = indexOf(a);
