@@ -1,5 +1,6 @@
 import { afterAll, beforeAll, beforeEach, describe, expect, it } from "vitest";
 import { ledgerViolations, listOpenAlerts } from "@/db/queries/ledger";
+import { ledgerPostings } from "@/db/schema";
 import type { Actor } from "@/lib/auth/actor";
 import { reconcile } from "@/lib/market/money/reconcile";
 import { refundWallet } from "@/lib/market/money/refunds";
@@ -53,6 +54,22 @@ describe("a card dispute", () => {
     await bank.quiet();
     expect([wallet(), cents(bank.db, "hold", id), cents(bank.db, "loss")]).toEqual([10_000, 0, 0]);
     expect(status()).toBe("paid");
+    await expectAgreement();
+  });
+
+  it("that is heard of only once it is won holds nothing and alarms nobody", async () => {
+    const id = await open();
+    await close(id, "won");
+    await bank.quiet();
+    const kinds = bank.db
+      .select()
+      .from(ledgerPostings)
+      .all()
+      .map((row) => row.kind);
+    expect(kinds.filter((kind) => kind === "dispute")).toHaveLength(2);
+    expect(kinds).not.toContain("dispute-freeze");
+    expect(listOpenAlerts(bank.db)).toEqual([]);
+    expect([wallet(), status()]).toEqual([10_000, "paid"]);
     await expectAgreement();
   });
 
