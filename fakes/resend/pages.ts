@@ -15,13 +15,13 @@ export function boxPage(mails: Mail[], search: string, failNext: number): string
     .slice(0, SHOWN_MAX)
     .map(
       (mail) =>
-        `<tr><td><a href="/mail/${mail.id}">${escapeHtml(mail.subject)}</a></td><td>${escapeHtml(mail.to.join(", "))}</td><td><time datetime="${mail.createdAt}">${when(mail.createdAt)}</time></td><td>${stateOf(mail)}</td></tr>`,
+        `<tr><td><a href="/mail/${mail.id}">${escapeHtml(mail.subject)}</a></td><td>${escapeHtml(mail.to.join(", "))}</td><td class="keep"><time datetime="${mail.createdAt}">${when(mail.createdAt)}</time></td><td class="keep">${stateOf(mail)}</td></tr>`,
     )
     .join("");
   const list =
     rows === ""
       ? `<p class="muted" style="margin:0">${search === "" ? "No letter was sent yet." : `No letter to “${escapeHtml(search)}”.`}</p>`
-      : `<table class="stack"><caption>${mails.length} ${mails.length === 1 ? "letter" : "letters"}${search === "" ? "" : ` to “${escapeHtml(search)}”`}</caption><thead><tr><th scope="col">Subject</th><th scope="col">To</th><th scope="col">Sent (UTC)</th><th scope="col">State</th></tr></thead><tbody>${rows}</tbody></table>`;
+      : `<table class="stack"><caption>${mails.length} ${mails.length === 1 ? "letter" : "letters"}${search === "" ? "" : ` to “${escapeHtml(search)}”`}</caption><thead><tr><th scope="col">Subject</th><th scope="col">To</th><th scope="col" class="keep">Sent (UTC)</th><th scope="col">State</th></tr></thead><tbody>${rows}</tbody></table>`;
   const clear = search === "" ? "" : `<a class="button quiet" href="/">Show all</a>`;
   return page(
     "Mailbox",

@@ -26,12 +26,12 @@ input[aria-invalid=true]{border-color:var(--bad);border-width:2px}
 button,.button{display:inline-block;min-height:2.75rem;font:inherit;font-weight:700;padding:.5rem 1.2rem;border-radius:3px;border:1px solid var(--ink);background:var(--ink);color:var(--sheet);cursor:pointer;text-decoration:none}
 .quiet{background:transparent;color:var(--ink)}a{color:inherit;text-underline-offset:.2em}
 .bad{color:var(--bad);font-weight:700}.good{color:var(--good);font-weight:700}.muted{color:var(--muted)}.error{border-left:4px solid var(--bad);padding:.25rem .75rem;margin:0 0 1rem;color:var(--bad);font-weight:700}
-.scroll{overflow-x:auto}table{width:100%;border-collapse:collapse}caption{text-align:left;font-weight:700;padding:.25rem 0}td,th{text-align:left;padding:.5rem .75rem .5rem 0;border-bottom:1px solid var(--line);vertical-align:top;overflow-wrap:anywhere}td.num,th.num{text-align:right}
+.scroll{overflow-x:auto}table{width:100%;border-collapse:collapse}caption{text-align:left;font-weight:700;padding:.25rem 0}td,th{text-align:left;padding:.5rem .75rem .5rem 0;border-bottom:1px solid var(--line);vertical-align:top;overflow-wrap:anywhere}.num{text-align:right}.num,.keep{white-space:nowrap}
 dl{display:grid;grid-template-columns:minmax(6rem,max-content) 1fr;gap:.25rem 1rem;margin:0}dt{color:var(--muted)}dd{margin:0;overflow-wrap:anywhere}
 iframe{display:block;width:100%;height:30rem;border:1px solid var(--line);background:#fff}pre{white-space:pre-wrap;overflow-wrap:anywhere;font-size:.9rem;margin:0}
 details{margin-top:1rem}summary{cursor:pointer;min-height:1.75rem}
 :focus-visible{outline:3px solid var(--focus);outline-offset:2px}
-@media(max-width:36rem){.stack thead{position:absolute;width:1px;height:1px;overflow:hidden;clip-path:inset(50%)}.stack tr{display:block;border-bottom:1px solid var(--line);padding:.5rem 0}.stack td{display:block;border:0;padding:.1rem 0}dl{grid-template-columns:1fr}dd{margin-bottom:.5rem}}
+@media(max-width:36rem){.stack thead{position:absolute;width:1px;height:1px;overflow:hidden;clip-path:inset(50%)}.stack tr{display:block;border-bottom:1px solid var(--line);padding:.5rem 0}.stack td{display:block;border:0;padding:.1rem 0;text-align:left;white-space:normal}dl{grid-template-columns:1fr}dd{margin-bottom:.5rem}}
 @media(prefers-reduced-motion:no-preference){button,.button{transition:opacity .12s}}`;
 
 /** A plain page that says plainly what it is. `body` is HTML and must be escaped by the caller. */

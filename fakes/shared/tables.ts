@@ -99,6 +99,10 @@ export class Table<T> {
     return this.rows.values();
   }
 
+  entries(): [string, T][] {
+    return [...this.rows];
+  }
+
   get size(): number {
     return this.rows.size;
   }

@@ -227,7 +227,7 @@ function overview(world: World): string {
     .slice(0, 100)
     .map(
       (row) =>
-        `<tr><td>${when(row.created)}</td><td>${row.object.replaceAll("_", " ")}</td><td class="num">${dollars(row.amount)}</td><td>${"status" in row ? row.status.replaceAll("_", " ") : "sent"}</td><td>${escapeHtml(row.id)}</td></tr>`,
+        `<tr><td class="keep">${when(row.created)}</td><td class="keep">${row.object.replaceAll("_", " ")}</td><td class="num">${dollars(row.amount)}</td><td>${"status" in row ? row.status.replaceAll("_", " ") : "sent"}</td><td>${escapeHtml(row.id)}</td></tr>`,
     )
     .join("");
   const accounts = world.accounts

@@ -73,6 +73,8 @@ export function createStripe(options: StripeOptions): StripeService {
   const world = new World(documents, clock, { settleMs, payoutStepMs, verifyMs, disputeFeeCents });
   const webhooks = new Webhooks(world, options.deliver, options.random);
   world.onEvent = webhooks.enqueue;
+  for (const [scope, { atMs }] of world.keys.entries())
+    if (clock.nowMs() - atMs > KEY_LIFETIME_MS) world.keys.delete(scope);
   configureEndpoint();
   const requests: {
     method: string;
