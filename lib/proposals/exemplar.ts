@@ -1,205 +1,527 @@
 import { boxIou } from "@/lib/geometry/box";
 import type { Box, Rings } from "@/lib/geometry/types";
-import type { Raster } from "@/lib/vision/raster";
-import { boxOfRegion, candidates, objectness, shrink, WORK_SIDE_PX, type Candidate } from "./candidates";
-import { fitLogistic, type Example } from "./logistic";
-import { suppress } from "./suppress";
+import { outlineInBox } from "@/lib/vision/outline";
+import { cutRaster, shrinkRaster, type Raster } from "@/lib/vision/raster";
+import { seeded } from "@/lib/vision/ranker";
+import { averagePrecision, type Found } from "./averagePrecision";
+import { BOX_FEATURES, boxFeatures } from "./boxFeatures";
+import { decodeBox, encodeBox } from "./boxCoding";
+import { candidates, WORK_SIDE_PX, type CandidateSet } from "./candidates";
+import { channelsOf, describeWindow, scanWindows, WINDOW_FEATURES, type Channels } from "./channels";
+import { fitLinear, fitRidge, scalingOf } from "./linear";
+import { fitLogistic } from "./logistic";
+import { rankCandidates } from "./objectness";
+import type { Proposal } from "./propose";
+import { byScore, suppress } from "./suppress";
 
+/** A settled image: what people agreed on, px of the raster. */
 export type ExemplarImage = {
   raster: Raster;
   instances: readonly { classId: string; box: Box; rings?: Rings }[];
 };
 
-/** What a batch's own settled labels taught: logistic weights of each class. Plain data: it survives JSON. */
+/** What was learned of one class. Weights are for raw features, the constant last. */
+export type ExemplarClass = {
+  classId: string;
+  /** Objects that taught it. */
+  examples: number;
+  /** Window sizes as shares of the picture's longer side. */
+  sizes: (readonly [width: number, height: number])[];
+  /** Mean log width, log height and their spreads, in the same shares. */
+  prior: [number, number, number, number];
+  /** Linear weights of the windows' cells, for the search. */
+  search: number[];
+  /** Linear weights of cells, box features and size, for the verdict. */
+  verdict: number[];
+  /** Weights of the four offsets. */
+  offsets: number[][];
+  /** Probability = 1 / (1 + exp(-(slope * verdict + offset))). */
+  slope: number;
+  offset: number;
+  /** Average precision at IoU 0.5 on held-out images; null where none could be held out. */
+  ap: number | null;
+};
+
+/** What a batch's own settled labels taught. Plain data: it survives JSON. */
 export type ExemplarModel = {
-  version: 1;
-  classes: { classId: string; weights: number[]; examples: number }[];
-  /** Mean over classes of average precision at IoU 0.5 on images it was not trained on; null with one image. */
+  version: 2;
+  classes: ExemplarClass[];
+  /** Mean over classes of average precision at IoU 0.5 on images it was not trained on; null where none could be held out. */
   apWith: number | null;
   /** The same for the class-agnostic ranking, with the class taken as known. */
   apWithout: number | null;
   useful: boolean;
 };
 
-const RIGHT_IOU = 0.5;
-const WRONG_IOU = 0.35;
-/** Negatives of an image: the hardest by objectness, and every n-th of the rest. */
-const HARD_NEGATIVES = 60;
-const EASY_STEP = 9;
-const RIDGE = 3;
-const POSITIVE_WEIGHT = 4;
-/** A model is used only when it gains this much average precision on images it has not seen. */
-const GAIN_MIN = 0.02;
+export type TrainOptions = { foldsMax?: number; seed?: number };
 
+/** Side at which windows are described. */
+const SIDE_PX = 640;
+/** One scale of regions is enough beside windows, at a third of the time. */
+const REGION_SCALES = [25] as const;
+const EXTRA = BOX_FEATURES + 5;
+const FEATURES = WINDOW_FEATURES + EXTRA;
+const SIZES_MAX = 6;
+const POSITIVES_MAX = 600;
+const RIGHT_IOU = 0.6;
+const WRONG_IOU = 0.4;
+const NEGATIVES_MAX = 2500;
+const ROUNDS = 3;
+const HARD_A_ROUND = 60;
+/** Windows of the search that get a verdict. */
+const SEARCHED_MAX = 300;
+const NMS_IOU = 0.4;
+/** It must gain this much average precision on images that it has not seen. */
+const GAIN_MIN = 0.03;
+/** And be this good in itself: below, most of what it says is wrong. */
+const AP_MIN = 0.1;
+const EXAMPLES_MIN = 2;
+
+/** A picture made ready: everything in px of `channels`. */
 type Prepared = {
-  found: Candidate[];
-  boxes: Box[];
-  vectors: number[][];
+  raster: Raster;
+  channels: Channels;
+  set: CandidateSet;
+  /** From px of the candidates to px of the channels. */
+  grow: number;
+  toRaster: number;
+  regions: Box[];
   truth: { classId: string; box: Box }[];
 };
 
-/** Region features joined with colour, size and shape: what makes one class differ from another. */
-export function exemplarFeatures({ region, features }: Candidate, side: number): number[] {
-  const w = region.right - region.left + 1;
-  const h = region.bottom - region.top + 1;
-  const size = Math.log2(Math.sqrt(w * h) / side + 1e-6) + 4;
-  const aspect = Math.log2(w / h);
-  return [
-    ...features,
-    ...[...region.histogram].map((value) => Math.sqrt(value) * 2),
-    size / 2,
-    (size * size) / 8,
-    aspect,
-    aspect * aspect,
-  ];
-}
-
-function prepare({ raster, instances }: ExemplarImage): Prepared {
-  const small = shrink(raster, WORK_SIDE_PX);
-  const sx = small.width / raster.width;
-  const sy = small.height / raster.height;
-  const found = candidates(small);
-  const side = Math.max(small.width, small.height);
-  return {
-    found,
-    boxes: found.map(({ region }) => boxOfRegion(region)),
-    vectors: found.map((candidate) => exemplarFeatures(candidate, side)),
-    truth: instances.map(({ classId, box: [x, y, w, h] }) => ({
+function prepare(raster: Raster, instances: ExemplarImage["instances"]): Prepared {
+  const medium = shrinkRaster(raster, SIDE_PX);
+  const small = shrinkRaster(medium, WORK_SIDE_PX);
+  const set = candidates(small, undefined, REGION_SCALES);
+  const grow = medium.width / small.width;
+  const toRaster = raster.width / medium.width;
+  const regions = Array.from({ length: set.count }, (_, n): Box => {
+    const [l, t, r, b] = [
+      set.boxes[n * 4]!,
+      set.boxes[n * 4 + 1]!,
+      set.boxes[n * 4 + 2]!,
+      set.boxes[n * 4 + 3]!,
+    ];
+    return [l * grow, t * grow, (r - l) * grow, (b - t) * grow];
+  });
+  const truth = instances
+    .map(({ classId, box: [x, y, w, h] }) => ({
       classId,
-      box: [x * sx, y * sy, w * sx, h * sy],
-    })),
-  };
+      box: [x / toRaster, y / toRaster, w / toRaster, h / toRaster] as Box,
+    }))
+    .filter(({ box }) => box[2] >= 2 && box[3] >= 2);
+  return { raster, channels: channelsOf(medium), set, grow, toRaster, regions, truth };
 }
 
-function examplesOf({ found, boxes, vectors, truth }: Prepared, classId: string): Example[] {
-  const own = truth.filter((entry) => entry.classId === classId);
-  const best = boxes.map((box) => own.reduce((most, entry) => Math.max(most, boxIou(box, entry.box)), 0));
-  const hard = new Set(
-    found
-      .map(({ features }, index) => ({ index, score: objectness(features) }))
-      .filter(({ index }) => (best[index] ?? 0) < WRONG_IOU)
-      .sort((a, b) => b.score - a.score || a.index - b.index)
-      .slice(0, HARD_NEGATIVES)
-      .map(({ index }) => index),
+const sideOf = ({ channels }: Prepared) => Math.max(channels.width, channels.height);
+
+/** All features of a box: cells, box features (from the smaller copy), size against the class's prior. */
+function describe(image: Prepared, [x, y, w, h]: Box, prior: ExemplarClass["prior"]): Float32Array {
+  const out = new Float32Array(FEATURES);
+  describeWindow(image.channels, x, y, w, h, out, 0);
+  const { set, grow } = image;
+  const left = Math.min(set.width - 2, Math.max(0, Math.round(x / grow)));
+  const top = Math.min(set.height - 2, Math.max(0, Math.round(y / grow)));
+  const right = Math.min(set.width, Math.max(left + 2, Math.round((x + w) / grow)));
+  const bottom = Math.min(set.height, Math.max(top + 2, Math.round((y + h) / grow)));
+  boxFeatures(set.context, left, top, right, bottom, out, WINDOW_FEATURES);
+  const side = sideOf(image);
+  const dw = (Math.log(w / side) - prior[0]) / prior[2];
+  const dh = (Math.log(h / side) - prior[1]) / prior[3];
+  const at = WINDOW_FEATURES + BOX_FEATURES;
+  out[at] = Math.max(-4, Math.min(4, dw));
+  out[at + 1] = Math.max(-4, Math.min(4, dh));
+  out[at + 2] = Math.min(16, dw * dw);
+  out[at + 3] = Math.min(16, dh * dh);
+  out[at + 4] = Math.min(16, (dw - dh) ** 2);
+  return out;
+}
+
+function verdictOf(weights: ArrayLike<number>, features: Float32Array): number {
+  let sum = weights[features.length]!;
+  for (let f = 0; f < features.length; f++) sum += weights[f]! * features[f]!;
+  return sum;
+}
+
+type Detection = { box: Box; verdict: number; region: number };
+
+/** Detections of one class, best first, suppressed, px of the channels. */
+function detect(
+  image: Prepared,
+  model: Pick<ExemplarClass, "sizes" | "prior" | "search" | "verdict" | "offsets">,
+  limit: number,
+): Detection[] {
+  const side = sideOf(image);
+  const { width, height } = image.channels;
+  const hits = model.sizes.flatMap(([w, h]) =>
+    scanWindows(image.channels, Math.max(4, w * side), Math.max(4, h * side), model.search, -2.5),
   );
-  return found.flatMap((_, index): Example[] => {
-    const iou = best[index] ?? 0;
-    const features = vectors[index] ?? [];
-    if (iou >= RIGHT_IOU) return [{ features, positive: true, weight: POSITIVE_WEIGHT * iou }];
-    if (iou < WRONG_IOU && (hard.has(index) || index % EASY_STEP === 0))
-      return [{ features, positive: false, weight: 1 }];
-    return [];
-  });
-}
-
-function fit(images: readonly Prepared[]): ExemplarModel["classes"] {
-  const classIds = [...new Set(images.flatMap((image) => image.truth.map((entry) => entry.classId)))].sort();
-  return classIds.flatMap((classId) => {
-    const examples = images.flatMap((image) => examplesOf(image, classId));
-    const positives = examples.filter((example) => example.positive).length;
-    if (positives < 2) return [];
-    return [{ classId, weights: fitLogistic(examples, RIDGE), examples: positives }];
-  });
-}
-
-/** Candidates scored by a model: for each its best class and probability. */
-export function scoreExemplars(
-  model: Pick<ExemplarModel, "classes">,
-  found: readonly Candidate[],
-  side: number,
-): { classId: string; score: number }[] {
-  return found.map((candidate) => bestClass(model.classes, exemplarFeatures(candidate, side)));
-}
-
-function bestClass(
-  classes: ExemplarModel["classes"],
-  vector: readonly number[],
-): { classId: string; score: number } {
-  let best = { classId: "", score: 0 };
-  for (const { classId, weights } of classes) {
-    const score = objectness(vector, weights);
-    if (score > best.score) best = { classId, score };
-  }
-  return best;
-}
-
-/** Average precision at IoU 0.5 of ranked boxes, as the area under the precision envelope (all points). */
-export function averagePrecision(
-  ranked: readonly { image: number; box: Box; score: number }[],
-  truth: readonly { image: number; box: Box }[],
-): number {
-  if (truth.length === 0) return 0;
-  const taken = new Set<number>();
-  const hits = [...ranked]
-    .sort((a, b) => b.score - a.score)
-    .map(({ image, box }) => {
-      let best = -1;
-      let bestIou = RIGHT_IOU;
-      truth.forEach((entry, index) => {
-        const iou = entry.image === image && !taken.has(index) ? boxIou(box, entry.box) : 0;
-        if (iou >= bestIou) [best, bestIou] = [index, iou];
-      });
-      if (best >= 0) taken.add(best);
-      return best >= 0;
+  const windows = hits.map(({ x, y, w, h }): Box => [x, y, w, h]);
+  const searched = suppress(
+    windows,
+    hits.map(({ score }) => score),
+    0.75,
+    SEARCHED_MAX,
+  );
+  const found: Detection[] = [];
+  const consider = (box: Box, region: number) => {
+    const features = describe(image, box, model.prior);
+    const verdict = verdictOf(model.verdict, features);
+    found.push({ box, verdict, region });
+    if (verdict < -1 || model.offsets.length < 4) return;
+    const [dx, dy, dw, dh] = model.offsets.map((weights) =>
+      Math.max(-4, Math.min(4, verdictOf(weights, features))),
+    );
+    const moved = clipped(decodeBox([dx!, dy!, dw!, dh!], box), width, height);
+    if (!moved) return;
+    // The unmoved box stays as well: in crowds the move may go to the neighbour.
+    found.push({
+      box: moved,
+      verdict: verdictOf(model.verdict, describe(image, moved, model.prior)),
+      region: -1,
     });
-  let right = 0;
-  const precision = hits.map((hit, index) => (right += hit ? 1 : 0) / (index + 1));
-  for (let i = precision.length - 2; i >= 0; i--) precision[i] = Math.max(precision[i]!, precision[i + 1]!);
-  return hits.reduce((sum, hit, index) => sum + (hit ? precision[index]! : 0), 0) / truth.length;
+  };
+  for (const index of searched) {
+    const box = clipped(windows[index]!, width, height);
+    if (box) consider(box, -1);
+  }
+  image.regions.forEach((box, region) => {
+    if (isPlausible(box, side, model.prior)) consider(box, region);
+  });
+  const boxes = found.map(({ box }) => box);
+  return suppress(
+    boxes,
+    found.map(({ verdict }) => verdict),
+    NMS_IOU,
+    limit,
+  ).map((index) => found[index]!);
 }
 
-const IOU_MAX = 0.5;
-const RANKED_MAX = 100;
+function isPlausible([, , w, h]: Box, side: number, prior: ExemplarClass["prior"]): boolean {
+  return (
+    Math.abs(Math.log(w / side) - prior[0]) < 3.5 * prior[2] &&
+    Math.abs(Math.log(h / side) - prior[1]) < 3.5 * prior[3]
+  );
+}
 
-function rank(image: number, { boxes }: Prepared, scores: readonly number[]) {
-  return suppress(boxes, scores, IOU_MAX, RANKED_MAX).map((index) => ({
-    image,
-    box: boxes[index]!,
-    score: scores[index]!,
-  }));
+function clipped([x, y, w, h]: Box, width: number, height: number): Box | undefined {
+  const left = Math.max(0, x);
+  const top = Math.max(0, y);
+  const right = Math.min(width, x + w);
+  const bottom = Math.min(height, y + h);
+  // A window that mostly hangs over the side shows too little.
+  return right - left > 0.45 * w && bottom - top > 0.45 * h && right - left >= 3 && bottom - top >= 3
+    ? [left, top, right - left, bottom - top]
+    : undefined;
+}
+
+/** Window sizes that between them meet the examples: k-means on log sizes from the spread-out quantiles (Lloyd, 1982). */
+function clusterSizes(sizes: readonly (readonly [number, number])[]): [number, number][] {
+  const logs = sizes
+    .map(([w, h]): [number, number] => [Math.log(w), Math.log(h)])
+    .sort((a, b) => a[0] + a[1] - b[0] - b[1]);
+  const count = Math.max(1, Math.min(SIZES_MAX, Math.ceil(logs.length / 3)));
+  let centres = Array.from(
+    { length: count },
+    (_, n): [number, number] => logs[Math.floor(((n + 0.5) * logs.length) / count)]!,
+  );
+  for (let round = 0; round < 10; round++) {
+    const groups: [number, number][][] = centres.map(() => []);
+    for (const log of logs) {
+      let best = 0;
+      centres.forEach((centre, n) => {
+        if (distance(log, centre) < distance(log, centres[best]!)) best = n;
+      });
+      groups[best]!.push(log);
+    }
+    centres = groups
+      .filter((group) => group.length > 0)
+      .map((group) => [mean(group.map(([w]) => w)), mean(group.map(([, h]) => h))]);
+  }
+  // Sizes within a fifth of each other would find the same things twice.
+  const distinct: [number, number][] = [];
+  for (const centre of centres)
+    if (distinct.every((other) => distance(centre, other) > 0.035)) distinct.push(centre);
+  return distinct.map(([w, h]) => [Math.exp(w), Math.exp(h)]);
+}
+
+const distance = (a: readonly [number, number], b: readonly [number, number]) =>
+  (a[0] - b[0]) ** 2 + (a[1] - b[1]) ** 2;
+const mean = (values: readonly number[]) => values.reduce((sum, value) => sum + value, 0) / values.length;
+
+function spreadOf(values: readonly number[]): number {
+  const centre = mean(values);
+  return Math.sqrt(mean(values.map((value) => (value - centre) ** 2)));
+}
+
+const bestIou = (box: Box, truth: readonly Box[]) =>
+  truth.reduce((most, other) => Math.max(most, boxIou(box, other)), 0);
+
+/** Learns one class from prepared pictures; undefined with too few examples. */
+function learnClass(
+  images: readonly Prepared[],
+  classId: string,
+  seed: number,
+): Omit<ExemplarClass, "slope" | "offset" | "ap"> | undefined {
+  const own = images.map(({ truth }) =>
+    truth.filter((entry) => entry.classId === classId).map(({ box }) => box),
+  );
+  const examples = own.reduce((sum, boxes) => sum + boxes.length, 0);
+  if (examples < EXAMPLES_MIN) return undefined;
+  const random = seeded(seed);
+  const shares = images.flatMap((image, n) =>
+    own[n]!.map(([, , w, h]): [number, number] => [w / sideOf(image), h / sideOf(image)]),
+  );
+  const widths = shares.map(([w]) => Math.log(w));
+  const heights = shares.map(([, h]) => Math.log(h));
+  const prior: ExemplarClass["prior"] = [
+    mean(widths),
+    mean(heights),
+    Math.max(0.12, spreadOf(widths)),
+    Math.max(0.12, spreadOf(heights)),
+  ];
+  const sizes = clusterSizes(shares);
+
+  // Positives: the boxes themselves, jittered copies, and regions that meet them.
+  const positives: { features: Float32Array; image: number; box: Box; truth: Box }[] = [];
+  const copies = Math.max(1, Math.min(12, Math.floor(POSITIVES_MAX / examples)));
+  images.forEach((image, n) => {
+    for (const truth of own[n]!) {
+      for (let copy = 0; copy < copies && positives.length < POSITIVES_MAX; copy++) {
+        const amount = copy === 0 ? 0 : 0.11;
+        const jitter = () => (random() * 2 - 1) * amount;
+        const [x, y, w, h] = truth;
+        const wide = w * Math.exp(jitter());
+        const high = h * Math.exp(jitter());
+        const box: Box = [x + (w - wide) / 2 + w * jitter(), y + (h - high) / 2 + h * jitter(), wide, high];
+        positives.push({ features: describe(image, box, prior), image: n, box, truth });
+      }
+    }
+    image.regions.forEach((box) => {
+      if (positives.length >= POSITIVES_MAX * 1.3) return;
+      const truth = own[n]!.find((other) => boxIou(box, other) >= RIGHT_IOU);
+      if (truth) positives.push({ features: describe(image, box, prior), image: n, box, truth });
+    });
+  });
+
+  const negatives: { features: Float32Array; verdict: number }[] = [];
+  const addNegative = (image: Prepared, box: Box, truth: readonly Box[]) => {
+    if (bestIou(box, truth) < WRONG_IOU)
+      negatives.push({ features: describe(image, box, prior), verdict: 0 });
+  };
+  const perImage = Math.max(40, Math.min(250, Math.floor(900 / images.length)));
+  images.forEach((image, n) => {
+    const { width, height } = image.channels;
+    for (let draw = 0; draw < perImage; draw++) {
+      const [w, h] = sizes[Math.floor(random() * sizes.length)]!;
+      const side = sideOf(image);
+      const scale = Math.exp((random() - 0.5) * 0.5);
+      const box: Box = [
+        random() * Math.max(1, width - w * side),
+        random() * Math.max(1, height - h * side),
+        w * side * scale,
+        h * side * scale,
+      ];
+      addNegative(image, box, own[n]!);
+    }
+    const step = Math.max(1, Math.floor(image.regions.length / 120));
+    for (let region = 0; region < image.regions.length; region += step) {
+      if (isPlausible(image.regions[region]!, sideOf(image), prior))
+        addNegative(image, image.regions[region]!, own[n]!);
+    }
+  });
+
+  const model = { sizes, prior, search: [] as number[], verdict: [] as number[], offsets: [] as number[][] };
+  const rowsOf = (width: number) =>
+    [...positives, ...negatives].map(({ features }) => features.subarray(0, width));
+  const fit = (width: number, cost: number) => {
+    const rows = rowsOf(width);
+    const labels = Int8Array.from(rows, (_, r) => (r < positives.length ? 1 : -1));
+    const costs = Float32Array.from(rows, (_, r) =>
+      r < positives.length ? Math.max(1, negatives.length / positives.length / 2) : 1,
+    );
+    return [...fitLinear({ rows, labels, costs }, scalingOf(rows), cost, 12)];
+  };
+  for (let round = 0; round < ROUNDS; round++) {
+    model.search = fit(WINDOW_FEATURES, 0.0005);
+    model.verdict = fit(FEATURES, 0.0005);
+    if (round === ROUNDS - 1) break;
+    const scanned =
+      images.length <= 6
+        ? images.map((_, n) => n)
+        : Array.from({ length: 6 }, (_, n) => (round * 6 + n) % images.length);
+    for (const n of scanned) {
+      const image = images[n]!;
+      const wrong = detect(image, model, 400).filter(
+        ({ box, verdict }) => verdict > -1.2 && bestIou(box, own[n]!) < WRONG_IOU,
+      );
+      for (const { box } of wrong.slice(0, HARD_A_ROUND)) addNegative(image, box, own[n]!);
+    }
+    if (negatives.length > NEGATIVES_MAX) {
+      for (const negative of negatives) negative.verdict = verdictOf(model.verdict, negative.features);
+      negatives.sort((a, b) => b.verdict - a.verdict);
+      negatives.length = NEGATIVES_MAX;
+    }
+  }
+  const taught = positives.filter((_, n) => n % Math.ceil(positives.length / 400) === 0);
+  if (examples >= 3) {
+    const rows = taught.map(({ features }) => features);
+    const targets = [0, 1, 2, 3].map((axis) =>
+      Float64Array.from(taught, ({ box, truth }) => encodeBox(truth, box)[axis]!),
+    );
+    model.offsets = fitRidge(rows, targets, scalingOf(rows), 600).map((weights) => [...weights]);
+  }
+  return { classId, examples, ...model };
 }
 
 /**
- * Learns from a batch's settled images: for each class a logistic model over region features, colour, size
- * and shape, with hard negatives. Measured by cross-validation over images (five folds at most) against the
- * class-agnostic ranking; `useful` says whether it wins. Deterministic.
+ * Learns from a batch's settled images, class by class: cells of colour and gradient over windows of the class's own sizes,
+ * joined with box features; linear classifiers with hard negatives; four-offset regression; regions beside
+ * windows. Held-out images (up to `foldsMax` folds; the halves of a single image) give each class its calibrated
+ * probability and the measured gain over the class-agnostic ranking; `useful` says whether it wins. A class with
+ * fewer than two examples is left out. Deterministic.
  */
-export function trainExemplars(images: readonly ExemplarImage[]): ExemplarModel {
-  const prepared = images.map(prepare);
-  const classes = fit(prepared);
-  const folds = Math.min(5, prepared.length);
-  if (folds < 2) return { version: 1, classes, apWith: null, apWithout: null, useful: classes.length > 0 };
-  const withModel: Map<string, { image: number; box: Box; score: number }[]> = new Map();
-  const agnostic: { image: number; box: Box; score: number }[] = [];
-  for (let fold = 0; fold < folds; fold++) {
-    const model = fit(prepared.filter((_, index) => index % folds !== fold));
-    prepared.forEach((image, index) => {
-      if (index % folds !== fold) return;
-      agnostic.push(
-        ...rank(
-          index,
-          image,
-          image.found.map(({ features }) => objectness(features)),
-        ),
-      );
-      for (const { classId, weights } of model) {
-        const scores = image.vectors.map((vector) => objectness(vector, weights));
-        withModel.set(classId, [...(withModel.get(classId) ?? []), ...rank(index, image, scores)]);
-      }
+export function trainExemplars(
+  images: readonly ExemplarImage[],
+  { foldsMax = 3, seed = 1 }: TrainOptions = {},
+): ExemplarModel {
+  const prepared = images.map(({ raster, instances }) => prepare(raster, instances));
+  const classIds = [...new Set(prepared.flatMap(({ truth }) => truth.map(({ classId }) => classId)))].sort();
+  // With one image its halves are held out in turn; a few objects are too few to judge by.
+  const judged = images.length > 1 ? prepared : halves(images[0]);
+  const folds = Math.min(foldsMax, judged.length);
+  const found = new Map<string, Found[]>();
+  const agnostic: Found[] = [];
+  const truth = judged.flatMap((image, n) =>
+    image.truth.map(({ classId, box }) => ({ image: n, classId, box })),
+  );
+  for (let fold = 0; folds > 1 && fold < folds; fold++) {
+    const teaching = judged.filter((_, n) => n % folds !== fold);
+    const models = classIds.map((classId) => learnClass(teaching, classId, seed));
+    judged.forEach((image, n) => {
+      if (n % folds !== fold) return;
+      const ranked = rankCandidates(image.set, 100);
+      for (const at of ranked.order)
+        agnostic.push({ image: n, box: image.regions[at]!, score: ranked.scores[at]! });
+      models.forEach((model, index) => {
+        if (!model) return;
+        const list = found.get(classIds[index]!) ?? [];
+        found.set(classIds[index]!, list);
+        for (const { box, verdict } of detect(image, model, 100))
+          list.push({ image: n, box, score: verdict });
+      });
     });
   }
-  const truth = prepared.flatMap((image, index) => image.truth.map((entry) => ({ image: index, ...entry })));
-  const classIds = [...new Set(truth.map((entry) => entry.classId))];
-  const mean = (of: (classId: string) => number) =>
-    classIds.reduce((sum, classId) => sum + of(classId), 0) / Math.max(1, classIds.length);
-  const own = (classId: string) => truth.filter((entry) => entry.classId === classId);
-  const apWith = mean((classId) => averagePrecision(withModel.get(classId) ?? [], own(classId)));
-  const apWithout = mean((classId) => averagePrecision(agnostic, own(classId)));
-  return {
-    version: 1,
-    classes,
-    apWith,
-    apWithout,
-    useful: classes.length > 0 && apWith >= apWithout + GAIN_MIN,
-  };
+  const measured = folds > 1;
+  const withModel: number[] = [];
+  const without: number[] = [];
+  const classes = classIds.flatMap((classId): ExemplarClass[] => {
+    const learned = learnClass(prepared, classId, seed);
+    const own = truth.filter((entry) => entry.classId === classId);
+    const list = found.get(classId) ?? [];
+    const ap = measured && own.length > 0 ? averagePrecision(list, own) : null;
+    if (ap !== null) {
+      withModel.push(ap.value);
+      without.push(averagePrecision(agnostic, own).value);
+    }
+    if (!learned) return [];
+    const { slope, offset } = ap ? calibrated(list, ap.hits) : { slope: 1.5, offset: -1 };
+    return [rounded({ ...learned, slope, offset, ap: ap?.value ?? null })];
+  });
+  const apWith = withModel.length > 0 ? mean(withModel) : null;
+  const apWithout = without.length > 0 ? mean(without) : null;
+  const useful =
+    classes.length > 0 &&
+    apWith !== null &&
+    apWithout !== null &&
+    apWith >= AP_MIN &&
+    apWith >= apWithout + GAIN_MIN;
+  return { version: 2, classes, apWith, apWithout, useful };
+}
+
+/** The two halves of an image as images, each with the objects whose centre it holds; none with under six objects. */
+function halves(image: ExemplarImage | undefined): Prepared[] {
+  if (!image || image.instances.length < 6) return [];
+  const { raster, instances } = image;
+  const centres = instances.map(({ box }) => box[0] + box[2] / 2).sort((a, b) => a - b);
+  const middle = Math.round(
+    Math.min(raster.width * 0.7, Math.max(raster.width * 0.3, centres[centres.length >> 1]!)),
+  );
+  if (middle < 32 || raster.width - middle < 32) return [];
+  return [
+    { left: 0, width: middle },
+    { left: middle, width: raster.width - middle },
+  ].map(({ left, width }) => {
+    const half = prepare(
+      cutRaster(raster, left, 0, width, raster.height),
+      instances
+        .filter(({ box }) => box[0] + box[2] / 2 >= left && box[0] + box[2] / 2 < left + width)
+        .map(({ classId, box: [x, y, w, h] }) => ({ classId, box: [x - left, y, w, h] as Box })),
+    );
+    return half;
+  });
+}
+
+/** Platt's two numbers (1999) from held-out verdicts. */
+function calibrated(list: readonly Found[], hits: readonly boolean[]): { slope: number; offset: number } {
+  const right = hits.filter(Boolean).length;
+  if (right === 0 || right === hits.length) return { slope: 1.5, offset: right === 0 ? -2 : 1 };
+  const [offset = 0, slope = 1] = fitLogistic(
+    list.map(({ score }, n) => ({ features: [1, score], positive: hits[n]!, weight: 1 })),
+    0.05,
+    30,
+  );
+  return slope > 0 ? { slope, offset } : { slope: 1, offset: -2 };
+}
+
+function rounded(model: ExemplarClass): ExemplarClass {
+  return JSON.parse(
+    JSON.stringify(model, (_, value: unknown) =>
+      typeof value === "number" ? Number(value.toPrecision(6)) : value,
+    ),
+  ) as ExemplarClass;
+}
+
+/** Detections of all classes with their probability, px of the channels. */
+export function detectionsOf(
+  raster: Raster,
+  model: ExemplarModel,
+  limit: number,
+): { box: Box; classId: string; score: number; image: Prepared; region: number }[] {
+  const image = prepare(raster, []);
+  const all = model.classes.flatMap((entry) =>
+    detect(image, entry, limit).map(({ box, verdict, region }) => ({
+      box,
+      classId: entry.classId,
+      score: 1 / (1 + Math.exp(-(entry.slope * verdict + entry.offset))),
+      image,
+      region,
+    })),
+  );
+  // One object has one class: the likeliest stays.
+  const boxes = all.map(({ box }) => box);
+  return suppress(
+    boxes,
+    all.map(({ score }) => score),
+    0.6,
+    limit,
+  ).map((index) => all[index]!);
+}
+
+/** Share of probability below which a detection is left to the class-agnostic proposals. */
+const SCORE_MIN = 0.05;
+
+/** A model's proposals for a picture, px of the raster, with outlines. */
+export function detectExemplars(raster: Raster, model: ExemplarModel, limit: number): Proposal[] {
+  const found = detectionsOf(raster, model, limit).filter(({ score }) => score >= SCORE_MIN);
+  return byScore(found.map(({ score }) => score)).map((index): Proposal => {
+    const {
+      box: [x, y, w, h],
+      classId,
+      score,
+      image,
+    } = found[index]!;
+    const box: Box = [x * image.toRaster, y * image.toRaster, w * image.toRaster, h * image.toRaster];
+    return { box, rings: outlineInBox(raster, box).rings, score, classId, source: "exemplar" };
+  });
 }

@@ -1,222 +1,280 @@
-import { traceMask } from "@/lib/geometry/trace";
-import { simplifyRings } from "@/lib/geometry/simplify";
 import { maskFromBytes } from "@/lib/geometry/mask";
 import { ringsArea } from "@/lib/geometry/region";
+import { simplifyRings } from "@/lib/geometry/simplify";
+import { traceMask } from "@/lib/geometry/trace";
 import type { Box, Point, Rings } from "@/lib/geometry/types";
-import { blur, toLab, type Lab } from "./lab";
+import { cutting, FIRST_FEATURES, lookAt, SECOND_FEATURES, type Cutting } from "./outlineFeatures";
+import { rank, type Ranker } from "./ranker";
 import type { Raster } from "./raster";
-import { segment } from "./segments";
+import { OUTLINE_WEIGHTS } from "./weights/outline";
 
+/**
+ * What a person knows of the object, px of the raster: its extreme points in order around it (top, right, bottom,
+ * left or the reverse), points certainly inside, points certainly outside.
+ */
 export type OutlineHints = {
   extremes?: readonly Point[];
   inside?: readonly Point[];
   outside?: readonly Point[];
 };
-export type Outline = { rings: Rings; confidence: number };
+export type Outline = {
+  rings: Rings;
+  /** Expected IoU with the true outline, 0..1. */
+  confidence: number;
+};
 
-const BINS = 10;
-/** Of the box's ellipse, this much reads as object when colours say nothing. */
-const PRIOR_WEIGHT = 1.1;
+/** Two looks, with the box alone and with the four extreme points. */
+export type OutlineWeights = { box: [Ranker, Ranker]; extremes: [Ranker, Ranker] };
+
 const IOU_LOSS_MAX = 0.02;
+/** Below this share of the box, a found outline is a mistake and the inscribed ellipse is the better guess. */
+const SHARE_MIN = 0.1;
 
 /**
- * The outline of the object in a box, in px of the raster. Colour models of the inside (the box's inscribed
- * ellipse) and the outside (a ring around the box) give each pixel a log ratio; it is averaged over
- * superpixels, joined with the ellipse as prior, and cut at zero; the largest part is traced and simplified.
- * Hints are certain. Two rounds, as in GrabCut (Rother et al., 2004), but on superpixels, where it does not
- * collapse. O(pixels of the box and its surroundings).
+ * The outline of the object in a box, in px of the raster. Superpixels at two scales are judged twice by small learned
+ * networks: by place, colour against the surroundings and way to the outside; then again knowing what was
+ * thought of their neighbours (auto-context; Tu, CVPR 2008). Their mean probability a pixel, smoothed along what
+ * looks alike, is cut where the expected IoU is highest; the largest part is traced and simplified. Hints are
+ * certain. Deterministic. O(pixels of the box and its surroundings, at most about 200 x 200).
  */
-export function outlineInBox(raster: Raster, box: Box, hints: OutlineHints = {}): Outline {
-  const [x, y, w, h] = box;
-  const margin = Math.max(4, Math.round(Math.max(w, h) * 0.2));
-  const left = Math.max(0, Math.floor(x - margin));
-  const top = Math.max(0, Math.floor(y - margin));
-  const right = Math.min(raster.width, Math.ceil(x + w + margin));
-  const bottom = Math.min(raster.height, Math.ceil(y + h + margin));
-  const width = right - left;
-  const height = bottom - top;
-  if (width < 3 || height < 3) return { rings: [], confidence: 0 };
-  const lab = smoothed(cut(raster, left, top, width, height));
-  const parts = segment(lab, 18, Math.max(6, Math.round((w * h) / 400)));
-  const inBox = (px: number, py: number) =>
-    px + 0.5 >= x - left && px + 0.5 < x + w - left && py + 0.5 >= y - top && py + 0.5 < y + h - top;
-  const radius = (px: number, py: number) =>
-    Math.hypot((px + 0.5 - (x + w / 2 - left)) / (w / 2), (py + 0.5 - (y + h / 2 - top)) / (h / 2));
-
-  const count = width * height;
-  const bin = bins(lab);
-  const isIn = new Uint8Array(count);
-  for (let i = 0; i < count; i++) isIn[i] = radius(i % width, Math.floor(i / width)) <= 0.85 ? 1 : 0;
-  const certain = new Int8Array(parts.count);
-  const mark = (points: readonly Point[] | undefined, value: 1 | -1) => {
-    for (const [px, py] of points ?? []) {
-      const cx = Math.floor(px - left);
-      const cy = Math.floor(py - top);
-      if (cx >= 0 && cy >= 0 && cx < width && cy < height) certain[parts.label[cy * width + cx]!] = value;
-    }
-  };
-  mark(hints.outside, -1);
-  mark(hints.inside, 1);
-
-  const chosen = new Uint8Array(parts.count);
-  let sureness = 0;
-  for (let round = 0; round < 3; round++) {
-    const ratio = logRatios(bin, isIn, count);
-    const score = new Float64Array(parts.count);
-    const size = new Float64Array(parts.count);
-    const inside = new Float64Array(parts.count);
-    for (let i = 0; i < count; i++) {
-      const part = parts.label[i]!;
-      const px = i % width;
-      const py = (i / width) | 0;
-      size[part]! += 1;
-      if (inBox(px, py)) inside[part]! += 1;
-      score[part]! += ratio[bin[i]!]! + PRIOR_WEIGHT * (1 - radius(px, py) ** 2);
-    }
-    sureness = 0;
-    let total = 0;
-    for (let part = 0; part < parts.count; part++) {
-      const mean = score[part]! / size[part]!;
-      const share = inside[part]! / size[part]!;
-      // A superpixel that mostly lies outside the box belongs to what is around (straddling; Alexe et al., 2012).
-      chosen[part] = certain[part] === 1 || (certain[part] !== -1 && share > 0.65 && mean > 0) ? 1 : 0;
-      if (share > 0) {
-        sureness += Math.min(2, Math.abs(mean)) * inside[part]!;
-        total += 2 * inside[part]!;
-      }
-    }
-    sureness = total > 0 ? sureness / total : 0;
-    for (let i = 0; i < count; i++)
-      isIn[i] = chosen[parts.label[i]!]! && inBox(i % width, (i / width) | 0) ? 1 : 0;
-  }
-  const kept = largestFilled(isIn, width, height);
-  const pixels = kept.reduce((sum, bit) => sum + bit, 0);
-  if (pixels < Math.max(8, 0.12 * w * h)) return { rings: [ellipse(box)], confidence: 0.2 };
-  const rings = simplifyRings(traceMask(maskFromBytes(kept, width, height), 8), IOU_LOSS_MAX).map((ring) =>
-    ring.map(([px, py]): Point => [px + left, py + top]),
-  );
-  return { rings: rings.filter((ring) => ringsArea([ring]) >= 4), confidence: Math.min(1, sureness) };
+export function outlineInBox(
+  raster: Raster,
+  box: Box,
+  hints: OutlineHints = {},
+  weights = OUTLINE_WEIGHTS,
+): Outline {
+  const cut = cutting(raster, box, orderedExtremes(hints.extremes));
+  if (!cut) return { rings: [], confidence: 0 };
+  const probability = objectProbability(cut, weights);
+  return outlineFrom(cut, probability, box, hints);
 }
 
-function ellipse([x, y, w, h]: Box): Point[] {
-  return Array.from({ length: 16 }, (_, n): Point => {
-    const angle = (n / 16) * 2 * Math.PI;
+/** From the topmost clockwise, whatever order they were given in; none unless there are four or more. */
+function orderedExtremes(points: readonly Point[] = []): readonly Point[] {
+  if (points.length < 4) return [];
+  const x = points.reduce((sum, point) => sum + point[0], 0) / points.length;
+  const y = points.reduce((sum, point) => sum + point[1], 0) / points.length;
+  return [...points].sort((p, q) => Math.atan2(p[1] - y, p[0] - x) - Math.atan2(q[1] - y, q[0] - x));
+}
+
+/** Probability of each pixel of the cutting to belong to the object. */
+export function objectProbability(cut: Cutting, weights: OutlineWeights): Float32Array {
+  const [first, second] = cut.extremes.length >= 4 ? weights.extremes : weights.box;
+  const prior = ellipsePrior(cut);
+  const firstOpinions = cut.partitions.map((part) =>
+    opinions(rank(first, lookAt(cut, part, prior, undefined))),
+  );
+  const middle = perPixel(cut, firstOpinions);
+  const secondOpinions = cut.partitions.map((part, index) =>
+    opinions(rank(second, lookAt(cut, part, middle, firstOpinions[index]!))),
+  );
+  return perPixel(cut, secondOpinions);
+}
+
+const opinions = (scores: Float64Array) => Float32Array.from(scores, (score) => 1 / (1 + Math.exp(-score)));
+
+/** What is known before looking: likely in the middle of the box, not outside it. */
+export function ellipsePrior({ width, height, box: [x, y, w, h] }: Cutting): Float32Array {
+  const prior = new Float32Array(width * height);
+  for (let py = 0, i = 0; py < height; py++) {
+    const v = (py + 0.5 - (y + h / 2)) / (h / 2);
+    for (let px = 0; px < width; px++, i++) {
+      const u = (px + 0.5 - (x + w / 2)) / (w / 2);
+      const r = Math.sqrt(u * u + v * v);
+      if (Math.abs(u) <= 1 && Math.abs(v) <= 1) prior[i] = Math.max(0.05, Math.min(0.9, 1.35 - r));
+    }
+  }
+  return prior;
+}
+
+/** The superpixels' opinions spread over their pixels, mean over the scales, nothing outside the box. */
+export function perPixel(
+  { width, height, box: [x, y, w, h], partitions }: Cutting,
+  opinion: readonly Float32Array[],
+): Float32Array {
+  const out = new Float32Array(width * height);
+  for (let py = 0, i = 0; py < height; py++) {
+    const isRow = py + 0.5 >= y && py + 0.5 < y + h;
+    for (let px = 0; px < width; px++, i++) {
+      if (!isRow || px + 0.5 < x || px + 0.5 >= x + w) continue;
+      let sum = 0;
+      for (let p = 0; p < partitions.length; p++) sum += opinion[p]![partitions[p]!.label[i]!]!;
+      out[i] = sum / partitions.length;
+    }
+  }
+  return out;
+}
+
+/** Cuts, cleans, traces and simplifies; the inscribed ellipse where nothing credible is left. */
+export function outlineFrom(cut: Cutting, probability: Float32Array, box: Box, hints: OutlineHints): Outline {
+  const { width, height, left, top, scaleX, scaleY } = cut;
+  const smooth = smoothAlike(cut, probability);
+  hold(cut, smooth, hints);
+  const { level, iou } = bestLevel(smooth);
+  const isIn = new Uint8Array(width * height);
+  for (let i = 0; i < isIn.length; i++) isIn[i] = smooth[i]! >= level ? 1 : 0;
+  const kept = withoutSpeckles(isIn, width, height);
+  const pixels = kept.reduce((sum, bit) => sum + bit, 0);
+  if (pixels < Math.max(6, SHARE_MIN * cut.box[2] * cut.box[3]))
+    return { rings: [ellipseOf(box)], confidence: Math.min(iou, 0.4) };
+  const traced = simplifyRings(traceMask(maskFromBytes(kept, width, height), 8), IOU_LOSS_MAX);
+  const [x, y, w, h] = box;
+  const toRaster = ([px, py]: Point): Point => [
+    Math.min(x + w, Math.max(x, px / scaleX + left)),
+    Math.min(y + h, Math.max(y, py / scaleY + top)),
+  ];
+  const rings = traced.map((ring) => ring.map(toRaster)).filter((ring) => ringsArea([ring]) > 0);
+  return rings.length > 0
+    ? { rings, confidence: iou }
+    : { rings: [ellipseOf(box)], confidence: Math.min(iou, 0.4) };
+}
+
+/** What a person said is certain, within a small circle. */
+function hold(
+  { width, height, left, top, scaleX, scaleY, box }: Cutting,
+  probability: Float32Array,
+  { inside = [], outside = [] }: OutlineHints,
+): void {
+  const radius = Math.max(2, 0.04 * Math.max(box[2], box[3]));
+  const mark = (points: readonly Point[], value: number) => {
+    for (const [px, py] of points) {
+      const cx = (px - left) * scaleX;
+      const cy = (py - top) * scaleY;
+      for (let row = Math.max(0, Math.floor(cy - radius)); row < Math.min(height, cy + radius); row++) {
+        for (
+          let column = Math.max(0, Math.floor(cx - radius));
+          column < Math.min(width, cx + radius);
+          column++
+        ) {
+          if (Math.hypot(column + 0.5 - cx, row + 0.5 - cy) <= radius)
+            probability[row * width + column] = value;
+        }
+      }
+    }
+  };
+  mark(outside, 0);
+  mark(inside, 1);
+}
+
+/** Two rounds of averaging with the four neighbours, each weighted by how alike it looks. */
+function smoothAlike({ lab: { l, a, b }, width, height }: Cutting, probability: Float32Array): Float32Array {
+  let now = probability;
+  for (let round = 0; round < 3; round++) {
+    const next = new Float32Array(now.length);
+    for (let y = 0, i = 0; y < height; y++) {
+      for (let x = 0; x < width; x++, i++) {
+        let sum = now[i]!;
+        let weight = 1;
+        for (let side = 0; side < 4; side++) {
+          const j =
+            side === 0
+              ? x > 0
+                ? i - 1
+                : i
+              : side === 1
+                ? x + 1 < width
+                  ? i + 1
+                  : i
+                : side === 2
+                  ? y > 0
+                    ? i - width
+                    : i
+                  : y + 1 < height
+                    ? i + width
+                    : i;
+          const d = Math.abs(l[i]! - l[j]!) + Math.abs(a[i]! - a[j]!) + Math.abs(b[i]! - b[j]!);
+          const w = 1 / (1 + d * d * 0.08);
+          sum += w * now[j]!;
+          weight += w;
+        }
+        next[i] = sum / weight;
+      }
+    }
+    now = next;
+  }
+  return now;
+}
+
+const LEVELS = 64;
+
+/** The level at which the set above it has the highest expected IoU with the truth, and that IoU. */
+function bestLevel(probability: Float32Array): { level: number; iou: number } {
+  const counts = new Float64Array(LEVELS + 1);
+  const sums = new Float64Array(LEVELS + 1);
+  let total = 0;
+  for (let i = 0; i < probability.length; i++) {
+    const p = probability[i]!;
+    const at = Math.min(LEVELS, Math.floor(p * LEVELS));
+    counts[at]! += 1;
+    sums[at]! += p;
+    total += p;
+  }
+  let inside = 0;
+  let pixels = 0;
+  let best = { level: 0.5, iou: 0 };
+  for (let at = LEVELS; at >= 1; at--) {
+    inside += sums[at]!;
+    pixels += counts[at]!;
+    const iou = inside / Math.max(1, total + pixels - inside);
+    if (iou > best.iou) best = { level: at / LEVELS, iou };
+  }
+  return best;
+}
+
+/** Parts under a tenth of the largest go, as do holes under a fiftieth of it. */
+function withoutSpeckles(isIn: Uint8Array, width: number, height: number): Uint8Array {
+  const count = width * height;
+  const part = new Int32Array(count);
+  const stack = new Int32Array(count);
+  const sizes = [0];
+  const isRim = [false];
+  for (let start = 0; start < count; start++) {
+    if (part[start] !== 0) continue;
+    const name = sizes.length;
+    const kind = isIn[start]!;
+    let depth = 0;
+    let size = 0;
+    let rim = false;
+    stack[depth++] = start;
+    part[start] = name;
+    while (depth > 0) {
+      const i = stack[--depth]!;
+      size++;
+      const x = i % width;
+      if (x === 0 || x === width - 1 || i < width || i >= count - width) rim = true;
+      for (let side = 0; side < 4; side++) {
+        if ((side === 0 && x === 0) || (side === 1 && x === width - 1)) continue;
+        const j = side === 0 ? i - 1 : side === 1 ? i + 1 : side === 2 ? i - width : i + width;
+        if (j < 0 || j >= count || part[j] !== 0 || isIn[j] !== kind) continue;
+        part[j] = name;
+        stack[depth++] = j;
+      }
+    }
+    sizes.push(size);
+    isRim.push(rim);
+  }
+  let largest = 0;
+  for (let i = 0; i < count; i++) if (isIn[i]) largest = Math.max(largest, sizes[part[i]!]!);
+  const out = new Uint8Array(count);
+  for (let i = 0; i < count; i++) {
+    const size = sizes[part[i]!]!;
+    out[i] = isIn[i]
+      ? size >= 0.1 * largest
+        ? 1
+        : 0
+      : !isRim[part[i]!]! && size < 0.02 * largest + 4
+        ? 1
+        : 0;
+  }
+  return out;
+}
+
+function ellipseOf([x, y, w, h]: Box): Point[] {
+  return Array.from({ length: 20 }, (_, n): Point => {
+    const angle = (n / 20) * 2 * Math.PI;
     return [x + w / 2 + (w / 2) * Math.cos(angle), y + h / 2 + (h / 2) * Math.sin(angle)];
   });
 }
 
-function cut(raster: Raster, left: number, top: number, width: number, height: number): Raster {
-  const data = new Uint8Array(width * height * 3);
-  for (let row = 0; row < height; row++) {
-    const start = ((top + row) * raster.width + left) * 3;
-    data.set(raster.data.subarray(start, start + width * 3), row * width * 3);
-  }
-  return { width, height, data };
-}
-
-function smoothed(raster: Raster): Lab {
-  const lab = toLab(raster);
-  const soft = (plane: Float32Array) => blur(plane, lab.width, lab.height);
-  return { ...lab, l: soft(lab.l), a: soft(lab.a), b: soft(lab.b) };
-}
-
-/** Colour bin of each pixel; chroma more finely than it would need for its range, as it is what differs. */
-function bins({ l, a, b }: Lab): Uint16Array {
-  const step = (value: number, low: number, high: number) =>
-    Math.min(BINS - 1, Math.max(0, (((value - low) / (high - low)) * BINS) | 0));
-  return Uint16Array.from(
-    l,
-    (value, i) => (step(value, 0, 100) * BINS + step(a[i]!, -50, 60)) * BINS + step(b[i]!, -50, 60),
-  );
-}
-
-function logRatios(bin: Uint16Array, isIn: Uint8Array, count: number): Float64Array {
-  const cells = BINS ** 3;
-  const fore = new Float64Array(cells);
-  const back = new Float64Array(cells);
-  let foreSum = 0;
-  let backSum = 0;
-  for (let i = 0; i < count; i++) {
-    if (isIn[i]) {
-      fore[bin[i]!]! += 1;
-      foreSum += 1;
-    } else {
-      back[bin[i]!]! += 1;
-      backSum += 1;
-    }
-  }
-  const ratio = new Float64Array(cells);
-  for (let cell = 0; cell < cells; cell++) {
-    const inside = (fore[cell]! + 0.5) / (foreSum + 0.5 * cells);
-    const outside = (back[cell]! + 0.5) / (backSum + 0.5 * cells);
-    ratio[cell] = Math.max(-3, Math.min(3, Math.log(inside / outside)));
-  }
-  return ratio;
-}
-
-/** The largest 4-connected part of a mask with its holes filled. */
-function largestFilled(isIn: Uint8Array, width: number, height: number): Uint8Array {
-  const count = width * height;
-  const seen = new Int32Array(count);
-  const stack = new Int32Array(count);
-  let best = 0;
-  let bestSize = 0;
-  let name = 0;
-  const flood = (start: number, name: number, wanted: number): number => {
-    let depth = 0;
-    let size = 0;
-    stack[depth++] = start;
-    seen[start] = name;
-    while (depth > 0) {
-      const i = stack[--depth]!;
-      size += 1;
-      const px = i % width;
-      const visit = (j: number) => {
-        if (seen[j] === 0 && isIn[j] === wanted) {
-          seen[j] = name;
-          stack[depth++] = j;
-        }
-      };
-      if (px > 0) visit(i - 1);
-      if (px + 1 < width) visit(i + 1);
-      if (i >= width) visit(i - width);
-      if (i + width < count) visit(i + width);
-    }
-    return size;
-  };
-  for (let i = 0; i < count; i++) {
-    if (!isIn[i] || seen[i]) continue;
-    const size = flood(i, ++name, 1);
-    if (size > bestSize) [best, bestSize] = [name, size];
-  }
-  const kept = new Uint8Array(count);
-  if (best === 0) return kept;
-  for (let i = 0; i < count; i++) kept[i] = seen[i] === best ? 1 : 0;
-  // Ground that does not reach the border of the cutting is a hole.
-  const ground = new Int32Array(count);
-  let depth = 0;
-  const enter = (i: number) => {
-    if (!kept[i] && !ground[i]) {
-      ground[i] = 1;
-      stack[depth++] = i;
-    }
-  };
-  for (let x = 0; x < width; x++) {
-    enter(x);
-    enter((height - 1) * width + x);
-  }
-  for (let y = 0; y < height; y++) {
-    enter(y * width);
-    enter(y * width + width - 1);
-  }
-  while (depth > 0) {
-    const i = stack[--depth]!;
-    const px = i % width;
-    if (px > 0) enter(i - 1);
-    if (px + 1 < width) enter(i + 1);
-    if (i >= width) enter(i - width);
-    if (i + width < count) enter(i + width);
-  }
-  for (let i = 0; i < count; i++) if (!ground[i]) kept[i] = 1;
-  return kept;
-}
+/** Widths of the two looks, for the command that learns their weights. */
+export const LOOK_WIDTHS = [FIRST_FEATURES, SECOND_FEATURES] as const;

@@ -1,99 +1,120 @@
 import type { Lab } from "./lab";
 
-/** A partition of a picture: `label[pixel]` is 0 .. count - 1. */
+/** A partition of a picture: `label[pixel]` is 0 .. count - 1, numbered in reading order. */
 export type Segments = { width: number; height: number; label: Int32Array; count: number };
 
-const WEIGHT_STEPS = 2048;
+/** The edges between neighbouring pixels in order of weight. Edge code: 2 * pixel, plus 1 for the edge downwards. */
+export type PixelGraph = { width: number; height: number; order: Int32Array; weight: Float32Array };
+
+const WEIGHT_STEPS = 4096;
+/** Weights beyond this are all alike: no scale in use joins across them. */
+const WEIGHT_MAX = 60;
 
 /**
- * Graph segmentation (Felzenszwalb and Huttenlocher, IJCV 2004) on 8 neighbours in Lab: two components join
- * when the lightest edge between them is no heavier than the heaviest inside either plus k / size. Components
- * under `sizeMin` px join their nearest neighbour. Edges are sorted by counting, weights to 1/2048 of the
- * range. O(pixels).
+ * The 4-neighbour graph of a picture, weighted by distance over three planes and sorted by counting (to 1/4096 of
+ * `WEIGHT_MAX`). Sorted once, it serves every scale. Eight neighbours were measured: twice the time, no more
+ * objects found. O(pixels).
  */
-export function segment(lab: Lab, k: number, sizeMin: number): Segments {
-  const { width, height, l, a, b } = lab;
+export function pixelGraph(
+  width: number,
+  height: number,
+  planes: readonly [Float32Array, Float32Array, Float32Array],
+): PixelGraph {
   const count = width * height;
-  const edgesMax = count * 4;
-  const from = new Int32Array(edgesMax);
-  const to = new Int32Array(edgesMax);
-  const weight = new Float32Array(edgesMax);
+  const weight = new Float32Array(count * 2).fill(-1);
+  const starts = new Int32Array(WEIGHT_STEPS + 1);
+  const scale = (WEIGHT_STEPS - 1) / WEIGHT_MAX;
+  const [p0, p1, p2] = planes;
   let edges = 0;
-  let heaviest = 0;
-  const put = (i: number, j: number) => {
-    const dl = l[i]! - l[j]!;
-    const da = a[i]! - a[j]!;
-    const db = b[i]! - b[j]!;
-    const w = Math.sqrt(dl * dl + da * da + db * db);
-    from[edges] = i;
-    to[edges] = j;
-    weight[edges++] = w;
-    if (w > heaviest) heaviest = w;
-  };
-  for (let y = 0; y < height; y++) {
-    for (let x = 0; x < width; x++) {
-      const i = y * width + x;
-      if (x + 1 < width) put(i, i + 1);
-      if (y + 1 < height) put(i, i + width);
-      if (x + 1 < width && y + 1 < height) put(i, i + width + 1);
-      if (x > 0 && y + 1 < height) put(i, i + width - 1);
+  for (let down = 0; down < 2; down++) {
+    const step = down ? width : 1;
+    const yEnd = height - down;
+    const xEnd = width - 1 + down;
+    for (let y = 0; y < yEnd; y++) {
+      for (let x = 0, i = y * width; x < xEnd; x++, i++) {
+        const j = i + step;
+        const d0 = p0[i]! - p0[j]!;
+        const d1 = p1[i]! - p1[j]!;
+        const d2 = p2[i]! - p2[j]!;
+        const w = Math.min(WEIGHT_MAX, Math.sqrt(d0 * d0 + d1 * d1 + d2 * d2));
+        weight[2 * i + down] = w;
+        starts[((weight[2 * i + down]! * scale) | 0) + 1]!++;
+        edges++;
+      }
     }
   }
-  const order = countingSort(weight, edges, heaviest);
+  for (let step = 0; step < WEIGHT_STEPS; step++) starts[step + 1]! += starts[step]!;
+  const order = new Int32Array(edges);
+  for (let code = 0; code < weight.length; code++) {
+    const w = weight[code]!;
+    if (w >= 0) order[starts[(w * scale) | 0]!++] = code;
+  }
+  return { width, height, order, weight };
+}
+
+/**
+ * Graph segmentation (Felzenszwalb and Huttenlocher, IJCV 2004): two components join when the lightest edge between
+ * them is no heavier than the heaviest inside either plus k / size. Then components under `sizeMin` px join
+ * across their lightest edge. O(pixels).
+ */
+export function segmentGraph(
+  { width, height, order, weight }: PixelGraph,
+  k: number,
+  sizeMin: number,
+): Segments {
+  const count = width * height;
   const parent = new Int32Array(count);
   for (let i = 0; i < count; i++) parent[i] = i;
   const size = new Int32Array(count).fill(1);
   const limit = new Float32Array(count).fill(k);
-  const find = (i: number) => {
-    let root = i;
-    while (parent[root] !== root) root = parent[root]!;
-    for (let at = i; at !== root;) {
-      const next = parent[at]!;
-      parent[at] = root;
-      at = next;
+  // Edges that joined nothing are the only ones that the second pass needs to see.
+  const refused = new Int32Array(order.length);
+  let refusedCount = 0;
+  for (let n = 0; n < order.length; n++) {
+    const code = order[n]!;
+    const w = weight[code]!;
+    let p = code >> 1;
+    let q = code & 1 ? p + width : p + 1;
+    while (parent[p] !== p) p = parent[p] = parent[parent[p]!]!;
+    while (parent[q] !== q) q = parent[q] = parent[parent[q]!]!;
+    if (p === q) continue;
+    if (w > limit[p]! || w > limit[q]!) {
+      refused[refusedCount++] = code;
+      continue;
     }
-    return root;
-  };
-  const join = (p: number, q: number) => {
-    const [big, small] = size[p]! >= size[q]! ? [p, q] : [q, p];
-    parent[small] = big;
-    size[big] = size[big]! + size[small]!;
-    return big;
-  };
-  for (let n = 0; n < edges; n++) {
-    const e = order[n]!;
-    const p = find(from[e]!);
-    const q = find(to[e]!);
-    if (p === q || weight[e]! > limit[p]! || weight[e]! > limit[q]!) continue;
-    const root = join(p, q);
-    limit[root] = weight[e]! + k / size[root]!;
+    if (size[p]! < size[q]!) {
+      const swap = p;
+      p = q;
+      q = swap;
+    }
+    parent[q] = p;
+    size[p]! += size[q]!;
+    limit[p] = w + k / size[p]!;
   }
-  for (let n = 0; n < edges; n++) {
-    const e = order[n]!;
-    const p = find(from[e]!);
-    const q = find(to[e]!);
-    if (p !== q && (size[p]! < sizeMin || size[q]! < sizeMin)) join(p, q);
+  for (let n = 0; n < refusedCount; n++) {
+    const code = refused[n]!;
+    let p = code >> 1;
+    let q = code & 1 ? p + width : p + 1;
+    while (parent[p] !== p) p = parent[p] = parent[parent[p]!]!;
+    while (parent[q] !== q) q = parent[q] = parent[parent[q]!]!;
+    if (p === q || (size[p]! >= sizeMin && size[q]! >= sizeMin)) continue;
+    parent[q] = p;
+    size[p]! += size[q]!;
   }
   const label = new Int32Array(count);
   const names = new Int32Array(count).fill(-1);
   let named = 0;
   for (let i = 0; i < count; i++) {
-    const root = find(i);
+    let root = i;
+    while (parent[root] !== root) root = parent[root]!;
+    parent[i] = root;
     if (names[root]! < 0) names[root] = named++;
     label[i] = names[root]!;
   }
   return { width, height, label, count: named };
 }
 
-function countingSort(weight: Float32Array, edges: number, heaviest: number): Int32Array {
-  const scale = heaviest > 0 ? (WEIGHT_STEPS - 1) / heaviest : 0;
-  const starts = new Int32Array(WEIGHT_STEPS + 1);
-  for (let e = 0; e < edges; e++) starts[((weight[e]! * scale) | 0) + 1]!++;
-  for (let step = 0; step < WEIGHT_STEPS; step++) starts[step + 1] = starts[step + 1]! + starts[step]!;
-  const order = new Int32Array(edges);
-  for (let e = 0; e < edges; e++) {
-    const step = (weight[e]! * scale) | 0;
-    order[starts[step]!++] = e;
-  }
-  return order;
+/** `segmentGraph` of a Lab picture at one scale. */
+export function segment(lab: Lab, k: number, sizeMin: number): Segments {
+  return segmentGraph(pixelGraph(lab.width, lab.height, [lab.l, lab.a, lab.b]), k, sizeMin);
 }

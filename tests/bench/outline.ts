@@ -1,50 +1,38 @@
-import { readFileSync } from "node:fs";
-import path from "node:path";
-import { maskArea, maskIou, rasteriseRings, type Mask } from "@/lib/geometry/mask";
+import { readOutlineExamples } from "@/lib/cli/photographs";
+import { maskIou, rasteriseRings } from "@/lib/geometry/mask";
 import type { Box, Point, Rings } from "@/lib/geometry/types";
-import { decodeFile } from "@/lib/vision/decode";
 import { outlineInBox } from "@/lib/vision/outline";
-import { extremePoints, learnOutline, type OutlineExample } from "@/lib/vision/outlineLearning";
+import { extremePoints, learnOutline } from "@/lib/vision/outlineLearning";
 
 /**
  * Mask IoU of the outline found in the true box, over the objects of data/coco-by over 32² px; weights never learned on
  * the photograph measured (five folds). Beside it the box itself and its inscribed ellipse.
  */
-const FOLDER = path.resolve("../shared/data/coco-by");
 const FOLDS = 5;
 
-type Coco = {
-  images: { id: number; file_name: string }[];
-  annotations: { image_id: number; bbox: [number, number, number, number]; area: number; iscrowd: number; segmentation: unknown }[];
-};
-
-export async function outlineExamples(): Promise<OutlineExample[]> {
-  const coco = JSON.parse(readFileSync(path.join(FOLDER, "instances.json"), "utf8")) as Coco;
-  const found: OutlineExample[] = [];
-  for (const [group, image] of coco.images.entries()) {
-    const { raster } = await decodeFile(path.join(FOLDER, "images", image.file_name));
-    for (const annotation of coco.annotations) {
-      if (annotation.image_id !== image.id || annotation.iscrowd || annotation.area <= 1024 || !Array.isArray(annotation.segmentation)) continue;
-      const rings = ringsOf(annotation.segmentation as number[][]);
-      const mask = rasteriseRings(rings, raster.width, raster.height);
-      if (maskArea(mask) > 0) found.push({ raster, box: annotation.bbox, mask, group });
-    }
-  }
-  return found;
-}
-
-function ringsOf(flat: readonly number[][]): Rings {
-  return flat.map((values) => Array.from({ length: values.length >> 1 }, (_, n): Point => [values[2 * n] ?? 0, values[2 * n + 1] ?? 0]));
-}
-
-const rectangle = ([x, y, w, h]: Box): Rings => [[[x, y], [x + w, y], [x + w, y + h], [x, y + h]]];
+const rectangle = ([x, y, w, h]: Box): Rings => [
+  [
+    [x, y],
+    [x + w, y],
+    [x + w, y + h],
+    [x, y + h],
+  ],
+];
 const ellipse = ([x, y, w, h]: Box): Rings => [
-  Array.from({ length: 64 }, (_, n): Point => [x + w / 2 + (w / 2) * Math.cos((n / 32) * Math.PI), y + h / 2 + (h / 2) * Math.sin((n / 32) * Math.PI)]),
+  Array.from({ length: 64 }, (_, n): Point => [
+    x + w / 2 + (w / 2) * Math.cos((n / 32) * Math.PI),
+    y + h / 2 + (h / 2) * Math.sin((n / 32) * Math.PI),
+  ]),
 ];
 
 async function main(): Promise<void> {
-  const examples = await outlineExamples();
-  const rows: Record<string, number[]> = { box: [], ellipse: [], "outline in box": [], "with extreme points": [] };
+  const examples = await readOutlineExamples();
+  const rows: Record<string, number[]> = {
+    box: [],
+    ellipse: [],
+    "outline in box": [],
+    "with extreme points": [],
+  };
   const millis: number[] = [];
   const confidences: number[] = [];
   let notWorse = 0;
@@ -65,17 +53,26 @@ async function main(): Promise<void> {
       rows["outline in box"]!.push(own);
       confidences.push(found.confidence);
       if (own >= plain - 0.05) notWorse++;
-      const extremes = extremePoints(mask as Mask);
+      const extremes = extremePoints(mask);
       rows["with extreme points"]!.push(iou(outlineInBox(raster, box, { extremes }, weights).rings));
     }
   }
   const mean = (list: readonly number[]) => list.reduce((sum, value) => sum + value, 0) / list.length;
   const median = (list: readonly number[]) => [...list].sort((p, q) => p - q)[list.length >> 1] ?? 0;
-  console.log(`${examples.length} objects over 32² px of 51 photographs; weights learned on other photographs (${FOLDS} folds)`);
+  console.log(
+    `${examples.length} objects over 32² px of 51 photographs; weights learned on other photographs (${FOLDS} folds)`,
+  );
   console.log("outline                mean IoU  median");
-  for (const [name, list] of Object.entries(rows)) console.log(`${name.padEnd(22)} ${mean(list).toFixed(3).padStart(8)} ${median(list).toFixed(3).padStart(7)}`);
-  console.log(`not worse than the ellipse by more than 0.05: ${((100 * notWorse) / examples.length).toFixed(1)} of 100 (target 95)`);
-  console.log(`median ${median(millis).toFixed(0)} ms (target 100); mean stated confidence ${mean(confidences).toFixed(3)}`);
+  for (const [name, list] of Object.entries(rows))
+    console.log(
+      `${name.padEnd(22)} ${mean(list).toFixed(3).padStart(8)} ${median(list).toFixed(3).padStart(7)}`,
+    );
+  console.log(
+    `not worse than the ellipse by more than 0.05: ${((100 * notWorse) / examples.length).toFixed(1)} of 100 (target 95)`,
+  );
+  console.log(
+    `median ${median(millis).toFixed(0)} ms (target 100); mean stated confidence ${mean(confidences).toFixed(3)}`,
+  );
   console.log("targets: mean 0.76 with the box, 0.82 with the four extreme points");
 }
 
