@@ -7,7 +7,7 @@ import { claimTask } from "@/lib/market/work/claimTask";
 import { submitWork } from "@/lib/market/work/submitWork";
 import { AppError } from "@/lib/errors";
 import type { CARE } from "./people";
-import { sceneOf } from "./pictures";
+import { truthOf } from "./pictures";
 import { annotate } from "./scenes/annotate";
 
 type Annotator = { actor: Actor; care: (typeof CARE)[keyof typeof CARE] };
@@ -64,8 +64,7 @@ function draw(
   key: Map<string, { id: string; geometry: "box" | "polygon" }>,
   seed: number,
 ): DeskDocument {
-  const scene = sceneOf(fileName);
-  const drawn = annotate(scene, care, seed);
+  const drawn = annotate(truthOf(fileName), care, seed);
   const instances = drawn.flatMap((instance, index) => {
     const kind = key.get(instance.className);
     if (!kind) return [];

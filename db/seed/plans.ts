@@ -34,7 +34,7 @@ Follow the visible edge. Where one thing lies on another, draw only what you can
 export const SPRING_TIDE: ScenePlan = {
   title: "Wrack line, spring tide",
   scene: "wrack-line",
-  seeds: range(101, 10),
+  seeds: range(101, 9),
   prefix: "spring",
   classes: [...SHORE_KEY],
   brief: SHORE_BRIEF,
@@ -48,7 +48,7 @@ export const SPRING_TIDE: ScenePlan = {
 export const NEAP_TIDE: ScenePlan = {
   ...SPRING_TIDE,
   title: "Wrack line, neap tide",
-  seeds: range(201, 8),
+  seeds: range(201, 7),
   prefix: "neap",
 };
 

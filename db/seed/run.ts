@@ -1,5 +1,5 @@
 import { getDb } from "@/db/client";
-import { findSceneCopy, renderPlan } from "./pictures";
+import { findSettled, Renderer } from "./pictures";
 import { postBatch, topUpWallet, until } from "./batches";
 import { drawBatch } from "./drawing";
 import { CARE, seedPeople, type AnnotatorKey } from "./people";
@@ -24,16 +24,20 @@ async function main(): Promise<void> {
   const db = getDb();
   const now = Date.now();
   const say = (line: string) => console.log(`${((Date.now() - now) / 1000).toFixed(1)} s  ${line}`);
+  // Rendering is the longest part: all of it begins at once, on threads, in the order in which it is needed.
+  const renderer = new Renderer();
+  const springPictures = renderer.render(SPRING_TIDE);
+  const neapPictures = renderer.render(NEAP_TIDE);
+  const glassPictures = renderer.render(GLASSHOUSE);
   await ensureBucket();
   const { actors, teamId } = await seedPeople(db, now - 30 * DAY_MS);
   await topUpWallet({ actor: actors.ines, teamId, amountCents: 25_000, nowMs: now - 21 * DAY_MS });
   say("people and wallet");
 
-  const springPictures = await renderPlan(SPRING_TIDE);
   const springId = await postBatch({
     actor: actors.ines,
     teamId,
-    plan: { ...SPRING_TIDE, pictures: springPictures },
+    plan: { ...SPRING_TIDE, pictures: await springPictures },
     nowMs: now - 6 * DAY_MS,
   });
   say("spring tide posted");
@@ -49,19 +53,17 @@ async function main(): Promise<void> {
   contestOne();
   say("spring tide settled, a dispute decided");
 
-  const neapPictures = await renderPlan(NEAP_TIDE);
   await postBatch({
     actor: actors.ines,
     teamId,
-    plan: { ...NEAP_TIDE, pictures: neapPictures },
+    plan: { ...NEAP_TIDE, pictures: await neapPictures },
     nowMs: now - DAY_MS / 2,
   });
   say("neap tide posted");
-  const glassPictures = await renderPlan(GLASSHOUSE);
   const glassId = await postBatch({
     actor: actors.rowan,
     teamId,
-    plan: { ...GLASSHOUSE, pictures: glassPictures },
+    plan: { ...GLASSHOUSE, pictures: await glassPictures },
     nowMs: now - DAY_MS,
   });
   say("glasshouse posted");
@@ -75,6 +77,7 @@ async function main(): Promise<void> {
   openOne();
   say("glasshouse half drawn");
 
+  await renderer.close();
   await payTomas();
   const releaseId = requestRelease({ actor: actors.ines, nowMs: Date.now(), batchId: springId });
   await until("the release is built", () =>
@@ -108,7 +111,7 @@ async function main(): Promise<void> {
 
   /** The one whose work scores worst contests it; the admin looks and keeps the result, with a reason. */
   function contestOne(): void {
-    const settled = findSceneCopy(db, springId);
+    const settled = findSettled(db, springId);
     const list = settled ? listSubmissionsOf(db, settled.id) : [];
     const contested = [...list]
       .filter((submission) => submission.quality !== null)
@@ -136,7 +139,7 @@ async function main(): Promise<void> {
   /** One picture of the second batch waits on the docket for the visitor. */
   function openOne(): void {
     if (listDocket(db, "open").length > 0) return;
-    const image = findSceneCopy(db, glassId);
+    const image = findSettled(db, glassId);
     if (image)
       contestImage({
         actor: actors.rowan,

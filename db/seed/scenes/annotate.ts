@@ -1,9 +1,11 @@
 import { boxOfRings } from "@/lib/geometry/box";
 import { ringsArea } from "@/lib/geometry/region";
 import { simplifyRings } from "@/lib/geometry/simplify";
-import type { Box, Point, Ring } from "@/lib/geometry/types";
-import type { Scene, SceneInstance } from "./index";
+import type { Point, Ring } from "@/lib/geometry/types";
+import type { SceneInstance } from "./index";
 import { noise, randomFrom } from "./noise";
+
+type SceneTruth = { width: number; height: number; instances: readonly SceneInstance[] };
 
 /** How carefully somebody draws. */
 export type Care = "careful" | "steady" | "hasty" | "careless";
@@ -30,7 +32,7 @@ const HABITS: Record<Care, Habit> = {
 export type Drawn = Pick<SceneInstance, "className" | "box" | "rings" | "occluded">;
 
 /** What somebody of this care would draw of a scene. The same seed gives the same drawing. */
-export function annotate(scene: Scene, care: Care, seed: number): Drawn[] {
+export function annotate(scene: SceneTruth, care: Care, seed: number): Drawn[] {
   const habit = HABITS[care];
   const random = randomFrom(seed * 2654435761 + 11);
   const names = [...new Set(scene.instances.map((instance) => instance.className))];
@@ -64,7 +66,7 @@ export function annotate(scene: Scene, care: Care, seed: number): Drawn[] {
 }
 
 /** Moves each vertex along its own normal by a smooth amount: a hand is off by stretches, not by points. */
-function wander(ring: Ring, byPx: number, seed: number, scene: Scene): Ring {
+function wander(ring: Ring, byPx: number, seed: number, scene: SceneTruth): Ring {
   const n = ring.length;
   return ring.map(([x, y], index): Point => {
     const [px, py] = ring[(index + n - 1) % n] ?? [x, y];
@@ -76,9 +78,7 @@ function wander(ring: Ring, byPx: number, seed: number, scene: Scene): Ring {
   });
 }
 
-function within([x, y]: Point, { width, height }: Scene): Point {
+function within([x, y]: Point, { width, height }: SceneTruth): Point {
   const round = (value: number) => Math.round(value * 10) / 10;
   return [round(Math.min(width, Math.max(0, x))), round(Math.min(height, Math.max(0, y)))];
 }
-
-export type { Box };

@@ -1,4 +1,4 @@
-import { fractal, hash } from "./noise";
+import { hash } from "./noise";
 
 export type Rgb = readonly [number, number, number];
 
@@ -46,10 +46,19 @@ export class Canvas {
     this.owner = new Int16Array(count);
   }
 
-  /** Fills the ground. */
-  ground(at: (x: number, y: number) => Surface): void {
-    for (let y = 0; y < this.heightPx; y++) {
-      for (let x = 0; x < this.width; x++) this.put(y * this.width + x, at(x, y), 0);
+  /** Fills the ground; `relief` is its fine height in px, from whose slopes its normals are taken. */
+  ground(relief: (x: number, y: number) => number, at: (x: number, y: number) => Surface): void {
+    const { width, heightPx } = this;
+    let row = Float32Array.from({ length: width + 1 }, (_, x) => relief(x, 0));
+    for (let y = 0; y < heightPx; y++) {
+      const below = Float32Array.from({ length: width + 1 }, (_, x) => relief(x, y + 1));
+      for (let x = 0; x < width; x++) {
+        const i = y * width + x;
+        this.put(i, at(x, y), 0);
+        this.nx[i] = this.nx[i]! + row[x]! - row[x + 1]!;
+        this.ny[i] = this.ny[i]! + row[x]! - below[x]!;
+      }
+      row = below;
     }
   }
 
@@ -99,6 +108,8 @@ export class Canvas {
     const rise = Math.tan(light.elevation);
     const half = Math.hypot(lx, ly, lz + 1);
     const reach = Math.min(70, 46 / Math.max(0.2, rise));
+    const [towardX, towardY] = [Math.cos(light.angle), Math.sin(light.angle)];
+    const highest = this.height.reduce((most, value) => Math.max(most, value), 0);
     for (let y = 0; y < heightPx; y++) {
       for (let x = 0; x < width; x++) {
         const i = y * width + x;
@@ -108,8 +119,9 @@ export class Canvas {
         let blocked = 0;
         const own = height[i]!;
         for (let step = 2; step < reach; step += step < 12 ? 2 : 4) {
-          const px = Math.round(x + Math.cos(light.angle) * step);
-          const py = Math.round(y + Math.sin(light.angle) * step);
+          if (own + step * rise > highest) break; // nothing here is tall enough to shade from so far
+          const px = (x + towardX * step + 0.5) | 0;
+          const py = (y + towardY * step + 0.5) | 0;
           if (px < 0 || py < 0 || px >= width || py >= heightPx) break;
           const over = height[py * width + px]! - own - step * rise;
           if (over > 0) blocked = Math.max(blocked, Math.min(1, over / 3));
@@ -137,14 +149,4 @@ export class Canvas {
 /** A colour mixed towards another. */
 export function mix(a: Rgb, b: Rgb, t: number): Rgb {
   return [a[0] + (b[0] - a[0]) * t, a[1] + (b[1] - a[1]) * t, a[2] + (b[2] - a[2]) * t];
-}
-
-/** Relief of a fractal as normal components: slope of the noise times `depth`. */
-export function slope(x: number, y: number, seed: number, scale: number, depth: number): [number, number] {
-  const e = 0.7;
-  const here = fractal(x * scale, y * scale, seed, 3);
-  return [
-    (here - fractal((x + e) * scale, y * scale, seed, 3)) * depth,
-    (here - fractal(x * scale, (y + e) * scale, seed, 3)) * depth,
-  ];
 }

@@ -1,10 +1,10 @@
 import sharp from "sharp";
-import { maskBounds, maskFromBytes } from "@/lib/geometry/mask";
+import { maskFromBytes } from "@/lib/geometry/mask";
 import { simplifyRings } from "@/lib/geometry/simplify";
 import { traceMask } from "@/lib/geometry/trace";
 import { ringsArea } from "@/lib/geometry/region";
-import type { Box, Rings } from "@/lib/geometry/types";
-import { Canvas, mix, slope, type Light, type Rgb } from "./canvas";
+import type { Box, Point, Rings } from "@/lib/geometry/types";
+import { Canvas, mix, type Light, type Rgb } from "./canvas";
 import { fractal, noise, randomFrom, type Random } from "./noise";
 import { bottle, can, cap, float, leaf, pebble, rope, weed, type Place } from "./things";
 
@@ -79,34 +79,39 @@ function paintShore(canvas: Canvas, random: Random, seed: number): string[] {
     waterAt * height + tilt * (x - width / 2) * 0.4 + (fractal(x * 0.006, 3, seed, 3) - 0.5) * 90;
   const line = (x: number) =>
     wrackAt * height + tilt * (x - width / 2) + (fractal(x * 0.005, 9, seed + 4, 3) - 0.5) * 170;
-  canvas.ground((x, y) => {
-    const shore = edge(x);
-    const wet = Math.max(0, Math.min(1, (shore + 210 - y) / 190));
-    if (waterAt > 0 && y < shore) {
-      const depth = Math.min(1, (shore - y) / 120);
-      const wave = Math.sin(y * 0.09 + fractal(x * 0.01, y * 0.02, seed, 3) * 9);
-      const foam = fractal(x * 0.05, y * 0.06, seed + 2, 4) + Math.max(0, 1 - (shore - y) / 26) * 0.35;
-      const [nx, ny] = slope(x, y, seed + 8, 0.03, 2.2);
+  const shoreAt = Float32Array.from({ length: width + 1 }, (_, x) => edge(x));
+  const sand = (x: number, y: number) =>
+    fractal(x * 0.35, y * 0.35, seed + 5, 3) * 1.4 + fractal(x * 0.02, y * 0.02, seed + 6, 2) * 5;
+  const water = (x: number, y: number) => fractal(x * 0.03, y * 0.03, seed + 8, 3) * 2.2;
+  const isWater = (x: number, y: number) => waterAt > 0 && y < (shoreAt[x] ?? 0);
+  canvas.ground(
+    (x, y) => (isWater(x, y) ? water(x, y) : sand(x, y)),
+    (x, y) => {
+      const shore = shoreAt[x] ?? 0;
+      const wet = Math.max(0, Math.min(1, (shore + 210 - y) / 190));
+      if (isWater(x, y)) {
+        const depth = Math.min(1, (shore - y) / 120);
+        const wave = Math.sin(y * 0.09 + fractal(x * 0.01, y * 0.02, seed, 3) * 9);
+        const foam = fractal(x * 0.05, y * 0.06, seed + 2, 4) + Math.max(0, 1 - (shore - y) / 26) * 0.35;
+        const colour = mix(
+          mix([0.4, 0.36, 0.26], [0.16, 0.25, 0.26], depth),
+          [0.93, 0.94, 0.93],
+          foam > 0.68 ? Math.min(1, (foam - 0.68) * 6) : 0,
+        );
+        return { height: 0, nx: 0, ny: wave * 0.12, colour, gloss: 0.6 };
+      }
+      const ripple = Math.sin((y + tilt * x) * 0.16 + fractal(x * 0.012, y * 0.012, seed, 3) * 11) * 0.16;
+      const speck = noise(x * 0.9, y * 0.9, seed + 1);
+      const grains = speck > 0.93 ? 0.35 : speck < 0.06 ? -0.3 : 0;
+      const tone = fractal(x * 0.008, y * 0.008, seed + 3, 4);
       const colour = mix(
-        mix([0.4, 0.36, 0.26], [0.16, 0.25, 0.26], depth),
-        [0.93, 0.94, 0.93],
-        foam > 0.68 ? Math.min(1, (foam - 0.68) * 6) : 0,
+        mix(dry, [0.34, 0.27, 0.18], 0.75 * wet),
+        grains > 0 ? [0.9, 0.86, 0.8] : [0.2, 0.17, 0.13],
+        Math.abs(grains) * 0.6 + tone * 0.12,
       );
-      return { height: 0, nx, ny: ny + wave * 0.12, colour, gloss: 0.6 };
-    }
-    const ripple = Math.sin((y + tilt * x) * 0.16 + fractal(x * 0.012, y * 0.012, seed, 3) * 11) * 0.16;
-    const [nx, ny] = slope(x, y, seed + 5, 0.35, 1.4);
-    const [bx, by] = slope(x, y, seed + 6, 0.02, 5);
-    const speck = noise(x * 0.9, y * 0.9, seed + 1);
-    const grains = speck > 0.93 ? 0.35 : speck < 0.06 ? -0.3 : 0;
-    const tone = fractal(x * 0.008, y * 0.008, seed + 3, 4);
-    const colour = mix(
-      mix(dry, [0.34, 0.27, 0.18], 0.75 * wet),
-      grains > 0 ? [0.9, 0.86, 0.8] : [0.2, 0.17, 0.13],
-      Math.abs(grains) * 0.6 + tone * 0.12,
-    );
-    return { height: 0, nx: nx + bx, ny: ny + by + ripple * (1 - wet * 0.5), colour, gloss: 0.5 * wet };
-  });
+      return { height: 0, nx: 0, ny: ripple * (1 - wet * 0.5), colour, gloss: 0.5 * wet };
+    },
+  );
   const scaleAt = (y: number) => 0.62 + 0.62 * (y / height);
   const onLine = (spread: number): Place => {
     const x = 40 + random() * (width - 80);
@@ -171,28 +176,33 @@ function paintTrays(canvas: Canvas, random: Random, seed: number): string[] {
   const cellY = height / rows;
   const rib = 11;
   const jitter = [random() * 14 - 7, random() * 14 - 7] as const;
-  canvas.ground((x, y) => {
+  const soil = (x: number, y: number) => fractal(x * 0.16, y * 0.16, seed + 3, 3) * 4.2;
+  canvas.ground(soil, (x, y) => {
     const u = (((x + jitter[0]) % cellX) + cellX) % cellX;
     const v = (((y + jitter[1]) % cellY) + cellY) % cellY;
     const toWall = Math.min(u, cellX - u, v, cellY - v);
     if (toWall < rib) {
-      const [nx, ny] = slope(x, y, seed, 0.2, 0.25);
       const side = toWall < rib * 0.75 ? 0 : 1.4;
       const across = Math.min(u, cellX - u) < Math.min(v, cellY - v);
       return {
         height: 12,
-        nx: nx + (across ? (u < cellX / 2 ? side : -side) : 0),
-        ny: ny + (across ? 0 : v < cellY / 2 ? side : -side),
+        nx: across ? (u < cellX / 2 ? side : -side) : 0,
+        ny: across ? 0 : v < cellY / 2 ? side : -side,
         colour: [0.07, 0.075, 0.08],
         gloss: 0.5,
       };
     }
-    const [nx, ny] = slope(x, y, seed + 3, 0.16, 4.2);
     const speck = noise(x * 0.22, y * 0.22, seed + 5);
     const tone = fractal(x * 0.05, y * 0.05, seed + 2, 4);
-    const soil = mix([0.09, 0.06, 0.04], [0.24, 0.16, 0.1], tone);
+    const tint = mix([0.09, 0.06, 0.04], [0.24, 0.16, 0.1], tone);
     const isPerlite = speck > 0.9 && noise(x * 0.06, y * 0.06, seed + 9) > 0.5;
-    return { height: isPerlite ? 3 : 0, nx, ny, colour: isPerlite ? [0.82, 0.8, 0.76] : soil, gloss: 0.03 };
+    return {
+      height: isPerlite ? 3 : 0,
+      nx: 0,
+      ny: 0,
+      colour: isPerlite ? [0.82, 0.8, 0.76] : tint,
+      gloss: 0.03,
+    };
   });
   const names: string[] = [""];
   for (let row = 0; row < rows; row++) {
@@ -254,27 +264,35 @@ function seedling(canvas: Canvas, place: Place, owner: number, random: Random): 
 /** The visible mask of each object, traced: its outline, box and how much of it is seen. */
 function truthOf(canvas: Canvas, names: readonly string[]): SceneInstance[] {
   const { width, heightPx, owner } = canvas;
-  const pixels = new Map<number, number>();
-  for (const own of owner) if (own > 0) pixels.set(own, (pixels.get(own) ?? 0) + 1);
-  const instances: SceneInstance[] = [];
-  names.forEach((className, number) => {
-    const seen = pixels.get(number) ?? 0;
-    const full = Math.max(seen, canvas.full[number] ?? seen);
-    if (number === 0 || seen < VISIBLE_MIN_PX2 || seen / full < VISIBLE_MIN_SHARE) return;
-    const mask = maskFromBytes(
-      Uint8Array.from(owner, (own) => (own === number ? 1 : 0)),
-      width,
-      heightPx,
+  type Extent = { seen: number; left: number; top: number; right: number; bottom: number };
+  const extents = new Map<number, Extent>();
+  for (let y = 0; y < heightPx; y++) {
+    for (let x = 0; x < width; x++) {
+      const own = owner[y * width + x]!;
+      if (own <= 0) continue;
+      const extent = extents.get(own) ?? { seen: 0, left: x, top: y, right: x, bottom: y };
+      extent.seen += 1;
+      extent.left = Math.min(extent.left, x);
+      extent.right = Math.max(extent.right, x);
+      extent.bottom = y;
+      extents.set(own, extent);
+    }
+  }
+  return names.flatMap((className, number): SceneInstance[] => {
+    const extent = extents.get(number);
+    if (number === 0 || !extent) return [];
+    const { seen, left, top, right, bottom } = extent;
+    const visibleFraction = seen / Math.max(seen, canvas.full[number] ?? seen);
+    if (seen < VISIBLE_MIN_PX2 || visibleFraction < VISIBLE_MIN_SHARE) return [];
+    const [w, h] = [right - left + 1, bottom - top + 1];
+    const bytes = new Uint8Array(w * h);
+    for (let y = 0; y < h; y++) {
+      for (let x = 0; x < w; x++) if (owner[(top + y) * width + left + x] === number) bytes[y * w + x] = 1;
+    }
+    const traced = traceMask(maskFromBytes(bytes, w, h), 8).filter((ring) => ringsArea([ring]) >= 12);
+    const rings = simplifyRings(traced, IOU_LOSS_MAX).map((ring) =>
+      ring.map(([x, y]): Point => [x + left, y + top]),
     );
-    const traced = traceMask(mask, 8).filter((ring) => ringsArea([ring]) >= 12);
-    const visibleFraction = seen / full;
-    instances.push({
-      className,
-      box: maskBounds(mask),
-      rings: simplifyRings(traced, IOU_LOSS_MAX),
-      visibleFraction,
-      occluded: visibleFraction < 0.9,
-    });
+    return [{ className, box: [left, top, w, h], rings, visibleFraction, occluded: visibleFraction < 0.9 }];
   });
-  return instances;
 }
