@@ -3,7 +3,7 @@
 import dynamic from "next/dynamic";
 import { useEffect, useState } from "react";
 import type { DeskTask } from "@/lib/contracts/desk";
-import { findKeptDraft } from "./draftKeeper";
+import { findKeptDraft, isSequel } from "./draftKeeper";
 import type { DeskMode, DeskServices } from "./services";
 
 const DeskSheet = dynamic(() => import("./DeskSheet").then((module) => module.DeskSheet), { ssr: false });
@@ -15,18 +15,18 @@ export type DeskProps = { task: DeskTask; mode: DeskMode; services: DeskServices
  * made on top of what the server has, else the server's.
  */
 export function Desk({ task, mode, services }: DeskProps) {
-  const [ready, setReady] = useState<DeskTask | null>(null);
+  const [ready, setReady] = useState<{ task: DeskTask; isAhead: boolean } | null>(null);
   useEffect(() => {
     let isHere = true;
     void findKeptDraft(task.claimId).then((kept) => {
       if (!isHere) return;
-      const isNewer = kept !== undefined && (mode === "redraw" || kept.version === task.draftVersion);
-      setReady(isNewer ? { ...task, draft: kept.document } : task);
+      const isNewer = kept !== undefined && (mode === "redraw" || isSequel(kept, task));
+      setReady({ task: isNewer ? { ...task, draft: kept.document } : task, isAhead: isNewer });
     });
     return () => {
       isHere = false;
     };
   }, [task, mode]);
   if (!ready) return <p className="grid h-dvh place-items-center">The desk is being laid out ...</p>;
-  return <DeskSheet key={task.claimId} task={ready} mode={mode} services={services} />;
+  return <DeskSheet key={task.claimId} {...ready} mode={mode} services={services} />;
 }

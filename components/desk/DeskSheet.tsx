@@ -1,9 +1,10 @@
 "use client";
 
-import { CircleHelp, Redo2, Undo2, ZoomIn, ZoomOut, Scan, ScrollText, SunMedium } from "lucide-react";
-import { useCallback, useEffect, useMemo, useRef, useState, useSyncExternalStore } from "react";
+import { CircleHelp, Redo2, Undo2, ZoomIn, ZoomOut, Scan, ScrollText } from "lucide-react";
+import { memo, useCallback, useEffect, useMemo, useRef, useState } from "react";
 import { toast } from "sonner";
 import { Button } from "@/components/ui/Button";
+import { cn } from "@/components/ui/cn";
 import { ConfirmDialog } from "@/components/ui/ConfirmDialog";
 import { Dialog } from "@/components/ui/Dialog";
 import { Markdown } from "@/components/ui/Markdown";
@@ -18,40 +19,63 @@ import { KeyLegend } from "./KeyLegend";
 import { useOutline } from "./useOutline";
 import { SelectedPanel } from "./SelectedPanel";
 import type { DeskMode, DeskServices } from "./services";
+import { Minimap } from "./Minimap";
 import { Stage } from "./Stage";
+import { StageCaption } from "./StageCaption";
 import { Tray } from "./Tray";
 import { useActivity } from "./useActivity";
 import type { SaveState } from "./draftKeeper";
+import { useScene, useSketch } from "./useDeskScene";
 import { useDraft } from "./useDraft";
 import { useKeys } from "./useKeys";
 import { useLease } from "./useLease";
+import { usePreferences } from "./usePreferences";
+import { PLAIN_LOOK, ViewPanel } from "./ViewPanel";
 
-type Props = { task: DeskTask; mode: DeskMode; services: DeskServices };
+type Props = {
+  task: DeskTask;
+  /** Whether the task's drawing is ahead of the server's and still has to be saved there. */
+  isAhead: boolean;
+  mode: DeskMode;
+  services: DeskServices;
+};
 
 const newId = () => `s${crypto.randomUUID().replaceAll("-", "").slice(0, 20)}`;
 
 /** The laid-out desk: the sheet in the middle, the key at its side, the tray at its foot. */
-export function DeskSheet({ task, mode, services }: Props) {
+export function DeskSheet({ task, isAhead, mode, services }: Props) {
   const draft = useDraft(task.claimId, task.draftVersion, services);
   const [controller] = useState(
     () => new DeskController({ task, newId, onChange: (document) => draft.keeper.put(document) }),
   );
-  const scene = useSyncExternalStore(controller.subscribe, controller.getScene, controller.getScene);
+  const scene = useScene(controller);
+  const preferences = usePreferences();
   const activity = useActivity();
-  const lease = useLease(task.expiresAtMs, services, mode);
+  const lease = useLease(task.expiresAtMs, services, { mode, idleMs: activity.idleMs });
   const screenCursor = useRef<ScreenPoint | null>(null);
-  const [look, setLook] = useState({ brightness: 1, contrast: 1 });
+  const [look, setLook] = useState(PLAIN_LOOK);
   const [helpOpen, setHelpOpen] = useState(false);
   const [briefOpen, setBriefOpen] = useState(false);
   const [handInOpen, setHandInOpen] = useState(false);
   const outline = useOutline(task, controller);
+  useEffect(() => controller.setOutliner(outline), [controller, outline]);
+  useEffect(() => {
+    if (isAhead && task.draft) draft.keeper.put(task.draft);
+  }, [isAhead, task.draft, draft.keeper]);
   const isPanning = useKeys(controller, {
+    keys: preferences.keys,
     cursor: screenCursor,
     onHelp: () => setHelpOpen(true),
     onBrief: () => setBriefOpen(true),
     onHandIn: () => setHandInOpen(true),
-    onOutline: () => outline.run(),
+    onOutline: outline.run,
+    onCancel: () => (outline.isRunning ? outline.stop() : controller.cancel()),
   });
+  const onScreenCursor = useCallback((at: ScreenPoint | null) => {
+    screenCursor.current = at;
+  }, []);
+  const selected = controller.find(scene.selectedId);
+  const selectedKind = task.classes.find((kind) => kind.id === selected?.classId);
   const summary = useMemo(() => summarise(task, scene.document), [task, scene.document]);
   useTwoTabs(task.claimId);
 
@@ -123,6 +147,19 @@ export function DeskSheet({ task, mode, services }: Props) {
           drawing.
         </Notice>
       ) : null}
+      {draft.state === "signed-out" ? (
+        <Notice
+          kind="danger"
+          live
+          action={
+            <Button size="small" onClick={() => window.open("/sign-in", "_blank", "noopener")}>
+              Sign in
+            </Button>
+          }
+        >
+          You are signed out. Sign in in a new tab and go on here: nothing is lost, and it is saved by itself.
+        </Notice>
+      ) : null}
       {draft.state === "lost" || lease.state === "lost" ? (
         <Notice kind="danger" live>
           Your claim ended and somebody else has the place. Your drawing is kept in this browser.
@@ -147,18 +184,23 @@ export function DeskSheet({ task, mode, services }: Props) {
         </Notice>
       ) : null}
 
-      <div className="grid min-h-0 grow grid-rows-[1fr_auto] md:grid-cols-[1fr_15rem] md:grid-rows-1">
+      <div
+        className={cn(
+          "grid min-h-0 grow grid-rows-[1fr_auto] md:grid-rows-1",
+          preferences.side === "left" ? "md:grid-cols-[16rem_1fr]" : "md:grid-cols-[1fr_16rem]",
+        )}
+      >
         <main className="relative min-h-0 p-2 sm:p-3" id="content">
           <div className="border-ink relative size-full border">
             <Stage
               controller={controller}
-              scene={scene}
               task={task}
               look={look}
               isPanning={isPanning}
-              onScreenCursor={(at) => (screenCursor.current = at)}
+              onScreenCursor={onScreenCursor}
             />
-            <SheetCorner scale={scene.viewport.scale} cursor={scene.cursor} />
+            <SheetCorner controller={controller} />
+            <Minimap controller={controller} task={task} />
             <div className="absolute end-2 bottom-2 flex flex-col gap-1">
               <CornerButton
                 label="Zoom in"
@@ -193,50 +235,46 @@ export function DeskSheet({ task, mode, services }: Props) {
                 icon={<CircleHelp aria-hidden className="size-4" />}
               />
             </div>
-            {scene.document.instances.length === 0 && scene.tool.mode === "idle" ? (
-              <p className="bg-paper/92 text-ink pointer-events-none absolute inset-x-0 top-3 mx-auto w-fit max-w-[92%] px-3 py-1.5 text-center text-sm">
-                Drag a box, or click around an object to outline it
-                {scene.dealt.length > 0 ? "; or take what the tray deals" : ""}.
-              </p>
-            ) : null}
+            <StageCaption controller={controller} scene={scene} keys={preferences.keys} />
           </div>
         </main>
         <aside
-          className="border-line max-h-[34dvh] min-h-0 overflow-y-auto border-t px-3 py-2 md:max-h-none md:border-s md:border-t-0 md:py-3"
+          className={cn(
+            "border-line max-h-[34dvh] min-h-0 overflow-y-auto border-t px-3 py-2 md:max-h-none md:border-t-0 md:py-3",
+            preferences.side === "left" ? "md:order-first md:border-e" : "md:border-s",
+          )}
           aria-label="Key and selection"
         >
-          <KeyLegend controller={controller} scene={scene} classes={task.classes} />
+          <KeyLegend
+            controller={controller}
+            document={scene.document}
+            classes={task.classes}
+            currentClassId={scene.currentClassId}
+            hiddenClassIds={scene.hiddenClassIds}
+          />
           <SelectedPanel
             controller={controller}
-            scene={scene}
-            classes={task.classes}
-            onOutline={() => outline.run()}
-            outlining={outline.isRunning}
+            instance={selected}
+            kind={selectedKind}
+            intent={scene.intent?.kind ?? null}
+            keys={preferences.keys}
+            outline={outline}
           />
-          <details className="mt-4 text-sm">
-            <summary className="flex cursor-pointer items-center gap-2 py-1 font-semibold">
-              <SunMedium aria-hidden className="size-4" /> View
-            </summary>
-            <LookSlider
-              label="Brightness"
-              value={look.brightness}
-              onChange={(brightness) => setLook({ ...look, brightness })}
-            />
-            <LookSlider
-              label="Contrast"
-              value={look.contrast}
-              onChange={(contrast) => setLook({ ...look, contrast })}
-            />
-            <p className="text-muted mt-1">Changes what you see, never the data.</p>
-          </details>
+          <ViewPanel look={look} onChange={setLook} />
         </aside>
       </div>
-      <Tray controller={controller} scene={scene} task={task} />
+      <Tray
+        controller={controller}
+        dealt={scene.dealt}
+        dealtIndex={scene.dealtIndex}
+        task={task}
+        keys={preferences.keys}
+      />
       <p aria-live="polite" className="sr-only">
         {scene.message}
       </p>
 
-      <HelpSheet open={helpOpen} onOpenChange={setHelpOpen} />
+      <HelpSheet open={helpOpen} onOpenChange={setHelpOpen} preferences={preferences} />
       <Dialog
         title={`Brief, version ${task.brief.version}`}
         open={briefOpen}
@@ -317,6 +355,7 @@ function TaskFigures({
 const SAVE_WORD: Record<SaveState, { state: "agreed" | "waits" | "disputed"; word: string }> = {
   saved: { state: "agreed", word: "saved" },
   saving: { state: "waits", word: "saving" },
+  "signed-out": { state: "disputed", word: "signed out, kept here" },
   offline: { state: "waits", word: "kept here, network away" },
   conflict: { state: "disputed", word: "changed elsewhere" },
   lost: { state: "disputed", word: "claim ended" },
@@ -330,16 +369,18 @@ function SaveMark({ state }: { state: SaveState }) {
   );
 }
 
-function SheetCorner({ scale, cursor }: { scale: number; cursor: readonly [number, number] | null }) {
+const SheetCorner = memo(function SheetCorner({ controller }: { controller: DeskController }) {
+  const { viewport, cursor } = useSketch(controller);
   return (
     <p
       aria-hidden
       className="bg-paper/92 font-figures pointer-events-none absolute start-2 bottom-2 px-1.5 py-0.5 text-xs"
     >
-      {Math.round(scale * 100)} %{cursor ? ` · ${Math.round(cursor[0])}, ${Math.round(cursor[1])}` : ""}
+      {Math.round(viewport.scale * 100)} %
+      {cursor ? ` · ${Math.round(cursor[0])}, ${Math.round(cursor[1])}` : ""}
     </p>
   );
-}
+});
 
 function CornerButton({
   label,
@@ -363,33 +404,6 @@ function CornerButton({
     >
       {icon}
     </button>
-  );
-}
-
-function LookSlider({
-  label,
-  value,
-  onChange,
-}: {
-  label: string;
-  value: number;
-  onChange: (value: number) => void;
-}) {
-  return (
-    <label className="mt-2 grid gap-1">
-      <span>
-        {label} <span className="font-figures">{Math.round(value * 100)} %</span>
-      </span>
-      <input
-        type="range"
-        min={40}
-        max={250}
-        value={Math.round(value * 100)}
-        onChange={(event) => onChange(Number(event.currentTarget.value) / 100)}
-        onDoubleClick={() => onChange(1)}
-        className="accent-agreed"
-      />
-    </label>
   );
 }
 

@@ -1,15 +1,23 @@
 "use client";
 
 import { Eye, EyeOff } from "lucide-react";
+import { memo } from "react";
 import { ClassSwatch } from "@/components/ui/ClassSwatch";
 import { cn } from "@/components/ui/cn";
-import type { DeskClass } from "@/lib/contracts/desk";
-import type { DeskController, Scene } from "@/lib/desk/controller";
+import type { DeskClass, DeskDocument } from "@/lib/contracts/desk";
+import type { DeskController } from "@/lib/desk/controller";
 
-type Props = { controller: DeskController; scene: Scene; classes: readonly DeskClass[] };
+type Props = {
+  controller: DeskController;
+  document: DeskDocument;
+  classes: readonly DeskClass[];
+  currentClassId: string;
+  hiddenClassIds: ReadonlySet<string>;
+};
 
 /** The key, as on a map: what each number, colour and pattern stands for, and how many are drawn. */
-export function KeyLegend({ controller, scene, classes }: Props) {
+export const KeyLegend = memo(function KeyLegend(props: Props) {
+  const { controller, document, classes, currentClassId, hiddenClassIds } = props;
   return (
     <section aria-labelledby="desk-key">
       <h2 id="desk-key" className="font-heading mb-1 text-base font-semibold">
@@ -17,9 +25,9 @@ export function KeyLegend({ controller, scene, classes }: Props) {
       </h2>
       <ul className="flex flex-wrap gap-x-2 md:grid">
         {classes.map((kind) => {
-          const count = scene.document.instances.filter((instance) => instance.classId === kind.id).length;
-          const isHidden = scene.hiddenClassIds.has(kind.id);
-          const isCurrent = scene.currentClassId === kind.id;
+          const count = document.instances.filter((instance) => instance.classId === kind.id).length;
+          const isHidden = hiddenClassIds.has(kind.id);
+          const isCurrent = currentClassId === kind.id;
           return (
             <li
               key={kind.id}
@@ -59,4 +67,4 @@ export function KeyLegend({ controller, scene, classes }: Props) {
       </ul>
     </section>
   );
-}
+});

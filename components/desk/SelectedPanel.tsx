@@ -1,27 +1,39 @@
 "use client";
 
+import { memo } from "react";
 import { Button } from "@/components/ui/Button";
 import { Checkbox } from "@/components/ui/Checkbox";
+import { KeyCap } from "@/components/ui/KeyCap";
 import { TextInput } from "@/components/ui/TextInput";
-import type { DeskClass } from "@/lib/contracts/desk";
-import type { DeskController, Scene } from "@/lib/desk/controller";
+import type { DeskClass, DeskInstance } from "@/lib/contracts/desk";
+import type { DeskController, IntentKind } from "@/lib/desk/controller";
+import type { KeyTable } from "@/lib/desk/keys";
 import { bounds } from "@/lib/desk/shapes";
 
 type Props = {
   controller: DeskController;
-  scene: Scene;
-  classes: readonly DeskClass[];
-  onOutline: () => void;
-  outlining: boolean;
+  instance: DeskInstance | undefined;
+  kind: DeskClass | undefined;
+  intent: IntentKind | null;
+  keys: KeyTable;
+  outline: { run: () => void; stop: () => void; isRunning: boolean };
 };
 
 const ORIGIN = { drawn: "drawn by you", taken: "taken as dealt", adjusted: "taken and adjusted" } as const;
 
+const INTENTS = [
+  { kind: "extend", key: "extend", label: "Add to it" },
+  { kind: "hole", key: "hole", label: "Cut out" },
+  { kind: "split", key: "split", label: "Part in two" },
+  { kind: "join", key: "join", label: "Join" },
+  { kind: "inside", key: "strokeInside", label: "Belongs" },
+  { kind: "outside", key: "strokeOutside", label: "Does not" },
+] as const;
+
 /** What is selected: its measures, flags, note, and what can be done with it. */
-export function SelectedPanel({ controller, scene, classes, onOutline, outlining }: Props) {
-  const instance = scene.document.instances.find((entry) => entry.id === scene.selectedId);
+export const SelectedPanel = memo(function SelectedPanel(props: Props) {
+  const { controller, instance, kind, intent, keys, outline } = props;
   if (!instance) return null;
-  const kind = classes.find((entry) => entry.id === instance.classId);
   const [, , width, height] = bounds(instance.shape);
   const vertices =
     instance.shape.kind === "polygon" ? instance.shape.rings.reduce((sum, ring) => sum + ring.length, 0) : 0;
@@ -37,9 +49,33 @@ export function SelectedPanel({ controller, scene, classes, onOutline, outlining
         {vertices > 0 ? `, ${vertices} points` : ", a box"}, {ORIGIN[instance.origin]}
       </p>
       {kind?.geometry === "polygon" ? (
-        <Button size="small" pending={outlining} onClick={onOutline}>
-          {instance.shape.kind === "box" ? "Outline what is in the box" : "Outline anew"}
-        </Button>
+        <>
+          {outline.isRunning ? (
+            <Button size="small" onClick={outline.stop}>
+              Outlining ... stop
+            </Button>
+          ) : (
+            <Button size="small" onClick={outline.run}>
+              {instance.shape.kind === "box" ? "Outline what is in the box" : "Outline anew"}
+              <KeyCap>{keys.outline.toUpperCase()}</KeyCap>
+            </Button>
+          )}
+          <div className="grid grid-cols-2 gap-1.5">
+            {INTENTS.map((entry) => (
+              <Button
+                key={entry.kind}
+                size="small"
+                aria-pressed={intent === entry.kind}
+                onClick={() => controller.intend(entry.kind)}
+              >
+                {entry.label} <KeyCap>{keys[entry.key].toUpperCase()}</KeyCap>
+              </Button>
+            ))}
+          </div>
+          <Button size="small" onClick={() => controller.shareBorder()}>
+            Share border <KeyCap>{keys.shareBorder.toUpperCase()}</KeyCap>
+          </Button>
+        </>
       ) : null}
       <Checkbox
         label="Partly hidden"
@@ -57,19 +93,16 @@ export function SelectedPanel({ controller, scene, classes, onOutline, outlining
         onChange={(event) => controller.setFlags({ crowd: event.currentTarget.checked })}
       />
       <TextInput
-        key={instance.id}
+        key={`${instance.id}/${instance.note}`}
         label="Note to the requester"
         optional
         defaultValue={instance.note}
         maxLength={500}
-        onBlur={(event) =>
-          event.currentTarget.value !== instance.note &&
-          controller.setFlags({ note: event.currentTarget.value })
-        }
+        onBlur={(event) => controller.setNote(instance.id, event.currentTarget.value)}
       />
-      <Button size="small" onClick={() => controller.deleteAt(null)}>
+      <Button size="small" onClick={() => controller.remove(instance.id)}>
         Remove
       </Button>
     </section>
   );
-}
+});

@@ -3,15 +3,16 @@
 import { StaticCanvas } from "fabric";
 import { useEffect, useMemo, useRef, useState, type PointerEvent as ReactPointerEvent } from "react";
 import type { DeskTask } from "@/lib/contracts/desk";
-import type { DeskController, PointerKind, Scene } from "@/lib/desk/controller";
-import { toScreen, type ScreenPoint } from "@/lib/desk/viewport";
+import type { DeskController, PointerKind } from "@/lib/desk/controller";
+import type { ScreenPoint } from "@/lib/desk/viewport";
+import { Crosshair } from "./Crosshair";
 import { ShapePainter } from "./paint";
+import type { Look } from "./ViewPanel";
 
 type Props = {
   controller: DeskController;
-  scene: Scene;
   task: DeskTask;
-  look: { brightness: number; contrast: number };
+  look: Look;
   isPanning: boolean;
   onScreenCursor: (at: ScreenPoint | null) => void;
 };
@@ -20,51 +21,81 @@ type Props = {
 const PIXELS_FROM = 4;
 /** From this zoom on a grid lies between the pixels. */
 const GRID_FROM = 10;
-const MAGNIFIER_PX = 132;
-const MAGNIFIER_ZOOM = 4;
+/** Where a pen was seen so lately, a touch is the palm of the hand that holds it. */
+const PALM_MS = 1200;
 
-/** The sheet in the middle: the picture below, the shapes of the fabric stage above, one pointer for both. */
-export function Stage({ controller, scene, task, look, isPanning, onScreenCursor }: Props) {
+/**
+ * The sheet in the middle: the picture below, the shapes of the fabric stage above, one pointer for both. It
+ * paints outside React: a move of the hand costs a canvas frame and no render.
+ */
+export function Stage({ controller, task, look, isPanning, onScreenCursor }: Props) {
   const frame = useRef<HTMLDivElement>(null);
-  const canvasElement = useRef<HTMLCanvasElement>(null);
-  const fabric = useRef<{ canvas: StaticCanvas; painter: ShapePainter } | null>(null);
+  const image = useRef<HTMLImageElement>(null);
+  const grid = useRef<HTMLDivElement>(null);
+  const settledElement = useRef<HTMLCanvasElement>(null);
+  const draftElement = useRef<HTMLCanvasElement>(null);
   const pointers = useRef(new Map<number, ScreenPoint>());
   const panning = useRef<ScreenPoint | null>(null);
   const pinch = useRef<{ distance: number; middle: ScreenPoint } | null>(null);
+  const penSeenAtMs = useRef(-Infinity);
   const [imageState, setImageState] = useState<"loading" | "ready" | "failed">("loading");
   const classes = useMemo(() => new Map(task.classes.map((kind) => [kind.id, kind])), [task.classes]);
-  const { viewport } = scene;
 
   useEffect(() => {
-    const element = canvasElement.current;
     const holder = frame.current;
-    if (!element || !holder) return;
-    const canvas = new StaticCanvas(element, { renderOnAddRemove: false, enableRetinaScaling: true });
-    fabric.current = { canvas, painter: new ShapePainter(canvas, classes) };
+    if (!holder || !settledElement.current || !draftElement.current) return;
+    const options = { renderOnAddRemove: false, enableRetinaScaling: true };
+    const settled = new StaticCanvas(settledElement.current, options);
+    const draft = new StaticCanvas(draftElement.current, options);
+    const painter = new ShapePainter({ settled, draft }, classes);
+    let frameId = 0;
+    const paint = () => {
+      frameId = 0;
+      const sketch = controller.getSketch();
+      const { viewport, tool } = sketch;
+      if (image.current) {
+        image.current.style.transform = `translate(${viewport.x}px, ${viewport.y}px) scale(${viewport.scale})`;
+        image.current.style.imageRendering = viewport.scale >= PIXELS_FROM ? "pixelated" : "auto";
+      }
+      if (grid.current) {
+        grid.current.hidden = viewport.scale < GRID_FROM;
+        grid.current.style.backgroundSize = `${viewport.scale}px ${viewport.scale}px`;
+        grid.current.style.backgroundPosition = `${viewport.x}px ${viewport.y}px`;
+      }
+      painter.paint(controller.getScene(), sketch);
+      // Readable by tests and by a debug overlay.
+      Object.assign(holder.dataset, { tool: tool.mode, scale: viewport.scale, x: viewport.x, y: viewport.y });
+    };
+    const schedule = () => (frameId ||= requestAnimationFrame(paint));
+    const unsubscribe = [controller.subscribe(schedule), controller.subscribeSketch(schedule)];
     const observer = new ResizeObserver(() => {
       const { width, height } = holder.getBoundingClientRect();
-      canvas.setDimensions({ width, height });
+      settled.setDimensions({ width, height });
+      draft.setDimensions({ width, height });
       controller.resize(width, height);
+      painter.repaint(controller.getScene(), controller.getSketch());
+      schedule();
     });
     observer.observe(holder);
     const wheel = (event: WheelEvent) => {
       event.preventDefault();
       const rect = holder.getBoundingClientRect();
       const step = event.deltaMode === 1 ? event.deltaY * 30 : event.deltaY;
-      controller.zoom([event.clientX - rect.left, event.clientY - rect.top], Math.exp(-step * 0.0016));
+      // A pinch on a track pad arrives as a wheel with Ctrl, in finer steps.
+      const rate = event.ctrlKey ? 0.01 : 0.0016;
+      controller.zoom([event.clientX - rect.left, event.clientY - rect.top], Math.exp(-step * rate));
     };
     holder.addEventListener("wheel", wheel, { passive: false });
     return () => {
+      cancelAnimationFrame(frameId);
+      for (const stop of unsubscribe) stop();
       observer.disconnect();
       holder.removeEventListener("wheel", wheel);
-      fabric.current = null;
-      void canvas.dispose();
+      painter.dispose();
+      void settled.dispose();
+      void draft.dispose();
     };
   }, [controller, classes]);
-
-  useEffect(() => {
-    fabric.current?.painter.paint(scene);
-  }, [scene]);
 
   const at = (event: ReactPointerEvent): ScreenPoint => {
     const rect = event.currentTarget.getBoundingClientRect();
@@ -72,15 +103,20 @@ export function Stage({ controller, scene, task, look, isPanning, onScreenCursor
   };
   const kindOf = (event: ReactPointerEvent): PointerKind =>
     event.pointerType === "touch" ? "touch" : event.pointerType === "pen" ? "pen" : "mouse";
+  const isPalm = (event: ReactPointerEvent) => {
+    if (event.pointerType === "pen") penSeenAtMs.current = event.timeStamp;
+    return event.pointerType === "touch" && event.timeStamp - penSeenAtMs.current < PALM_MS;
+  };
 
   function onPointerDown(event: ReactPointerEvent<HTMLDivElement>): void {
+    if (isPalm(event)) return;
     event.currentTarget.focus({ preventScroll: true });
     event.currentTarget.setPointerCapture(event.pointerId);
     const point = at(event);
     pointers.current.set(event.pointerId, point);
     if (pointers.current.size === 2) {
-      // A second finger: what the first began is dropped, and both move the sheet.
-      controller.dispatch({ type: "cancel" });
+      // A second finger: the press of the first is dropped, and both move the sheet.
+      controller.interrupt();
       pinch.current = pinchOf([...pointers.current.values()]);
       return;
     }
@@ -89,14 +125,16 @@ export function Stage({ controller, scene, task, look, isPanning, onScreenCursor
       panning.current = point;
       return;
     }
-    if (event.button === 0) controller.pointerDown(point, kindOf(event));
+    if (event.button === 0) controller.pointerDown(point, kindOf(event), event.shiftKey);
   }
 
   function onPointerMove(event: ReactPointerEvent<HTMLDivElement>): void {
+    if (isPalm(event)) return;
     const point = at(event);
     onScreenCursor(point);
     if (pointers.current.has(event.pointerId)) pointers.current.set(event.pointerId, point);
-    if (pinch.current && pointers.current.size >= 2) {
+    if (pinch.current) {
+      if (pointers.current.size < 2) return;
       const next = pinchOf([...pointers.current.values()]);
       controller.pan(next.middle[0] - pinch.current.middle[0], next.middle[1] - pinch.current.middle[1]);
       controller.zoom(next.middle, next.distance / Math.max(1, pinch.current.distance));
@@ -112,9 +150,10 @@ export function Stage({ controller, scene, task, look, isPanning, onScreenCursor
   }
 
   function onPointerUp(event: ReactPointerEvent<HTMLDivElement>): void {
-    pointers.current.delete(event.pointerId);
+    if (!pointers.current.delete(event.pointerId)) return;
     if (pinch.current) {
-      if (pointers.current.size < 2) pinch.current = null;
+      // The finger that stays must not draw a line where the other was.
+      if (pointers.current.size === 0) pinch.current = null;
       return;
     }
     if (panning.current) {
@@ -124,12 +163,13 @@ export function Stage({ controller, scene, task, look, isPanning, onScreenCursor
     if (event.button === 0) controller.pointerUp(at(event), kindOf(event));
   }
 
-  const placing =
-    scene.tool.mode === "plotting" ||
-    scene.tool.mode === "plotting-press" ||
-    scene.tool.mode === "boxing" ||
-    scene.tool.mode === "shaping";
-  const cursorOnScreen = scene.cursor ? toScreen(viewport, scene.cursor) : null;
+  function onPointerCancel(event: ReactPointerEvent<HTMLDivElement>): void {
+    if (!pointers.current.delete(event.pointerId)) return;
+    if (pointers.current.size === 0) pinch.current = null;
+    panning.current = null;
+    controller.interrupt();
+  }
+
   return (
     <div
       ref={frame}
@@ -138,20 +178,12 @@ export function Stage({ controller, scene, task, look, isPanning, onScreenCursor
       aria-roledescription="drawing surface"
       tabIndex={0}
       data-desk-stage=""
-      data-tool={scene.tool.mode}
-      data-scale={viewport.scale}
-      data-x={viewport.x}
-      data-y={viewport.y}
       className="bg-stage focus-visible:outline-focus relative size-full touch-none overflow-hidden outline-none select-none focus-visible:outline-3 focus-visible:-outline-offset-3"
       style={{ cursor: isPanning ? "grab" : "crosshair" }}
       onPointerDown={onPointerDown}
       onPointerMove={onPointerMove}
       onPointerUp={onPointerUp}
-      onPointerCancel={(event) => {
-        pointers.current.delete(event.pointerId);
-        pinch.current = panning.current = null;
-        controller.dispatch({ type: "cancel" });
-      }}
+      onPointerCancel={onPointerCancel}
       onPointerLeave={() => {
         onScreenCursor(null);
         controller.pointerLeave();
@@ -163,51 +195,37 @@ export function Stage({ controller, scene, task, look, isPanning, onScreenCursor
       onContextMenu={(event) => event.preventDefault()}
     >
       <img
+        ref={(element) => {
+          image.current = element;
+          if (element?.complete && element.naturalWidth > 0 && imageState === "loading")
+            setImageState("ready");
+        }}
         src={task.imageUrl}
         alt=""
         draggable={false}
         onLoad={() => setImageState("ready")}
         onError={() => setImageState("failed")}
-        ref={(element) => {
-          if (element?.complete && element.naturalWidth > 0 && imageState === "loading")
-            setImageState("ready");
-        }}
         className="pointer-events-none absolute top-0 left-0 max-w-none origin-top-left"
+        style={{ width: task.width, height: task.height, filter: filterOf(look) }}
+      />
+      <GammaFilter gamma={look.gamma} />
+      <div
+        ref={grid}
+        hidden
+        aria-hidden
+        className="pointer-events-none absolute inset-0 opacity-30"
         style={{
-          width: task.width,
-          height: task.height,
-          transform: `translate(${viewport.x}px, ${viewport.y}px) scale(${viewport.scale})`,
-          imageRendering: viewport.scale >= PIXELS_FROM ? "pixelated" : "auto",
-          filter:
-            look.brightness === 1 && look.contrast === 1
-              ? "none"
-              : `brightness(${look.brightness}) contrast(${look.contrast})`,
+          backgroundImage:
+            "linear-gradient(to right, #fff 1px, transparent 1px), linear-gradient(to bottom, #fff 1px, transparent 1px)",
         }}
       />
-      {viewport.scale >= GRID_FROM ? (
-        <div
-          aria-hidden
-          className="pointer-events-none absolute inset-0 opacity-30"
-          style={{
-            backgroundImage:
-              "linear-gradient(to right, #fff 1px, transparent 1px), linear-gradient(to bottom, #fff 1px, transparent 1px)",
-            backgroundSize: `${viewport.scale}px ${viewport.scale}px`,
-            backgroundPosition: `${viewport.x}px ${viewport.y}px`,
-          }}
-        />
-      ) : null}
       <div className="pointer-events-none absolute inset-0">
-        <canvas ref={canvasElement} />
+        <canvas ref={settledElement} />
       </div>
-      {cursorOnScreen && !isPanning ? (
-        <div aria-hidden className="pointer-events-none absolute inset-0 mix-blend-difference">
-          <div className="absolute inset-x-0 h-px bg-white/55" style={{ top: cursorOnScreen[1] }} />
-          <div className="absolute inset-y-0 w-px bg-white/55" style={{ left: cursorOnScreen[0] }} />
-        </div>
-      ) : null}
-      {placing && scene.cursor && cursorOnScreen ? (
-        <Magnifier task={task} at={scene.cursor} on={cursorOnScreen} scale={viewport.scale} />
-      ) : null}
+      <div className="pointer-events-none absolute inset-0">
+        <canvas ref={draftElement} />
+      </div>
+      <Crosshair controller={controller} task={task} isPanning={isPanning} />
       {imageState === "loading" ? (
         <p className="text-stage-ink absolute inset-0 grid place-items-center">
           The picture is on its way ...
@@ -227,43 +245,27 @@ function pinchOf(points: readonly ScreenPoint[]): { distance: number; middle: Sc
   return { distance: Math.hypot(a[0] - b[0], a[1] - b[1]), middle: [(a[0] + b[0]) / 2, (a[1] + b[1]) / 2] };
 }
 
-/** What lies under the pointer, larger, on the side where the hand is not. */
-function Magnifier({
-  task,
-  at,
-  on,
-  scale,
-}: {
-  task: DeskTask;
-  at: readonly [number, number];
-  on: ScreenPoint;
-  scale: number;
-}) {
-  const zoom = Math.max(2, Math.min(16, scale * MAGNIFIER_ZOOM));
-  const half = MAGNIFIER_PX / 2;
+function filterOf({ brightness, contrast, gamma }: Look): string {
+  const parts = [
+    gamma === 1 ? "" : "url(#desk-gamma)",
+    brightness === 1 ? "" : `brightness(${brightness})`,
+    contrast === 1 ? "" : `contrast(${contrast})`,
+  ];
+  return parts.filter(Boolean).join(" ") || "none";
+}
+
+/** CSS has no gamma; this filter of the page has. */
+function GammaFilter({ gamma }: { gamma: number }) {
+  const curve = { type: "gamma", exponent: 1 / gamma } as const;
   return (
-    <div
-      aria-hidden
-      className="pointer-events-none absolute overflow-hidden rounded-full border-2 border-white shadow-lg"
-      style={{
-        width: MAGNIFIER_PX,
-        height: MAGNIFIER_PX,
-        left: on[0] > MAGNIFIER_PX + 60 ? on[0] - MAGNIFIER_PX - 36 : on[0] + 36,
-        top: on[1] > MAGNIFIER_PX + 60 ? on[1] - MAGNIFIER_PX - 36 : on[1] + 36,
-      }}
-    >
-      <div
-        className="absolute inset-0"
-        style={{
-          backgroundImage: `url(${task.imageUrl})`,
-          backgroundSize: `${task.width * zoom}px ${task.height * zoom}px`,
-          backgroundPosition: `${half - at[0] * zoom}px ${half - at[1] * zoom}px`,
-          backgroundRepeat: "no-repeat",
-          imageRendering: "pixelated",
-        }}
-      />
-      <div className="absolute top-1/2 left-0 h-px w-full bg-white mix-blend-difference" />
-      <div className="absolute top-0 left-1/2 h-full w-px bg-white mix-blend-difference" />
-    </div>
+    <svg aria-hidden className="absolute size-0">
+      <filter id="desk-gamma" colorInterpolationFilters="sRGB">
+        <feComponentTransfer>
+          <feFuncR {...curve} />
+          <feFuncG {...curve} />
+          <feFuncB {...curve} />
+        </feComponentTransfer>
+      </filter>
+    </svg>
   );
 }

@@ -1,29 +1,36 @@
 "use client";
 
-import { useEffect, useRef } from "react";
+import { memo, useEffect, useRef } from "react";
 import { Button } from "@/components/ui/Button";
 import { cn } from "@/components/ui/cn";
 import { KeyCap } from "@/components/ui/KeyCap";
 import type { DeskProposal, DeskTask } from "@/lib/contracts/desk";
-import type { DeskController, Scene } from "@/lib/desk/controller";
+import type { DeskController } from "@/lib/desk/controller";
+import type { KeyTable } from "@/lib/desk/keys";
 import { bounds } from "@/lib/desk/shapes";
 
-type Props = { controller: DeskController; scene: Scene; task: DeskTask };
+type Props = {
+  controller: DeskController;
+  dealt: readonly DeskProposal[];
+  dealtIndex: number;
+  task: DeskTask;
+  keys: KeyTable;
+};
 
 const CARD_PX = 64;
 
 /** The strip of dealt proposals at the foot of the sheet: look at one, take it, adjust it, or send it away. */
-export function Tray({ controller, scene, task }: Props) {
+export const Tray = memo(function Tray({ controller, dealt, dealtIndex, task, keys }: Props) {
   const current = useRef<HTMLButtonElement>(null);
   useEffect(() => {
     current.current?.scrollIntoView({ block: "nearest", inline: "nearest" });
-  }, [scene.dealtIndex, scene.dealt]);
+  }, [dealtIndex, dealt]);
   return (
     <section
       aria-label="Tray of proposals"
       className="border-line flex items-center gap-3 border-t px-3 py-1.5"
     >
-      {scene.dealt.length === 0 ? (
+      {dealt.length === 0 ? (
         <p className="text-muted py-2 text-sm">
           {task.proposals.length === 0
             ? "No proposal is worth your time here: draw what you see."
@@ -33,21 +40,19 @@ export function Tray({ controller, scene, task }: Props) {
         <>
           <ol
             className="flex min-w-0 grow gap-1.5 overflow-x-auto py-0.5"
-            aria-label={`${scene.dealt.length} proposals, the most useful first`}
+            aria-label={`${dealt.length} proposals, the most useful first`}
           >
-            {scene.dealt.map((proposal, index) => (
+            {dealt.map((proposal, index) => (
               <li key={proposal.id}>
                 <button
-                  ref={index === scene.dealtIndex ? current : null}
+                  ref={index === dealtIndex ? current : null}
                   type="button"
-                  aria-label={`Proposal ${index + 1} of ${scene.dealt.length}, ${Math.round(proposal.score * 100)} percent likely`}
-                  aria-current={index === scene.dealtIndex}
+                  aria-label={`Proposal ${index + 1} of ${dealt.length}, ${Math.round(proposal.score * 100)} percent likely`}
+                  aria-current={index === dealtIndex}
                   onClick={() => controller.showDealt(index)}
                   className={cn(
                     "bg-stage relative block overflow-hidden border-2",
-                    index === scene.dealtIndex
-                      ? "border-waits"
-                      : "border-transparent opacity-80 hover:opacity-100",
+                    index === dealtIndex ? "border-waits" : "border-transparent opacity-80 hover:opacity-100",
                   )}
                   style={{ width: CARD_PX, height: CARD_PX }}
                 >
@@ -58,23 +63,23 @@ export function Tray({ controller, scene, task }: Props) {
           </ol>
           <div className="flex shrink-0 flex-wrap gap-1.5 max-sm:w-28">
             <Button size="small" onClick={() => controller.take(false)}>
-              Take <KeyCap>J</KeyCap>
+              Take <KeyCap>{keys.take.toUpperCase()}</KeyCap>
             </Button>
             <Button size="small" onClick={() => controller.take(true)}>
-              Adjust <KeyCap>K</KeyCap>
+              Adjust <KeyCap>{keys.takeAndAdjust.toUpperCase()}</KeyCap>
             </Button>
             <Button size="small" onClick={() => controller.sendAway()}>
-              Not one <KeyCap>L</KeyCap>
+              Not one <KeyCap>{keys.sendAway.toUpperCase()}</KeyCap>
             </Button>
           </div>
         </>
       )}
     </section>
   );
-}
+});
 
 /** The part of the picture that a proposal is about, with its outline. */
-function Cutting({ proposal, task }: { proposal: DeskProposal; task: DeskTask }) {
+const Cutting = memo(function Cutting({ proposal, task }: { proposal: DeskProposal; task: DeskTask }) {
   const [x, y, width, height] = bounds(proposal.shape);
   const side = Math.max(width, height) * 1.3;
   const left = x + width / 2 - side / 2;
@@ -95,4 +100,4 @@ function Cutting({ proposal, task }: { proposal: DeskProposal; task: DeskTask })
       <path d={path} fill="none" stroke="#ffffff" strokeWidth="1.8" vectorEffect="non-scaling-stroke" />
     </svg>
   );
-}
+});

@@ -1,21 +1,28 @@
-import { Circle, Group, Path, Pattern, Rect, StaticCanvas, FabricText, type FabricObject } from "fabric";
+import { FabricObject, type StaticCanvas } from "fabric";
 import type { DeskClass, DeskInstance } from "@/lib/contracts/desk";
-import type { Scene } from "@/lib/desk/controller";
-import { corners } from "@/lib/desk/shapes";
+import type { Scene, Sketch } from "@/lib/desk/controller";
+import { bounds, ringsOf } from "@/lib/desk/shapes";
 import { draftOf } from "@/lib/desk/tool";
-import type { Point, Shape } from "@/lib/geometry/types";
+import type { Viewport } from "@/lib/desk/viewport";
+import type { Box, Point, Shape } from "@/lib/geometry/types";
 import { inkOn } from "@/components/ui/classPalette";
 
 const CASING = "rgba(10,16,20,0.85)";
 const PATTERN_CELL_PX = 12;
+/** Smaller than this on screen, a shape goes without its number. */
+const NUMBERED_FROM_PX = 14;
+/** From so many shapes on, the finished layer is moved whole while the hand moves and painted when it rests. */
+const MOVED_WHOLE_FROM = 250;
+const REST_MS = 90;
+const DIMMED = 0.25;
 
 /** How the inside of a class is marked, so that classes differ without colour too. */
-function patternFill(pattern: string, colour: string): Pattern | string {
-  if (pattern === "solid") return `${colour}33`;
+function patternTile(pattern: string, colour: string): HTMLCanvasElement | undefined {
+  if (pattern === "solid") return undefined;
   const tile = document.createElement("canvas");
   tile.width = tile.height = PATTERN_CELL_PX;
   const ink = tile.getContext("2d");
-  if (!ink) return `${colour}33`;
+  if (!ink) return undefined;
   const n = PATTERN_CELL_PX;
   ink.fillStyle = `${colour}22`;
   ink.fillRect(0, 0, n, n);
@@ -39,214 +46,321 @@ function patternFill(pattern: string, colour: string): Pattern | string {
     ink.fillRect(0, 0, n / 2, n / 2);
     ink.fillRect(n / 2, n / 2, n / 2, n / 2);
   }
-  return new Pattern({ source: tile, repeat: "repeat" });
+  return tile;
 }
 
-function pathText(shape: Shape): string {
-  if (shape.kind === "box") {
-    const [x, y, width, height] = shape.box;
-    return `M${x} ${y}h${width}v${height}h${-width}z`;
+function pathOf(shape: Shape): Path2D {
+  const path = new Path2D();
+  for (const ring of ringsOf(shape)) {
+    ring.forEach(([x, y], index) => (index === 0 ? path.moveTo(x, y) : path.lineTo(x, y)));
+    path.closePath();
   }
-  return shape.rings.map((ring) => `M${ring.map(([x, y]) => `${x} ${y}`).join("L")}z`).join("");
+  return path;
 }
 
-const common = {
-  objectCaching: false,
-  selectable: false,
-  evented: false,
-  originX: "left",
-  originY: "top",
-} as const;
+type Look = { colour: string; number: number | null; tile: HTMLCanvasElement | undefined };
 
-/** Paints a scene's shapes on a fabric canvas. Objects are kept while their instance is the same. */
-export class ShapePainter {
-  private objects = new Map<string, { instance: DeskInstance; look: string; parts: FabricObject[] }>();
-  private draft: FabricObject[] = [];
-  private patterns = new Map<string, Pattern | string>();
+const still = { objectCaching: false, selectable: false, evented: false } as const;
+
+/**
+ * A fabric object that draws itself in px of the image, at whatever zoom its canvas has: one path for all
+ * strokes, widths in screen px, nothing to rebuild when the view changes.
+ */
+abstract class Mark extends FabricObject {
+  constructor() {
+    super(still);
+  }
+  /** Draws on a context in image px; `px` is one screen px in image px. */
+  abstract draw(ink: CanvasRenderingContext2D, px: number): void;
+  abstract readonly box: Box;
+
+  override render(ink: CanvasRenderingContext2D): void {
+    const { canvas } = this;
+    if (!canvas) return;
+    const px = 1 / canvas.getZoom();
+    const [x, y, width, height] = this.box;
+    const { tl, br } = canvas.vptCoords;
+    const margin = 24 * px;
+    if (x - margin > br.x || y - margin > br.y || x + width + margin < tl.x || y + height + margin < tl.y)
+      return;
+    ink.save();
+    this.draw(ink, px);
+    ink.restore();
+  }
+}
+
+class ShapeMark extends Mark {
+  readonly box: Box;
+  private readonly path: Path2D;
+  isSelected = false;
+  vertex: number | null = null;
 
   constructor(
-    private readonly canvas: StaticCanvas,
+    readonly instance: DeskInstance,
+    private readonly look: Look,
+  ) {
+    super();
+    this.box = bounds(instance.shape);
+    this.path = pathOf(instance.shape);
+  }
+
+  draw(ink: CanvasRenderingContext2D, px: number): void {
+    const { colour, tile } = this.look;
+    ink.fillStyle = `${colour}33`;
+    if (tile) {
+      const fill = ink.createPattern(tile, "repeat");
+      fill?.setTransform(new DOMMatrix([px, 0, 0, px, 0, 0]));
+      if (fill) ink.fillStyle = fill;
+    }
+    ink.fill(this.path, "evenodd");
+    ink.lineJoin = "round";
+    ink.strokeStyle = CASING;
+    ink.lineWidth = (this.isSelected ? 5 : 3.4) * px;
+    ink.stroke(this.path);
+    ink.strokeStyle = colour;
+    ink.lineWidth = (this.isSelected ? 3 : 1.8) * px;
+    if (this.instance.occluded) ink.setLineDash([8 * px, 5 * px]);
+    ink.stroke(this.path);
+    ink.setLineDash([]);
+    if (this.look.number !== null && Math.max(this.box[2], this.box[3]) >= NUMBERED_FROM_PX * px)
+      this.number(ink, px);
+    if (this.isSelected) this.handles(ink, px);
+  }
+
+  private number(ink: CanvasRenderingContext2D, px: number): void {
+    const { colour, number } = this.look;
+    const [x, y] =
+      this.instance.shape.kind === "box" ? this.box : (this.instance.shape.rings[0]?.[0] ?? this.box);
+    ink.save();
+    ink.translate(x, y);
+    ink.scale(px, px);
+    ink.fillStyle = colour;
+    ink.strokeStyle = CASING;
+    ink.lineWidth = 1;
+    ink.fillRect(0, 0, 16, 16);
+    ink.strokeRect(0, 0, 16, 16);
+    ink.fillStyle = inkOn(colour);
+    ink.font = "700 11px monospace";
+    ink.textAlign = "center";
+    ink.textBaseline = "middle";
+    ink.fillText(String(number), 8, 8.5);
+    ink.restore();
+  }
+
+  private handles(ink: CanvasRenderingContext2D, px: number): void {
+    ink.fillStyle = "#ffffff";
+    ink.strokeStyle = this.look.colour;
+    ink.lineWidth = 2 * px;
+    const dots = new Path2D();
+    const points = ringsOf(this.instance.shape).flat();
+    // Where points lie closer than their dots, the dots shrink so that the border stays in sight.
+    const radius = (points.length > 120 ? 2.5 : 4.5) * px;
+    for (const [x, y] of points) {
+      dots.moveTo(x + radius, y);
+      dots.arc(x, y, radius, 0, 2 * Math.PI);
+    }
+    ink.stroke(dots);
+    ink.fill(dots);
+    const held = this.vertex === null ? undefined : points[this.vertex];
+    if (!held) return;
+    ink.beginPath();
+    ink.arc(held[0], held[1], 8 * px, 0, 2 * Math.PI);
+    ink.strokeStyle = CASING;
+    ink.lineWidth = 4 * px;
+    ink.stroke();
+    ink.strokeStyle = "#ffffff";
+    ink.stroke();
+  }
+}
+
+/** A shape that is dealt but not taken: white, dotted. */
+class DealtMark extends Mark {
+  readonly box: Box;
+  private readonly path: Path2D;
+  constructor(
+    shape: Shape,
+    private readonly colour: string,
+  ) {
+    super();
+    this.box = bounds(shape);
+    this.path = pathOf(shape);
+  }
+  draw(ink: CanvasRenderingContext2D, px: number): void {
+    ink.fillStyle = "rgba(255,255,255,0.14)";
+    ink.fill(this.path, "evenodd");
+    ink.strokeStyle = CASING;
+    ink.lineWidth = 4 * px;
+    ink.stroke(this.path);
+    ink.strokeStyle = this.colour;
+    ink.lineWidth = 2 * px;
+    ink.setLineDash([3 * px, 4 * px]);
+    ink.stroke(this.path);
+  }
+}
+
+/** A line of points that is being drawn, the first one marked, since a click on it closes. */
+class PathMark extends Mark {
+  readonly box: Box;
+  constructor(
+    private readonly points: readonly Point[],
+    private readonly cursor: Point,
+    private readonly colour: string,
+  ) {
+    super();
+    this.box = bounds({ kind: "polygon", rings: [[...points, cursor]] });
+  }
+  draw(ink: CanvasRenderingContext2D, px: number): void {
+    const line = new Path2D();
+    [...this.points, this.cursor].forEach(([x, y], index) =>
+      index === 0 ? line.moveTo(x, y) : line.lineTo(x, y),
+    );
+    ink.lineJoin = "round";
+    ink.strokeStyle = CASING;
+    ink.lineWidth = 3.6 * px;
+    ink.stroke(line);
+    ink.strokeStyle = this.colour;
+    ink.lineWidth = 1.8 * px;
+    ink.stroke(line);
+    this.points.forEach(([x, y], index) => {
+      ink.beginPath();
+      ink.arc(x, y, (index === 0 ? 6 : 4) * px, 0, 2 * Math.PI);
+      ink.fillStyle = index === 0 ? this.colour : "#ffffff";
+      ink.strokeStyle = CASING;
+      ink.lineWidth = 1.5 * px;
+      ink.fill();
+      ink.stroke();
+    });
+  }
+}
+
+type Layers = { settled: StaticCanvas; draft: StaticCanvas };
+
+/**
+ * Paints shapes on two fabric canvases: the finished ones, repainted when one of them or the view changes, and
+ * what is being drawn, repainted for each frame. Marks are kept while their instance is the same.
+ */
+export class ShapePainter {
+  private marks = new Map<string, ShapeMark>();
+  private looks = new Map<string, Look>();
+  private painted: { scene: Scene; viewport: Viewport; shapingId: string | null } | null = null;
+  private resting: ReturnType<typeof setTimeout> | undefined;
+
+  constructor(
+    private readonly layers: Layers,
     private readonly classes: ReadonlyMap<string, DeskClass>,
   ) {}
 
-  paint(scene: Scene): void {
-    const { viewport, document, selectedId, hiddenClassIds } = scene;
-    this.canvas.setViewportTransform([viewport.scale, 0, 0, viewport.scale, viewport.x, viewport.y]);
-    const shaping = scene.tool.mode === "shaping" ? scene.tool.id : null;
+  paint(scene: Scene, sketch: Sketch): void {
+    const shapingId = sketch.tool.mode === "shaping" ? sketch.tool.id : null;
+    const before = this.painted;
+    const isSameScene = before?.scene === scene && before.shapingId === shapingId;
+    const isMoved = before !== null && before.viewport !== sketch.viewport;
+    if (isSameScene && isMoved && this.marks.size >= MOVED_WHOLE_FROM) {
+      this.moveWhole(before.viewport, sketch.viewport);
+      clearTimeout(this.resting);
+      this.resting = setTimeout(() => this.paintSettled(scene, sketch, shapingId), REST_MS);
+    } else if (!isSameScene || isMoved) {
+      this.paintSettled(scene, sketch, shapingId);
+    }
+    this.paintDraft(scene, sketch);
+  }
+
+  /** Paints everything again: the canvases were resized. */
+  repaint(scene: Scene, sketch: Sketch): void {
+    this.painted = null;
+    this.paint(scene, sketch);
+  }
+
+  dispose(): void {
+    clearTimeout(this.resting);
+  }
+
+  private moveWhole(from: Viewport, to: Viewport): void {
+    const k = to.scale / from.scale;
+    const element = this.layers.settled.getElement();
+    element.style.transformOrigin = "0 0";
+    element.style.transform = `translate(${to.x - from.x * k}px, ${to.y - from.y * k}px) scale(${k})`;
+  }
+
+  private paintSettled(scene: Scene, { viewport }: Sketch, shapingId: string | null): void {
+    clearTimeout(this.resting);
+    const { settled } = this.layers;
+    const order: ShapeMark[] = [];
     const kept = new Set<string>();
-    for (const instance of document.instances) {
-      if (hiddenClassIds.has(instance.classId) || instance.id === shaping) continue;
+    for (const instance of scene.document.instances) {
+      if (scene.hiddenClassIds.has(instance.classId) || instance.id === shapingId) continue;
       kept.add(instance.id);
-      const isSelected = instance.id === selectedId;
-      const look = `${isSelected}/${viewport.scale}`;
-      const known = this.objects.get(instance.id);
-      if (known?.instance === instance && known.look === look) continue;
-      if (known) this.canvas.remove(...known.parts);
-      const parts = this.make(instance, isSelected, viewport.scale);
-      this.canvas.add(...parts);
-      this.objects.set(instance.id, { instance, look, parts });
+      let mark = this.marks.get(instance.id);
+      if (mark?.instance !== instance) {
+        mark = new ShapeMark(instance, this.lookOf(instance.classId));
+        this.marks.set(instance.id, mark);
+      }
+      mark.isSelected = instance.id === scene.selectedId;
+      mark.vertex = mark.isSelected ? scene.vertex : null;
+      order.push(mark);
     }
-    for (const [id, { parts }] of this.objects) {
-      if (kept.has(id)) continue;
-      this.canvas.remove(...parts);
-      this.objects.delete(id);
+    for (const id of this.marks.keys()) if (!kept.has(id)) this.marks.delete(id);
+    // The selected shape lies on top, so that its points can be seen.
+    order.sort((a, b) => Number(a.isSelected) - Number(b.isSelected));
+    const now = settled.getObjects();
+    if (now.length !== order.length || order.some((mark, index) => now[index] !== mark)) {
+      settled.remove(...now);
+      settled.add(...order);
     }
-    if (this.draft.length > 0) this.canvas.remove(...this.draft);
-    this.draft = this.makeDraft(scene);
-    if (this.draft.length > 0) this.canvas.add(...this.draft);
-    this.canvas.requestRenderAll();
+    settled.getElement().style.transform = "";
+    settled.getElement().style.opacity = scene.isDimmed ? String(DIMMED) : "";
+    settled.setViewportTransform([viewport.scale, 0, 0, viewport.scale, viewport.x, viewport.y]);
+    settled.renderAll();
+    this.painted = { scene, viewport, shapingId };
   }
 
-  private fillOf(kind: DeskClass | undefined): Pattern | string {
-    const key = kind ? `${kind.pattern}/${kind.colour}` : "none";
-    const known = this.patterns.get(key);
+  private paintDraft(scene: Scene, sketch: Sketch): void {
+    const { draft } = this.layers;
+    const { viewport } = sketch;
+    const before = draft.getObjects();
+    const marks = this.draftMarks(scene, sketch);
+    if (before.length > 0) draft.remove(...before);
+    if (marks.length > 0) draft.add(...marks);
+    if (before.length === 0 && marks.length === 0) return;
+    draft.setViewportTransform([viewport.scale, 0, 0, viewport.scale, viewport.x, viewport.y]);
+    draft.renderAll();
+  }
+
+  private lookOf(classId: string): Look {
+    const known = this.looks.get(classId);
     if (known) return known;
-    const fill = patternFill(kind?.pattern ?? "solid", kind?.colour ?? "#888888");
-    this.patterns.set(key, fill);
-    return fill;
-  }
-
-  private make(instance: DeskInstance, isSelected: boolean, scale: number): FabricObject[] {
-    const kind = this.classes.get(instance.classId);
+    const kind = this.classes.get(classId);
     const colour = kind?.colour ?? "#888888";
-    const px = 1 / scale;
-    const path = pathText(instance.shape);
-    const parts: FabricObject[] = [
-      new Path(path, {
-        ...common,
-        fill: this.fillOf(kind),
-        fillRule: "evenodd",
-        stroke: CASING,
-        strokeWidth: (isSelected ? 5 : 3.4) * px,
-      }),
-      new Path(path, {
-        ...common,
-        fill: "",
-        stroke: colour,
-        strokeWidth: (isSelected ? 3 : 1.8) * px,
-        ...(instance.occluded && { strokeDashArray: [8 * px, 5 * px] }),
-      }),
-    ];
-    const [x, y] =
-      instance.shape.kind === "box" ? instance.shape.box : (instance.shape.rings[0]?.[0] ?? [0, 0]);
-    if (kind) {
-      parts.push(
-        new Group(
-          [
-            new Rect({
-              ...common,
-              left: 0,
-              top: 0,
-              width: 16,
-              height: 16,
-              fill: colour,
-              stroke: CASING,
-              strokeWidth: 1,
-            }),
-            new FabricText(String(kind.number), {
-              ...common,
-              left: 8,
-              top: 8,
-              originX: "center",
-              originY: "center",
-              fontSize: 11,
-              fontWeight: 700,
-              fontFamily: "monospace",
-              fill: inkOn(colour),
-            }),
-          ],
-          { ...common, left: x, top: y, scaleX: px, scaleY: px },
-        ),
-      );
-    }
-    if (isSelected) parts.push(...this.handles(instance.shape, colour, px));
-    return parts;
+    const look = {
+      colour,
+      number: kind?.number ?? null,
+      tile: patternTile(kind?.pattern ?? "solid", colour),
+    };
+    this.looks.set(classId, look);
+    return look;
   }
 
-  private handles(shape: Shape, colour: string, px: number): FabricObject[] {
-    const points: readonly Point[] = shape.kind === "box" ? corners(shape.box) : shape.rings.flat();
-    return points.map(
-      ([x, y]) =>
-        new Circle({
-          ...common,
-          left: x,
-          top: y,
-          originX: "center",
-          originY: "center",
-          radius: 4.5 * px,
-          fill: "#ffffff",
-          stroke: colour,
-          strokeWidth: 2 * px,
-        }),
-    );
-  }
-
-  private makeDraft(scene: Scene): FabricObject[] {
-    const draft = draftOf(scene.tool);
-    const kind = this.classes.get(scene.currentClassId);
-    const colour = kind?.colour ?? "#888888";
-    const px = 1 / scene.viewport.scale;
-    const proposal = scene.dealt[scene.dealtIndex];
-    const parts: FabricObject[] = [];
-    if (proposal && !draft) {
-      const own = this.classes.get(proposal.classId ?? "")?.colour ?? "#ffffff";
-      const path = pathText(proposal.shape);
-      parts.push(
-        new Path(path, {
-          ...common,
-          fill: "rgba(255,255,255,0.14)",
-          fillRule: "evenodd",
-          stroke: CASING,
-          strokeWidth: 4 * px,
-        }),
-        new Path(path, {
-          ...common,
-          fill: "",
-          stroke: own,
-          strokeWidth: 2 * px,
-          strokeDashArray: [3 * px, 4 * px],
-        }),
-      );
+  private draftMarks(scene: Scene, { tool }: Sketch): Mark[] {
+    const draft = draftOf(tool);
+    const target = scene.document.instances.find((instance) => instance.id === scene.intent?.id);
+    const { colour } = this.lookOf(target?.classId ?? scene.currentClassId);
+    if (!draft) {
+      const proposal = scene.dealt[scene.dealtIndex];
+      if (!proposal) return [];
+      const own = proposal.classId === null ? "#ffffff" : this.lookOf(proposal.classId).colour;
+      return [new DealtMark(proposal.shape, own)];
     }
-    if (draft?.kind === "box") {
-      const [left, top, width, height] = draft.box;
-      parts.push(
-        new Rect({
-          ...common,
-          left,
-          top,
-          width,
-          height,
-          fill: `${colour}22`,
-          stroke: colour,
-          strokeWidth: 2 * px,
-        }),
-      );
-    } else if (draft?.kind === "shape") {
-      const instance = scene.document.instances.find((entry) => entry.id === draft.id);
-      if (instance) parts.push(...this.make({ ...instance, shape: draft.shape }, true, scene.viewport.scale));
-    } else if (draft?.kind === "path") {
-      const points = [...draft.points, draft.cursor];
-      const path = `M${points.map(([x, y]) => `${x} ${y}`).join("L")}`;
-      parts.push(
-        new Path(path, { ...common, fill: "", stroke: CASING, strokeWidth: 3.6 * px }),
-        new Path(path, { ...common, fill: "", stroke: colour, strokeWidth: 1.8 * px }),
-        ...draft.points.map(
-          ([x, y], index) =>
-            new Circle({
-              ...common,
-              left: x,
-              top: y,
-              originX: "center",
-              originY: "center",
-              radius: (index === 0 ? 6 : 4) * px,
-              fill: index === 0 ? colour : "#ffffff",
-              stroke: CASING,
-              strokeWidth: 1.5 * px,
-            }),
-        ),
-      );
+    if (draft.kind === "path") return [new PathMark(draft.points, draft.cursor, colour)];
+    if (draft.kind === "box") {
+      const kind = scene.intent?.kind;
+      const isLine = kind === "split" || kind === "inside" || kind === "outside";
+      if (isLine) return [new PathMark([draft.start], draft.end, kind === "outside" ? "#ffffff" : colour)];
+      return [new DealtMark({ kind: "box", box: draft.box }, colour)];
     }
-    return parts;
+    const instance = scene.document.instances.find((entry) => entry.id === draft.id);
+    if (!instance) return [];
+    const mark = new ShapeMark({ ...instance, shape: draft.shape }, this.lookOf(instance.classId));
+    mark.isSelected = true;
+    return [mark];
   }
 }

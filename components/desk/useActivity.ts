@@ -1,6 +1,6 @@
 "use client";
 
-import { useEffect, useRef, useState } from "react";
+import { useCallback, useEffect, useRef, useState } from "react";
 
 /** Without a sign of the hand for this long, time no longer counts. */
 const IDLE_AFTER_MS = 30_000;
@@ -36,7 +36,9 @@ export function useActivity() {
       for (const event of events) window.removeEventListener(event, sign);
     };
   }, []);
+  const idleMs = useCallback(() => Date.now() - lastSign.current, []);
   return {
+    idleMs,
     seconds,
     restDue,
     dismissRest: () => setRestDue(false),

@@ -5,16 +5,23 @@ import { statusOf, type DeskMode, type DeskServices } from "./services";
 
 const BEAT_EVERY_MS = 60_000;
 const SOON_MS = 4 * 60_000;
+/** Without a sign of the hand for this long the claim is no longer extended. */
+const IDLE_MAX_MS = 5 * 60_000;
 
-/** Extends the claim once a minute while the page is in sight, and tells when it is about to end. */
-export function useLease(firstExpiryMs: number, services: DeskServices, mode: DeskMode) {
+/** Extends the claim once a minute while somebody works on the page, and tells when it is about to end. */
+export function useLease(
+  firstExpiryMs: number,
+  services: DeskServices,
+  { mode, idleMs }: { mode: DeskMode; idleMs: () => number },
+) {
   const [expiresAtMs, setExpiresAtMs] = useState(firstExpiryMs);
   const [isLost, setLost] = useState(false);
   const [isSoon, setSoon] = useState(false);
   useEffect(() => {
     if (mode === "redraw") return;
     const beat = async () => {
-      if (document.visibilityState !== "visible") return;
+      // A page that nobody works on must not hold the place of another annotator.
+      if (document.visibilityState !== "visible" || idleMs() > IDLE_MAX_MS) return;
       try {
         setExpiresAtMs((await services.heartbeat()).expiresAtMs);
         setLost(false);
@@ -28,7 +35,7 @@ export function useLease(firstExpiryMs: number, services: DeskServices, mode: De
       clearInterval(timer);
       document.removeEventListener("visibilitychange", beat);
     };
-  }, [services, mode]);
+  }, [services, mode, idleMs]);
   useEffect(() => {
     const timer = setInterval(() => setSoon(expiresAtMs - Date.now() < SOON_MS), 5000);
     return () => clearInterval(timer);

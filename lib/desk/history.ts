@@ -19,6 +19,25 @@ export function perform(history: History, command: Command): History {
   return { document, undoable: [...history.undoable, inverse], redoable: [] };
 }
 
+/**
+ * Does a command as part of the last undo step: a key held down is one gesture. The step then takes back
+ * both. Without a step to join it is one of its own.
+ */
+export function amend(history: History, command: Command): History {
+  const last = history.undoable.at(-1);
+  if (!last) return perform(history, command);
+  const { document, inverse } = apply(history.document, command);
+  if (document === history.document) return history;
+  // The state before the last step is restored by its own inverse alone when both change the same fields.
+  const joined: Command = covers(last, inverse) ? last : { type: "all", commands: [inverse, last] };
+  return { document, undoable: [...history.undoable.slice(0, -1), joined], redoable: [] };
+}
+
+function covers(first: Command, second: Command): boolean {
+  if (first.type !== "change" || second.type !== "change" || first.id !== second.id) return false;
+  return Object.keys(second.to).every((name) => name in first.to);
+}
+
 export function undo(history: History): History {
   const command = history.undoable.at(-1);
   if (!command) return history;

@@ -1,4 +1,8 @@
+import { normaliseRings } from "@/lib/geometry/clip";
+import { ringsArea } from "@/lib/geometry/region";
+import { distanceToSegment } from "@/lib/geometry/snap";
 import type { Box, Point, Ring, Rings, Shape } from "@/lib/geometry/types";
+import { crosses } from "@/lib/geometry/validate";
 
 /** The least side of a box and the least area of an outline that can be meant, px and px². */
 export const SIDE_MIN_PX = 2;
@@ -18,18 +22,13 @@ export function inside([x, y]: Point, { width, height }: Size): Point {
 export function boxBetween(a: Point, b: Point, size: Size): Box | undefined {
   const [ax, ay] = inside(a, size);
   const [bx, by] = inside(b, size);
-  const box: Box = [Math.min(ax, bx), Math.min(ay, by), rounded(Math.abs(ax - bx)), rounded(Math.abs(ay - by))];
+  const box: Box = [
+    Math.min(ax, bx),
+    Math.min(ay, by),
+    rounded(Math.abs(ax - bx)),
+    rounded(Math.abs(ay - by)),
+  ];
   return box[2] < SIDE_MIN_PX || box[3] < SIDE_MIN_PX ? undefined : box;
-}
-
-/** Twice the signed area of a ring, px². */
-function doubleArea(ring: Ring): number {
-  let sum = 0;
-  ring.forEach(([x, y], index) => {
-    const [nextX, nextY] = ring[(index + 1) % ring.length] ?? [0, 0];
-    sum += x * nextY - nextX * y;
-  });
-  return sum;
 }
 
 function cross(o: Point, a: Point, b: Point): number {
@@ -68,12 +67,54 @@ export function uncross(ring: Ring): Ring {
 
 export type RingProblem = "too-few" | "too-small" | "crosses";
 
-/** What is wrong with a drawn ring, or undefined. */
+/** What is wrong with a drawn ring, or undefined. Parts that touch in a point are allowed. */
 export function problemOf(ring: Ring): RingProblem | undefined {
-  if (ring.length < 3) return "too-few";
-  if (findCrossing(ring)) return "crosses";
-  if (Math.abs(doubleArea(ring)) / 2 < AREA_MIN_PX2) return "too-small";
+  return problemOfRings([ring]);
+}
+
+/** What is wrong with an outline of one or more rings, or undefined. */
+export function problemOfRings(rings: Rings): RingProblem | undefined {
+  if (rings.length === 0 || rings.some((ring) => ring.length < 3)) return "too-few";
+  if (rings.some((ring) => findCrossing(ring)) || crosses(rings)) return "crosses";
+  if (ringsArea(rings) < AREA_MIN_PX2) return "too-small";
   return undefined;
+}
+
+/**
+ * An outline without crossings for one that has them. A single ring is uncrossed first, which keeps it one
+ * ring through the same points; what still crosses becomes the same even-odd region in rings that do not,
+ * without slivers below the least area. Undefined when nothing is left.
+ */
+export function mend(rings: Rings): Rings | undefined {
+  const [only] = rings;
+  const once = rings.length === 1 && only ? [uncross(only)] : rings;
+  if (!problemOfRings(once)) return once;
+  const whole = normaliseRings(rings).filter((ring) => ringsArea([ring]) >= AREA_MIN_PX2);
+  return problemOfRings(whole) ? undefined : whole;
+}
+
+/**
+ * The points of a freehand stretch that matter: each that is left out lies within `tolerancePx` of the line
+ * through those that stay. The ends stay. Source: Ramer (1972); Douglas and Peucker (1973).
+ */
+export function simplifyStretch(points: readonly Point[], tolerancePx: number): Point[] {
+  const kept = new Uint8Array(points.length).fill(0);
+  const spans: [number, number][] = [[0, points.length - 1]];
+  for (let span = spans.pop(); span; span = spans.pop()) {
+    const [from, to] = span;
+    const [start, end] = [points[from], points[to]];
+    if (!start || !end) continue;
+    kept[from] = kept[to] = 1;
+    let farthest = -1;
+    let farthestPx = tolerancePx;
+    for (let i = from + 1; i < to; i++) {
+      const point = points[i];
+      const away = point ? distanceToSegment(point, start, end).distance : 0;
+      if (away > farthestPx) [farthest, farthestPx] = [i, away];
+    }
+    if (farthest > 0) spans.push([from, farthest], [farthest, to]);
+  }
+  return points.filter((_, index) => kept[index] === 1);
 }
 
 /** Takes out points that repeat the one before (a double click adds one) or lie closer than `leastPx`. */
@@ -84,7 +125,8 @@ export function withoutRepeats(points: readonly Point[], leastPx = 0.5): Point[]
   });
   const [first] = kept;
   const last = kept.at(-1);
-  if (first && last && kept.length > 1 && Math.hypot(first[0] - last[0], first[1] - last[1]) < leastPx) kept.pop();
+  if (first && last && kept.length > 1 && Math.hypot(first[0] - last[0], first[1] - last[1]) < leastPx)
+    kept.pop();
   return kept;
 }
 
@@ -116,21 +158,58 @@ export function fromExtremes(points: readonly Point[], size: Size): { box: Box; 
   return { box, ring: withoutRepeats(octagon) };
 }
 
+/** A shape moved whole, by as much as keeps it inside the image. Steps are hundredths of a pixel. */
 export function moveShape(shape: Shape, dx: number, dy: number, size: Size): Shape {
   const [x, y, width, height] = bounds(shape);
-  const byX = Math.min(size.width - x - width, Math.max(-x, dx));
-  const byY = Math.min(size.height - y - height, Math.max(-y, dy));
-  if (shape.kind === "box") return { kind: "box", box: [rounded(shape.box[0] + byX), rounded(shape.box[1] + byY), shape.box[2], shape.box[3]] };
-  return { kind: "polygon", rings: shape.rings.map((ring) => ring.map(([px, py]): Point => [rounded(px + byX), rounded(py + byY)])) };
+  const byX = rounded(Math.min(size.width - x - width, Math.max(-x, dx)));
+  const byY = rounded(Math.min(size.height - y - height, Math.max(-y, dy)));
+  const movedX = (at: number) => within(at + byX, size.width);
+  const movedY = (at: number) => within(at + byY, size.height);
+  if (shape.kind === "box") {
+    const [left, top] = [movedX(x), movedY(y)];
+    return {
+      kind: "box",
+      box: [left, top, Math.min(width, size.width - left), Math.min(height, size.height - top)],
+    };
+  }
+  const rings = shape.rings.map((ring) => ring.map(([px, py]): Point => [movedX(px), movedY(py)]));
+  return { kind: "polygon", rings };
 }
 
+const boundsOf = new WeakMap<Shape, Box>();
+
+/** The tight box of a shape, px. Kept for each shape that was asked for, since shapes are never changed. */
 export function bounds(shape: Shape): Box {
   if (shape.kind === "box") return shape.box;
-  const points = shape.rings.flat();
-  const xs = points.map(([x]) => x);
-  const ys = points.map(([, y]) => y);
-  const [x, y] = [Math.min(...xs), Math.min(...ys)];
-  return [x, y, Math.max(...xs) - x, Math.max(...ys) - y];
+  const known = boundsOf.get(shape);
+  if (known) return known;
+  let [left, top, right, bottom] = [Infinity, Infinity, -Infinity, -Infinity];
+  for (const ring of shape.rings) {
+    for (const [x, y] of ring) {
+      left = Math.min(left, x);
+      right = Math.max(right, x);
+      top = Math.min(top, y);
+      bottom = Math.max(bottom, y);
+    }
+  }
+  const box: Box = [left, top, right - left, bottom - top];
+  boundsOf.set(shape, box);
+  return box;
+}
+
+/** A shape as rings. */
+export function ringsOf(shape: Shape): Rings {
+  return shape.kind === "box" ? [corners(shape.box)] : shape.rings;
+}
+
+/** A box with one side moved to a coordinate: 0 top, 1 right, 2 bottom, 3 left. Undefined when too small. */
+export function moveSide(box: Box, side: number, to: Point, size: Size): Box | undefined {
+  const [x, y, width, height] = box;
+  const [right, bottom] = [x + width, y + height];
+  if (side === 0) return boxBetween([x, to[1]], [right, bottom], size);
+  if (side === 1) return boxBetween([x, y], [to[0], bottom], size);
+  if (side === 2) return boxBetween([x, y], [right, to[1]], size);
+  return boxBetween([to[0], y], [right, bottom], size);
 }
 
 /** The corners of a box, clockwise from the top left: what can be dragged. */
@@ -144,15 +223,21 @@ export function corners([x, y, width, height]: Box): readonly [Point, Point, Poi
 }
 
 export function replaceVertex(rings: Rings, ringIndex: number, vertexIndex: number, to: Point): Rings {
-  return rings.map((ring, r) => (r === ringIndex ? ring.map((vertex, v) => (v === vertexIndex ? to : vertex)) : ring));
+  return rings.map((ring, r) =>
+    r === ringIndex ? ring.map((vertex, v) => (v === vertexIndex ? to : vertex)) : ring,
+  );
 }
 
 export function insertVertex(rings: Rings, ringIndex: number, afterIndex: number, at: Point): Rings {
-  return rings.map((ring, r) => (r === ringIndex ? [...ring.slice(0, afterIndex + 1), at, ...ring.slice(afterIndex + 1)] : ring));
+  return rings.map((ring, r) =>
+    r === ringIndex ? [...ring.slice(0, afterIndex + 1), at, ...ring.slice(afterIndex + 1)] : ring,
+  );
 }
 
 /** Takes a vertex out; a ring that would keep fewer than three goes; undefined when no ring is left. */
 export function removeVertex(rings: Rings, ringIndex: number, vertexIndex: number): Rings | undefined {
-  const next = rings.map((ring, r) => (r === ringIndex ? ring.filter((_, v) => v !== vertexIndex) : ring)).filter((ring) => ring.length >= 3);
+  const next = rings
+    .map((ring, r) => (r === ringIndex ? ring.filter((_, v) => v !== vertexIndex) : ring))
+    .filter((ring) => ring.length >= 3);
   return next.length > 0 ? next : undefined;
 }

@@ -29,14 +29,32 @@ const DEALT_MAX = 40;
  * The proposals worth the annotator's time, best first: those that save seconds in expectation, that were
  * not sent away or taken, and that no drawn shape covers. O(proposals x instances).
  */
-export function deal(proposals: readonly DeskProposal[], document: DeskDocument, classes: readonly DeskClass[]): DeskProposal[] {
-  const gone = new Set([...document.dismissedProposalIds, ...document.instances.flatMap((instance) => (instance.proposalId ? [instance.proposalId] : []))]);
+export function deal(
+  proposals: readonly DeskProposal[],
+  document: DeskDocument,
+  classes: readonly DeskClass[],
+): DeskProposal[] {
+  const gone = new Set([
+    ...document.dismissedProposalIds,
+    ...document.instances.flatMap((instance) => (instance.proposalId ? [instance.proposalId] : [])),
+  ]);
   const drawn = document.instances.map((instance) => boxOfShape(instance.shape));
   const geometryOf = new Map(classes.map((entry) => [entry.id, entry.geometry]));
   const usual = classes.some((entry) => entry.geometry === "polygon") ? "polygon" : "box";
   return proposals
-    .map((proposal) => ({ proposal, saved: expectedSecondsSaved(proposal.score, (proposal.classId ? geometryOf.get(proposal.classId) : undefined) ?? usual) }))
-    .filter(({ proposal, saved }) => saved > 0 && !gone.has(proposal.id) && !drawn.some((box) => boxIou(box, boxOfShape(proposal.shape)) >= COVERED_IOU))
+    .map((proposal) => ({
+      proposal,
+      saved: expectedSecondsSaved(
+        proposal.score,
+        (proposal.classId ? geometryOf.get(proposal.classId) : undefined) ?? usual,
+      ),
+    }))
+    .filter(
+      ({ proposal, saved }) =>
+        saved > 0 &&
+        !gone.has(proposal.id) &&
+        !drawn.some((box) => boxIou(box, boxOfShape(proposal.shape)) >= COVERED_IOU),
+    )
     .sort((a, b) => b.saved - a.saved || (a.proposal.id < b.proposal.id ? -1 : 1))
     .slice(0, DEALT_MAX)
     .map(({ proposal }) => proposal);
@@ -44,6 +62,17 @@ export function deal(proposals: readonly DeskProposal[], document: DeskDocument,
 
 /** A proposal as an instance of a class, in the geometry that the class wants. */
 export function taken(proposal: DeskProposal, kind: DeskClass, id: string): DeskInstance {
-  const shape = kind.geometry === "box" ? ({ kind: "box", box: boxOfShape(proposal.shape) } as const) : proposal.shape;
-  return { id, classId: kind.id, shape, origin: "taken", proposalId: proposal.id, crowd: false, occluded: false, truncated: false, note: "" };
+  const shape =
+    kind.geometry === "box" ? ({ kind: "box", box: boxOfShape(proposal.shape) } as const) : proposal.shape;
+  return {
+    id,
+    classId: kind.id,
+    shape,
+    origin: "taken",
+    proposalId: proposal.id,
+    crowd: false,
+    occluded: false,
+    truncated: false,
+    note: "",
+  };
 }

@@ -35,6 +35,16 @@ export function panBy(view: Viewport, dx: number, dy: number): Viewport {
 export function fitBox(box: Box, stageWidth: number, stageHeight: number, marginPx = 24): Viewport {
   const [x, y, width, height] = box;
   const room = (stage: number) => Math.max(1, stage - 2 * marginPx);
-  const scale = Math.min(SCALE_MAX, Math.max(SCALE_MIN, Math.min(room(stageWidth) / Math.max(width, 1e-9), room(stageHeight) / Math.max(height, 1e-9))));
-  return { scale, x: stageWidth / 2 - (x + width / 2) * scale, y: stageHeight / 2 - (y + height / 2) * scale };
+  const scale = Math.min(
+    SCALE_MAX,
+    Math.max(
+      SCALE_MIN,
+      Math.min(room(stageWidth) / Math.max(width, 1e-9), room(stageHeight) / Math.max(height, 1e-9)),
+    ),
+  );
+  return {
+    scale,
+    x: stageWidth / 2 - (x + width / 2) * scale,
+    y: stageHeight / 2 - (y + height / 2) * scale,
+  };
 }
