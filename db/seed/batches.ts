@@ -57,7 +57,7 @@ export async function topUpWallet({
   const sessionId = new URL(url).pathname.split("/").pop();
   const answer = await fetch(`${env().STRIPE_API_BASE}/_control/pay-session`, {
     method: "POST",
-    headers: { "content-type": "application/json" },
+    headers: { "content-type": "application/json", connection: "close" },
     body: JSON.stringify({ id: sessionId, card: "4242424242424242" }),
   });
   if (!answer.ok) throw new Error(`the stand-in refused to pay: ${answer.status} ${await answer.text()}`);
@@ -153,7 +153,8 @@ async function uploadPictures({
     if (plan.kind !== "put" || !picture) throw new Error(`no upload was planned for ${picture?.name}`);
     const answer = await fetch(plan.url, {
       method: "PUT",
-      headers: plan.headers,
+      // A connection of its own: a kept one may have been closed while annotators were being played.
+      headers: { ...plan.headers, connection: "close" },
       body: new Uint8Array(picture.bytes),
     });
     if (!answer.ok)

@@ -154,7 +154,7 @@ async function main(): Promise<void> {
     const account = findUser(db, actors.tomas.id)?.stripeAccountId;
     const answer = await fetch(`${env().STRIPE_API_BASE}/_control/complete-onboarding`, {
       method: "POST",
-      headers: { "content-type": "application/json" },
+      headers: { "content-type": "application/json", connection: "close" },
       body: JSON.stringify({ account }),
     });
     if (!answer.ok) throw new Error(`onboarding failed: ${answer.status} ${await answer.text()}`);

@@ -118,6 +118,7 @@ export default async function EarningsPage({ searchParams }: Props) {
               <TableHead>
                 <HeadCell>Month</HeadCell>
                 <HeadCell align="end">Earned</HeadCell>
+                <HeadCell align="end">Statement</HeadCell>
               </TableHead>
               <TableBody>
                 {money.months.map((row) => (
@@ -125,6 +126,15 @@ export default async function EarningsPage({ searchParams }: Props) {
                     <RowHead>{row.month}</RowHead>
                     <Cell label="Earned" figure>
                       <Money cents={row.cents} />
+                    </Cell>
+                    <Cell label="Statement" align="end">
+                      <a
+                        className="link"
+                        href={`/api/papers/earnings?year=${row.month.slice(0, 4)}&month=${Number(row.month.slice(5))}`}
+                        download
+                      >
+                        PDF
+                      </a>
                     </Cell>
                   </Row>
                 ))}

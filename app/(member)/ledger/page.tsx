@@ -25,6 +25,8 @@ const MEANING: Record<string, string> = {
   hold: "Held for card disputes",
   loss: "Lost to card disputes",
   suspense: "Suspense",
+  refunding: "On the way back to cards",
+  shortfall: "Corrections the platform paid",
 };
 
 /** The platform's money: trial balance, alerts, and the latest postings with their entries. */

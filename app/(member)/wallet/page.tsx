@@ -8,6 +8,8 @@ import { Sheet } from "@/components/ui/Sheet";
 import { Stat } from "@/components/ui/Stat";
 import { requirePageActor } from "@/lib/auth/page";
 import { walletSummary } from "@/lib/market/money/queries";
+import { listTopUpsOf } from "@/db/queries/payments";
+import { Receipts } from "@/components/money/Receipts";
 import { Movements } from "@/components/money/Movements";
 import { RefundDialog, TopUpForm, WaitForPayment } from "./_components/WalletForms";
 
