@@ -21,7 +21,7 @@ import { SelectedPanel } from "./SelectedPanel";
 import type { DeskMode, DeskServices } from "./services";
 import { Minimap } from "./Minimap";
 import { Stage } from "./Stage";
-import { StageCaption } from "./StageCaption";
+import { StageCaption, ThumbBar } from "./StageCaption";
 import { Tray } from "./Tray";
 import { useActivity } from "./useActivity";
 import type { SaveState } from "./draftKeeper";
@@ -187,7 +187,7 @@ export function DeskSheet({ task, isAhead, mode, services }: Props) {
       <div
         className={cn(
           "grid min-h-0 grow grid-rows-[1fr_auto] md:grid-rows-1",
-          preferences.side === "left" ? "md:grid-cols-[16rem_1fr]" : "md:grid-cols-[1fr_16rem]",
+          preferences.side === "left" ? "md:grid-cols-[17rem_1fr]" : "md:grid-cols-[1fr_17rem]",
         )}
       >
         <main className="relative min-h-0 p-2 sm:p-3" id="content">
@@ -240,11 +240,12 @@ export function DeskSheet({ task, isAhead, mode, services }: Props) {
         </main>
         <aside
           className={cn(
-            "border-line max-h-[34dvh] min-h-0 overflow-y-auto border-t px-3 py-2 md:max-h-none md:border-t-0 md:py-3",
+            "border-line relative h-[28dvh] max-h-[34dvh] min-h-0 overflow-y-auto border-t px-3 py-2 md:h-auto md:max-h-none md:border-t-0 md:py-3",
             preferences.side === "left" ? "md:order-first md:border-e" : "md:border-s",
           )}
           aria-label="Key and selection"
         >
+          <ThumbBar controller={controller} scene={scene} keys={preferences.keys} />
           <KeyLegend
             controller={controller}
             document={scene.document}
@@ -363,7 +364,7 @@ const SAVE_WORD: Record<SaveState, { state: "agreed" | "waits" | "disputed"; wor
 
 function SaveMark({ state }: { state: SaveState }) {
   return (
-    <span data-save={state} className="hidden sm:inline">
+    <span data-save={state}>
       <StateMark state={SAVE_WORD[state].state}>{SAVE_WORD[state].word}</StateMark>
     </span>
   );

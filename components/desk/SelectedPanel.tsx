@@ -22,12 +22,22 @@ type Props = {
 const ORIGIN = { drawn: "drawn by you", taken: "taken as dealt", adjusted: "taken and adjusted" } as const;
 
 const INTENTS = [
-  { kind: "extend", key: "extend", label: "Add to it" },
-  { kind: "hole", key: "hole", label: "Cut out" },
-  { kind: "split", key: "split", label: "Part in two" },
-  { kind: "join", key: "join", label: "Join" },
-  { kind: "inside", key: "strokeInside", label: "Belongs" },
-  { kind: "outside", key: "strokeOutside", label: "Does not" },
+  { kind: "extend", does: "Then draw what is added to it", key: "extend", label: "Add" },
+  { kind: "hole", does: "Then draw what is cut out of it", key: "hole", label: "Cut out" },
+  { kind: "split", does: "Then drag a line that parts it in two", key: "split", label: "Part" },
+  { kind: "join", does: "Then click the shape to join it with", key: "join", label: "Join" },
+  {
+    kind: "inside",
+    does: "Then drag over what belongs to it: it is outlined anew",
+    key: "strokeInside",
+    label: "Inside",
+  },
+  {
+    kind: "outside",
+    does: "Then drag over what does not belong to it: it is outlined anew",
+    key: "strokeOutside",
+    label: "Outside",
+  },
 ] as const;
 
 /** What is selected: its measures, flags, note, and what can be done with it. */
@@ -56,7 +66,7 @@ export const SelectedPanel = memo(function SelectedPanel(props: Props) {
             </Button>
           ) : (
             <Button size="small" onClick={outline.run}>
-              {instance.shape.kind === "box" ? "Outline what is in the box" : "Outline anew"}
+              {instance.shape.kind === "box" ? "Outline it" : "Outline anew"}
               <KeyCap>{keys.outline.toUpperCase()}</KeyCap>
             </Button>
           )}
@@ -65,6 +75,7 @@ export const SelectedPanel = memo(function SelectedPanel(props: Props) {
               <Button
                 key={entry.kind}
                 size="small"
+                title={entry.does}
                 aria-pressed={intent === entry.kind}
                 onClick={() => controller.intend(entry.kind)}
               >

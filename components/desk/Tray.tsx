@@ -28,7 +28,7 @@ export const Tray = memo(function Tray({ controller, dealt, dealtIndex, task, ke
   return (
     <section
       aria-label="Tray of proposals"
-      className="border-line flex items-center gap-3 border-t px-3 py-1.5"
+      className="border-line flex flex-wrap items-center gap-x-3 gap-y-1 border-t px-3 py-1.5 sm:flex-nowrap"
     >
       {dealt.length === 0 ? (
         <p className="text-muted py-2 text-sm">
@@ -39,7 +39,7 @@ export const Tray = memo(function Tray({ controller, dealt, dealtIndex, task, ke
       ) : (
         <>
           <ol
-            className="flex min-w-0 grow gap-1.5 overflow-x-auto py-0.5"
+            className="flex min-w-0 grow basis-full gap-1.5 overflow-x-auto py-0.5 sm:basis-0"
             aria-label={`${dealt.length} proposals, the most useful first`}
           >
             {dealt.map((proposal, index) => (
@@ -61,15 +61,24 @@ export const Tray = memo(function Tray({ controller, dealt, dealtIndex, task, ke
               </li>
             ))}
           </ol>
-          <div className="flex shrink-0 flex-wrap gap-1.5 max-sm:w-28">
+          <div className="flex w-full shrink-0 gap-1.5 max-sm:*:grow sm:w-auto">
             <Button size="small" onClick={() => controller.take(false)}>
-              Take <KeyCap>{keys.take.toUpperCase()}</KeyCap>
+              Take{" "}
+              <span className="max-sm:hidden">
+                <KeyCap>{keys.take.toUpperCase()}</KeyCap>
+              </span>
             </Button>
             <Button size="small" onClick={() => controller.take(true)}>
-              Adjust <KeyCap>{keys.takeAndAdjust.toUpperCase()}</KeyCap>
+              Adjust{" "}
+              <span className="max-sm:hidden">
+                <KeyCap>{keys.takeAndAdjust.toUpperCase()}</KeyCap>
+              </span>
             </Button>
             <Button size="small" onClick={() => controller.sendAway()}>
-              Not one <KeyCap>{keys.sendAway.toUpperCase()}</KeyCap>
+              Not one{" "}
+              <span className="max-sm:hidden">
+                <KeyCap>{keys.sendAway.toUpperCase()}</KeyCap>
+              </span>
             </Button>
           </div>
         </>

@@ -143,9 +143,9 @@ function act(action: ActionId, isShifted: boolean, controller: DeskController, a
     case "fit":
       return isShifted ? controller.fitSelection() : controller.fit();
     case "zoomIn":
-      return controller.zoomCentre(1.25);
+      return controller.zoomByKey(1.25);
     case "zoomOut":
-      return controller.zoomCentre(0.8);
+      return controller.zoomByKey(0.8);
     case "hideClass":
       return controller.toggleClass(controller.currentClass.id);
     case "dim":

@@ -7,7 +7,7 @@ import { hitTest, SLOP_PX, type Hit } from "./hit";
 import { bounds, inside, mend, moveShape, problemOfRings, replaceVertex, ringsOf, uncross } from "./shapes";
 import { changed, IDLE, step, type ToolContext, type ToolEvent, type ToolState } from "./tool";
 import { deal, taken } from "./tray";
-import { fitBox, panBy, toImage, zoomAt, type ScreenPoint, type Viewport } from "./viewport";
+import { fitBox, panBy, toImage, toScreen, zoomAt, type ScreenPoint, type Viewport } from "./viewport";
 
 export type PointerKind = keyof typeof SLOP_PX;
 
@@ -144,6 +144,14 @@ export class DeskController {
 
   zoomCentre(factor: number): void {
     this.zoom([this.stage.width / 2, this.stage.height / 2], factor);
+  }
+
+  /** Zooms by a key: to the pointer or crosshair where it is on the stage, else to the middle. */
+  zoomByKey(factor: number): void {
+    const [x, y] = this.cursor ? toScreen(this.viewport, this.cursor) : [-1, -1];
+    const isSeen = x >= 0 && y >= 0 && x <= this.stage.width && y <= this.stage.height;
+    if (isSeen) this.zoom([x, y], factor);
+    else this.zoomCentre(factor);
   }
 
   pan(dx: number, dy: number): void {
