@@ -1,84 +1,239 @@
-import { boxOfRings } from "@/lib/geometry/box";
-import { ringsArea } from "@/lib/geometry/region";
+import { boxFromPoints, boxOfRings, ringOfBox } from "@/lib/geometry/box";
+import { convexHull } from "@/lib/geometry/hull";
+import { signedRingArea } from "@/lib/geometry/ring";
 import { simplifyRings } from "@/lib/geometry/simplify";
-import type { Point, Ring } from "@/lib/geometry/types";
-import type { SceneInstance } from "./index";
-import { noise, randomFrom } from "./noise";
+import type { Box, Point, Ring, Rings } from "@/lib/geometry/types";
+import { closedOutline } from "./closing";
+import { nearZero, randomFrom, type Random } from "./random";
+import { CLOUD, tap } from "./texture";
+import type { SceneInstance } from "./truth";
 
-type SceneTruth = { width: number; height: number; instances: readonly SceneInstance[] };
-
-/** How carefully somebody draws. */
-export type Care = "careful" | "steady" | "hasty" | "careless";
+/** How somebody draws: with care, at a steady pace, in haste, with boxes where outlines are asked, or without care. */
+export type Care = "careful" | "steady" | "hasty" | "boxy" | "careless";
 
 type Habit = {
-  /** Typical distance of an outline from the truth, px. */
+  /** Typical distance of an outline from what it follows, px, in stretches; and of single clicks. */
   wanderPx: number;
+  clickPx: number;
+  /** How far outside of the edge the hand stays on the whole, px. */
+  outsidePx: number;
   /** Loss of IoU that the few clicks of an outline bring. */
   coarseness: number;
-  /** Chance to miss an object, more for small ones. */
+  /** Gaps up to this width are drawn over, as when a blade of weed lies across, px. */
+  bridgePx: number;
+  drawsHoles: boolean;
+  drawsBoxes: number;
   miss: number;
   wrongClass: number;
-  /** Chance to draw something that is none. */
+  /** Chance to take two neighbours of a class for one. */
+  merge: number;
+  /** Expected number of things drawn that are none. */
   invent: number;
 };
 
 const HABITS: Record<Care, Habit> = {
-  careful: { wanderPx: 1.2, coarseness: 0.02, miss: 0.015, wrongClass: 0.005, invent: 0.02 },
-  steady: { wanderPx: 2.2, coarseness: 0.035, miss: 0.04, wrongClass: 0.02, invent: 0.06 },
-  hasty: { wanderPx: 3.6, coarseness: 0.06, miss: 0.1, wrongClass: 0.04, invent: 0.12 },
-  careless: { wanderPx: 6.5, coarseness: 0.12, miss: 0.24, wrongClass: 0.12, invent: 0.4 },
+  careful: {
+    wanderPx: 0.7,
+    clickPx: 0.4,
+    outsidePx: 0.3,
+    coarseness: 0.015,
+    bridgePx: 3,
+    drawsHoles: true,
+    drawsBoxes: 0,
+    miss: 0.012,
+    wrongClass: 0.004,
+    merge: 0.01,
+    invent: 0.02,
+  },
+  steady: {
+    wanderPx: 1.3,
+    clickPx: 0.7,
+    outsidePx: 0.6,
+    coarseness: 0.03,
+    bridgePx: 4,
+    drawsHoles: true,
+    drawsBoxes: 0,
+    miss: 0.035,
+    wrongClass: 0.015,
+    merge: 0.03,
+    invent: 0.05,
+  },
+  hasty: {
+    wanderPx: 2.4,
+    clickPx: 1.3,
+    outsidePx: 1.4,
+    coarseness: 0.06,
+    bridgePx: 7,
+    drawsHoles: false,
+    drawsBoxes: 0.04,
+    miss: 0.09,
+    wrongClass: 0.035,
+    merge: 0.1,
+    invent: 0.12,
+  },
+  boxy: {
+    wanderPx: 1.5,
+    clickPx: 1,
+    outsidePx: 1.2,
+    coarseness: 0.05,
+    bridgePx: 8,
+    drawsHoles: false,
+    drawsBoxes: 0.85,
+    miss: 0.06,
+    wrongClass: 0.02,
+    merge: 0.06,
+    invent: 0.06,
+  },
+  careless: {
+    wanderPx: 5,
+    clickPx: 2.6,
+    outsidePx: 2.5,
+    coarseness: 0.12,
+    bridgePx: 9,
+    drawsHoles: false,
+    drawsBoxes: 0.12,
+    miss: 0.22,
+    wrongClass: 0.11,
+    merge: 0.2,
+    invent: 0.5,
+  },
 };
+
+/** Share of an outline's area from which a further part or a hole is worth drawing. */
+const PART_MIN_SHARE = 0.1;
 
 export type Drawn = Pick<SceneInstance, "className" | "box" | "rings" | "occluded">;
 
-/** What somebody of this care would draw of a scene. The same seed gives the same drawing. */
-export function annotate(scene: SceneTruth, care: Care, seed: number): Drawn[] {
+export type Truth = { width: number; height: number; instances: readonly SceneInstance[] };
+
+/** What somebody of this care would draw of a scene. The same seed gives the same drawing. Coordinates to 0.1 px. */
+export function annotate(truth: Truth, care: Care, seed: number): Drawn[] {
   const habit = HABITS[care];
-  const random = randomFrom(seed * 2654435761 + 11);
-  const names = [...new Set(scene.instances.map((instance) => instance.className))];
-  const drawn = scene.instances.flatMap((instance, index): Drawn[] => {
-    const small = Math.min(1, 900 / Math.max(1, instance.box[2] * instance.box[3]));
-    if (random() < habit.miss * (1 + 2 * small + (instance.visibleFraction < 0.5 ? 1.5 : 0))) return [];
+  const random = randomFrom(Math.imul(seed, 0x9e3779b1) + care.length * 7919);
+  const names = [...new Set(truth.instances.map(({ className }) => className))];
+  const seen = merged(truth.instances, habit, random);
+  const drawn = seen.flatMap((instance): Drawn[] => {
+    if (random() < missChance(instance, habit)) return [];
     const className =
       random() < habit.wrongClass
         ? (names[Math.floor(random() * names.length)] ?? instance.className)
         : instance.className;
-    // A person outlines the largest parts, without holes and crumbs.
-    const parts = instance.rings.filter(
-      (ring) => ringsArea([ring]) > 0.12 * ringsArea([instance.rings[0] ?? ring]),
-    );
-    const rings = simplifyRings(parts, habit.coarseness)
-      .map((ring, part) => wander(ring, habit.wanderPx, seed * 131 + index * 17 + part, scene))
-      .filter((ring) => ring.length >= 3 && ringsArea([ring]) >= 16);
-    if (rings.length === 0) return [];
-    return [{ className, box: boxOfRings(rings), rings, occluded: instance.occluded }];
+    const rings =
+      random() < habit.drawsBoxes
+        ? [looseBox(instance.box, habit, random)]
+        : outlined(instance.rings, truth, habit, random);
+    const inside = rings
+      .map((ring) => ring.map((point) => within(point, truth)))
+      .filter((ring) => Math.abs(signedRingArea(ring)) >= 12);
+    return inside.length === 0
+      ? []
+      : [
+          {
+            className,
+            box: boxOfRings(inside),
+            rings: inside,
+            occluded: instance.occluded !== random() < habit.wrongClass * 2,
+          },
+        ];
   });
-  if (random() < habit.invent) {
-    const [x, y, size] = [random() * (scene.width - 90), random() * (scene.height - 90), 24 + random() * 50];
-    const ring: Ring = Array.from({ length: 8 }, (_, n): Point => [
-      x + 45 + size * Math.cos((n / 8) * 6.28),
-      y + 45 + size * Math.sin((n / 8) * 6.28),
-    ]).map((point) => within(point, scene));
-    if (names[0])
-      drawn.push({ className: names[0], box: boxOfRings([ring]), rings: [ring], occluded: false });
+  const inventions = Math.floor(habit.invent) + (random() < habit.invent % 1 ? 1 : 0);
+  for (let i = 0; i < inventions; i++) {
+    const ring = pebbleLike(truth, random);
+    drawn.push({
+      className: names[Math.floor(random() * names.length)] ?? "object",
+      box: boxOfRings([ring]),
+      rings: [ring],
+      occluded: false,
+    });
   }
   return drawn;
 }
 
-/** Moves each vertex along its own normal by a smooth amount: a hand is off by stretches, not by points. */
-function wander(ring: Ring, byPx: number, seed: number, scene: SceneTruth): Ring {
-  const n = ring.length;
+/** Small things and mostly hidden ones are missed more. */
+function missChance({ box, visibleFraction }: SceneInstance, { miss }: Habit): number {
+  const small = Math.min(1, 700 / Math.max(1, box[2] * box[3]));
+  return Math.min(0.9, miss * (0.7 + 2.2 * small + 2 * Math.max(0, 0.6 - visibleFraction)));
+}
+
+/** Some neighbours of one class, taken for one object. */
+function merged(instances: readonly SceneInstance[], { merge }: Habit, random: Random): SceneInstance[] {
+  const left = [...instances];
+  const out: SceneInstance[] = [];
+  for (let first = left.shift(); first; first = left.shift()) {
+    const { className, box } = first;
+    const other = left.findIndex(
+      (candidate) => candidate.className === className && gapPx(candidate.box, box) < 6,
+    );
+    if (other < 0 || random() >= merge) {
+      out.push(first);
+      continue;
+    }
+    const [second] = left.splice(other, 1);
+    const hull = convexHull([...first.rings, ...(second?.rings ?? [])].flat());
+    out.push({ ...first, rings: [hull], box: boxFromPoints(hull) });
+  }
+  return out;
+}
+
+function gapPx([ax, ay, aw, ah]: Box, [bx, by, bw, bh]: Box): number {
+  return Math.max(ax - bx - bw, bx - ax - aw, ay - by - bh, by - ay - ah);
+}
+
+function outlined(rings: Rings, truth: Truth, habit: Habit, random: Random): Ring[] {
+  const closed = closedOutline(rings, habit.bridgePx, truth);
+  const largest = Math.max(0, ...closed.map((ring) => Math.abs(signedRingArea(ring))));
+  const worth = closed.filter((ring) => {
+    const area = signedRingArea(ring);
+    return Math.abs(area) >= PART_MIN_SHARE * largest && (area > 0 || habit.drawsHoles);
+  });
+  return simplifyRings(worth, habit.coarseness).map((ring) => wandered(ring, habit, random));
+}
+
+/** Moves each vertex along its own normal by an amount that changes slowly: a hand is off by stretches, not by points. */
+function wandered(ring: Ring, { wanderPx, clickPx, outsidePx }: Habit, random: Random): Ring {
+  const outward = signedRingArea(ring) > 0 ? 1 : -1;
+  const shift = random() * 512;
+  let along = 0;
   return ring.map(([x, y], index): Point => {
-    const [px, py] = ring[(index + n - 1) % n] ?? [x, y];
-    const [qx, qy] = ring[(index + 1) % n] ?? [x, y];
+    const [px, py] = ring[(index + ring.length - 1) % ring.length] ?? [x, y];
+    const [qx, qy] = ring[(index + 1) % ring.length] ?? [x, y];
+    along += Math.hypot(x - px, y - py);
     const length = Math.hypot(qx - px, qy - py) || 1;
-    const off = (noise(index * 0.6, seed * 0.37, seed) - 0.45) * 2.4 * byPx;
-    const jitter = (noise(index * 7.3, 5, seed) - 0.5) * byPx;
-    return within([x + (-(qy - py) / length) * off + jitter, y + ((qx - px) / length) * off + jitter], scene);
+    const off = outward * (outsidePx + 2 * wanderPx * tap(CLOUD, along * 0.25 + shift, shift));
+    return [
+      x + ((qy - py) / length) * off + nearZero(random) * 1.7 * clickPx,
+      y - ((qx - px) / length) * off + nearZero(random) * 1.7 * clickPx,
+    ];
   });
 }
 
-function within([x, y]: Point, { width, height }: SceneTruth): Point {
-  const round = (value: number) => Math.round(value * 10) / 10;
-  return [round(Math.min(width, Math.max(0, x))), round(Math.min(height, Math.max(0, y)))];
+function looseBox([x, y, width, height]: Box, { outsidePx, clickPx, wanderPx }: Habit, random: Random): Ring {
+  const slip = () => outsidePx + nearZero(random) * (clickPx + wanderPx) * 1.5;
+  const [left, top] = [x - slip(), y - slip()];
+  return ringOfBox([
+    left,
+    top,
+    Math.max(3, x + width + slip() - left),
+    Math.max(3, y + height + slip() - top),
+  ]);
+}
+
+/** A roundish outline somewhere: a pebble or a knot of weed taken for litter. */
+function pebbleLike({ width, height }: Truth, random: Random): Ring {
+  const radius = 9 + random() * 26;
+  const [x, y] = [
+    radius * 1.4 + random() * (width - 2.8 * radius),
+    radius * 1.4 + random() * (height - 2.8 * radius),
+  ];
+  const count = 6 + Math.floor(random() * 5);
+  return Array.from({ length: count }, (_, i): Point => {
+    const angle = (i / count) * 2 * Math.PI;
+    const r = radius * (0.75 + 0.5 * random());
+    return within([x + Math.cos(angle) * r, y + Math.sin(angle) * r * 0.8], { width, height });
+  });
+}
+
+function within([x, y]: Point, { width, height }: { width: number; height: number }): Point {
+  const tenths = (value: number, most: number) => Math.round(Math.min(most, Math.max(0, value)) * 10) / 10;
+  return [tenths(x, width), tenths(y, height)];
 }
