@@ -52,6 +52,7 @@ export default async function WalletPage({ searchParams }: Props) {
                   <TopUpForm teamId={team.id} />
                 )}
               </div>
+              <Receipts topUps={listTopUpsOf(db, team.id)} teamId={team.id} />
               <Movements
                 caption={`Movements of ${team.name}`}
                 rows={wallet.movements}
