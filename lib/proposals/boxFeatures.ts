@@ -160,9 +160,9 @@ export function boxFeatures(
 
   let straddle = 0;
   for (let scale = 0; scale < 3; scale++) {
-    const segments = context.segmentations[Math.min(scale, context.segmentations.length - 1)]!;
-    const sizes = context.segmentSizes[Math.min(scale, context.segmentations.length - 1)]!;
-    straddle = straddling(segments, sizes, left, top, right, bottom);
+    const segments = context.segmentations[scale];
+    // With fewer scales the last one speaks for the rest.
+    if (segments) straddle = straddling(segments, context.segmentSizes[scale]!, left, top, right, bottom);
     out[at + 19 + scale] = straddle;
   }
 }

@@ -64,18 +64,32 @@ const FEATURES = WINDOW_FEATURES + EXTRA;
 const SIZES_MAX = 6;
 const POSITIVES_MAX = 600;
 const RIGHT_IOU = 0.6;
-const WRONG_IOU = 0.4;
+const WRONG_IOU = 0.5;
+/** Copies of the objects that are off by too much to count, over all objects. */
+const NEAR_MISSES = 600;
+/** Moves and sizes of copies that count as the object, and of those that teach the offsets, in box sizes. */
+const JITTER = 0.09;
+const MOVE = 0.25;
+const REGRESSED_MAX = 500;
+/** Penalty of the offsets' weights, and how often a box is moved. */
+const RIDGE = 400;
+const MOVES = 2;
+/** A moved box lies better than its verdict, which does not look so closely, can tell. */
+const MOVED_BONUS = 0.3;
 const NEGATIVES_MAX = 2500;
 const ROUNDS = 3;
 const HARD_A_ROUND = 60;
 /** Windows of the search that get a verdict. */
 const SEARCHED_MAX = 300;
+/** Windows and regions below get no verdict. */
+const SEARCH_LEAST = -2.5;
 const NMS_IOU = 0.4;
 /** It must gain this much average precision on images that it has not seen. */
 const GAIN_MIN = 0.03;
 /** And be this good in itself: below, most of what it says is wrong. */
 const AP_MIN = 0.1;
 const EXAMPLES_MIN = 2;
+const MIRRORED_MAX = 3;
 
 /** A picture made ready: everything in px of `channels`. */
 type Prepared = {
@@ -154,7 +168,7 @@ function detect(
   const side = sideOf(image);
   const { width, height } = image.channels;
   const hits = model.sizes.flatMap(([w, h]) =>
-    scanWindows(image.channels, Math.max(4, w * side), Math.max(4, h * side), model.search, -2.5),
+    scanWindows(image.channels, Math.max(4, w * side), Math.max(4, h * side), model.search, SEARCH_LEAST),
   );
   const windows = hits.map(({ x, y, w, h }): Box => [x, y, w, h]);
   const searched = suppress(
@@ -169,25 +183,33 @@ function detect(
     const verdict = verdictOf(model.verdict, features);
     found.push({ box, verdict, region });
     if (verdict < -1 || model.offsets.length < 4) return;
-    const [dx, dy, dw, dh] = model.offsets.map((weights) =>
-      Math.max(-4, Math.min(4, verdictOf(weights, features))),
-    );
-    const moved = clipped(decodeBox([dx!, dy!, dw!, dh!], box), width, height);
-    if (!moved) return;
+    let at = box;
+    let known = features;
+    for (let move = 0; move < MOVES; move++) {
+      const [dx, dy, dw, dh] = model.offsets.map((weights) =>
+        Math.max(-4, Math.min(4, verdictOf(weights, known))),
+      );
+      const moved = clipped(decodeBox([dx!, dy!, dw!, dh!], at), width, height);
+      if (!moved) return;
+      at = moved;
+      known = describe(image, at, model.prior);
+    }
     // The unmoved box stays as well: in crowds the move may go to the neighbour.
-    found.push({
-      box: moved,
-      verdict: verdictOf(model.verdict, describe(image, moved, model.prior)),
-      region: -1,
-    });
+    found.push({ box: at, verdict: verdictOf(model.verdict, known) + MOVED_BONUS, region: -1 });
   };
   for (const index of searched) {
     const box = clipped(windows[index]!, width, height);
     if (box) consider(box, -1);
   }
-  image.regions.forEach((box, region) => {
-    if (isPlausible(box, side, model.prior)) consider(box, region);
+  const cells = new Float32Array(WINDOW_FEATURES);
+  const regions = image.regions.flatMap((box, region) => {
+    if (!isPlausible(box, side, model.prior)) return [];
+    describeWindow(image.channels, ...box, cells, 0);
+    const score = verdictOf(model.search, cells);
+    return score > SEARCH_LEAST ? [{ box, region, score }] : [];
   });
+  const best = regions.sort((a, b) => b.score - a.score || a.region - b.region).slice(0, SEARCHED_MAX);
+  for (const { box, region } of best) consider(box, region);
   const boxes = found.map(({ box }) => box);
   return suppress(
     boxes,
@@ -254,6 +276,14 @@ function spreadOf(values: readonly number[]): number {
   return Math.sqrt(mean(values.map((value) => (value - centre) ** 2)));
 }
 
+/** A copy of a box moved and resized at random by up to `amount` of its size. */
+function shifted([x, y, w, h]: Box, amount: number, random: () => number): Box {
+  const draw = () => (random() * 2 - 1) * amount;
+  const wide = w * Math.exp(draw());
+  const high = h * Math.exp(draw());
+  return [x + (w - wide) / 2 + w * draw(), y + (h - high) / 2 + h * draw(), wide, high];
+}
+
 const bestIou = (box: Box, truth: readonly Box[]) =>
   truth.reduce((most, other) => Math.max(most, boxIou(box, other)), 0);
 
@@ -288,12 +318,7 @@ function learnClass(
   images.forEach((image, n) => {
     for (const truth of own[n]!) {
       for (let copy = 0; copy < copies && positives.length < POSITIVES_MAX; copy++) {
-        const amount = copy === 0 ? 0 : 0.11;
-        const jitter = () => (random() * 2 - 1) * amount;
-        const [x, y, w, h] = truth;
-        const wide = w * Math.exp(jitter());
-        const high = h * Math.exp(jitter());
-        const box: Box = [x + (w - wide) / 2 + w * jitter(), y + (h - high) / 2 + h * jitter(), wide, high];
+        const box = copy === 0 ? truth : shifted(truth, JITTER, random);
         positives.push({ features: describe(image, box, prior), image: n, box, truth });
       }
     }
@@ -311,6 +336,13 @@ function learnClass(
   };
   const perImage = Math.max(40, Math.min(250, Math.floor(900 / images.length)));
   images.forEach((image, n) => {
+    // Near misses teach where an object ends.
+    const misses = Math.ceil(NEAR_MISSES / examples);
+    for (const truth of own[n]!)
+      for (let miss = 0; miss < misses; miss++) {
+        const box = shifted(truth, 0.6, random);
+        if (boxIou(box, truth) > 0.15) addNegative(image, box, own[n]!);
+      }
     const { width, height } = image.channels;
     for (let draw = 0; draw < perImage; draw++) {
       const [w, h] = sizes[Math.floor(random() * sizes.length)]!;
@@ -363,13 +395,26 @@ function learnClass(
       negatives.length = NEGATIVES_MAX;
     }
   }
-  const taught = positives.filter((_, n) => n % Math.ceil(positives.length / 400) === 0);
   if (examples >= 3) {
-    const rows = taught.map(({ features }) => features);
-    const targets = [0, 1, 2, 3].map((axis) =>
-      Float64Array.from(taught, ({ box, truth }) => encodeBox(truth, box)[axis]!),
-    );
-    model.offsets = fitRidge(rows, targets, scalingOf(rows), 600).map((weights) => [...weights]);
+    const rows: Float32Array[] = [];
+    const targets = [0, 1, 2, 3].map(() => [] as number[]);
+    const moves = Math.max(2, Math.ceil(REGRESSED_MAX / examples));
+    images.forEach((image, n) => {
+      for (const truth of own[n]!) {
+        for (let move = 0; move < moves && rows.length < REGRESSED_MAX; move++) {
+          const box = shifted(truth, MOVE, random);
+          if (boxIou(box, truth) < 0.35) continue;
+          rows.push(describe(image, box, prior));
+          encodeBox(truth, box).forEach((value, axis) => targets[axis]!.push(value));
+        }
+      }
+    });
+    model.offsets = fitRidge(
+      rows,
+      targets.map((values) => Float64Array.from(values)),
+      scalingOf(rows),
+      RIDGE,
+    ).map((weights) => [...weights]);
   }
   return { classId, examples, ...model };
 }
@@ -386,6 +431,11 @@ export function trainExemplars(
   { foldsMax = 3, seed = 1 }: TrainOptions = {},
 ): ExemplarModel {
   const prepared = images.map(({ raster, instances }) => prepare(raster, instances));
+  // Few images teach twice as much with their mirror images; measuring goes without.
+  const mirrored =
+    images.length <= MIRRORED_MAX
+      ? images.map(mirror).map(({ raster, instances }) => prepare(raster, instances))
+      : [];
   const classIds = [...new Set(prepared.flatMap(({ truth }) => truth.map(({ classId }) => classId)))].sort();
   // With one image its halves are held out in turn; a few objects are too few to judge by.
   const judged = images.length > 1 ? prepared : halves(images[0]);
@@ -416,7 +466,11 @@ export function trainExemplars(
   const withModel: number[] = [];
   const without: number[] = [];
   const classes = classIds.flatMap((classId): ExemplarClass[] => {
-    const learned = learnClass(prepared, classId, seed);
+    const learned = learnClass([...prepared, ...mirrored], classId, seed);
+    const examples = prepared.reduce(
+      (sum, image) => sum + image.truth.filter((entry) => entry.classId === classId).length,
+      0,
+    );
     const own = truth.filter((entry) => entry.classId === classId);
     const list = found.get(classId) ?? [];
     const ap = measured && own.length > 0 ? averagePrecision(list, own) : null;
@@ -424,9 +478,9 @@ export function trainExemplars(
       withModel.push(ap.value);
       without.push(averagePrecision(agnostic, own).value);
     }
-    if (!learned) return [];
+    if (!learned || examples < EXAMPLES_MIN) return [];
     const { slope, offset } = ap ? calibrated(list, ap.hits) : { slope: 1.5, offset: -1 };
-    return [rounded({ ...learned, slope, offset, ap: ap?.value ?? null })];
+    return [rounded({ ...learned, examples, slope, offset, ap: ap?.value ?? null })];
   });
   const apWith = withModel.length > 0 ? mean(withModel) : null;
   const apWithout = without.length > 0 ? mean(without) : null;
@@ -437,6 +491,24 @@ export function trainExemplars(
     apWith >= AP_MIN &&
     apWith >= apWithout + GAIN_MIN;
   return { version: 2, classes, apWith, apWithout, useful };
+}
+
+function mirror({ raster: { width, height, data }, instances }: ExemplarImage): ExemplarImage {
+  const turned = new Uint8Array(data.length);
+  for (let y = 0; y < height; y++) {
+    for (let x = 0; x < width; x++) {
+      const from = (y * width + x) * 3;
+      const to = (y * width + width - 1 - x) * 3;
+      for (let c = 0; c < 3; c++) turned[to + c] = data[from + c]!;
+    }
+  }
+  return {
+    raster: { width, height, data: turned },
+    instances: instances.map(({ classId, box: [x, y, w, h] }) => ({
+      classId,
+      box: [width - x - w, y, w, h] as Box,
+    })),
+  };
 }
 
 /** The two halves of an image as images, each with the objects whose centre it holds; none with under six objects. */

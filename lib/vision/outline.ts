@@ -109,11 +109,11 @@ export function perPixel(
 export function outlineFrom(cut: Cutting, probability: Float32Array, box: Box, hints: OutlineHints): Outline {
   const { width, height, left, top, scaleX, scaleY } = cut;
   const smooth = smoothAlike(cut, probability);
-  hold(cut, smooth, hints);
+  const held = hold(cut, smooth, hints);
   const { level, iou } = bestLevel(smooth);
   const isIn = new Uint8Array(width * height);
   for (let i = 0; i < isIn.length; i++) isIn[i] = smooth[i]! >= level ? 1 : 0;
-  const kept = withoutSpeckles(isIn, width, height);
+  const kept = withoutSpeckles(isIn, held, width, height);
   const pixels = kept.reduce((sum, bit) => sum + bit, 0);
   if (pixels < Math.max(6, SHARE_MIN * cut.box[2] * cut.box[3]))
     return { rings: [ellipseOf(box)], confidence: Math.min(iou, 0.4) };
@@ -134,7 +134,8 @@ function hold(
   { width, height, left, top, scaleX, scaleY, box }: Cutting,
   probability: Float32Array,
   { inside = [], outside = [] }: OutlineHints,
-): void {
+): Uint8Array {
+  const held = new Uint8Array(width * height);
   const radius = Math.max(2, 0.04 * Math.max(box[2], box[3]));
   const mark = (points: readonly Point[], value: number) => {
     for (const [px, py] of points) {
@@ -146,14 +147,17 @@ function hold(
           column < Math.min(width, cx + radius);
           column++
         ) {
-          if (Math.hypot(column + 0.5 - cx, row + 0.5 - cy) <= radius)
+          if (Math.hypot(column + 0.5 - cx, row + 0.5 - cy) <= radius) {
             probability[row * width + column] = value;
+            held[row * width + column] = 1;
+          }
         }
       }
     }
   };
   mark(outside, 0);
   mark(inside, 1);
+  return held;
 }
 
 /** Two rounds of averaging with the four neighbours, each weighted by how alike it looks. */
@@ -221,13 +225,14 @@ function bestLevel(probability: Float32Array): { level: number; iou: number } {
   return best;
 }
 
-/** Parts under a tenth of the largest go, as do holes under a fiftieth of it. */
-function withoutSpeckles(isIn: Uint8Array, width: number, height: number): Uint8Array {
+/** Parts under a tenth of the largest go, as do holes under a fiftieth of it, unless a person put them there. */
+function withoutSpeckles(isIn: Uint8Array, held: Uint8Array, width: number, height: number): Uint8Array {
   const count = width * height;
   const part = new Int32Array(count);
   const stack = new Int32Array(count);
   const sizes = [0];
   const isRim = [false];
+  const isHeld = [false];
   for (let start = 0; start < count; start++) {
     if (part[start] !== 0) continue;
     const name = sizes.length;
@@ -235,11 +240,13 @@ function withoutSpeckles(isIn: Uint8Array, width: number, height: number): Uint8
     let depth = 0;
     let size = 0;
     let rim = false;
+    let keeps = false;
     stack[depth++] = start;
     part[start] = name;
     while (depth > 0) {
       const i = stack[--depth]!;
       size++;
+      if (held[i]) keeps = true;
       const x = i % width;
       if (x === 0 || x === width - 1 || i < width || i >= count - width) rim = true;
       for (let side = 0; side < 4; side++) {
@@ -252,19 +259,22 @@ function withoutSpeckles(isIn: Uint8Array, width: number, height: number): Uint8
     }
     sizes.push(size);
     isRim.push(rim);
+    isHeld.push(keeps);
   }
   let largest = 0;
   for (let i = 0; i < count; i++) if (isIn[i]) largest = Math.max(largest, sizes[part[i]!]!);
   const out = new Uint8Array(count);
   for (let i = 0; i < count; i++) {
     const size = sizes[part[i]!]!;
-    out[i] = isIn[i]
-      ? size >= 0.1 * largest
-        ? 1
-        : 0
-      : !isRim[part[i]!]! && size < 0.02 * largest + 4
-        ? 1
-        : 0;
+    if (isHeld[part[i]!]) out[i] = isIn[i]!;
+    else
+      out[i] = isIn[i]
+        ? size >= 0.1 * largest
+          ? 1
+          : 0
+        : !isRim[part[i]!]! && size < 0.02 * largest + 4
+          ? 1
+          : 0;
   }
   return out;
 }
