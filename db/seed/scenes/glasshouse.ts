@@ -34,7 +34,7 @@ type Trays = {
 type CellSpot = { column: number; row: number; dx: number; dy: number; inside: number; outsideTray: number };
 
 const CORNER_CM = 1.1;
-const BENCH_CM = -4;
+const BENCH_CM = -1.4;
 
 /** Trays of compost seen from above: seedlings of one age and kind with some cells left empty. */
 export function paintGlasshouse(plan: GlasshousePlan, random: Random): Painted {
@@ -127,7 +127,7 @@ function trayShape(trays: Trays): (x: number, y: number) => number {
   return (x, y) => {
     spotIn(trays, x, y, spot);
     if (spot.outsideTray > 0)
-      return mix(0, BENCH_CM, ramp(0.12, 0.4, spot.outsideTray)) + 0.05 * tap(GRIT, x * 8, y * 8);
+      return mix(0, BENCH_CM, ramp(0.08, 0.6, spot.outsideTray)) + 0.05 * tap(GRIT, x * 8, y * 8);
     const rim = 0.1 * ramp(-0.45, -0.1, spot.inside) * ramp(0.05, -0.2, spot.inside);
     if (spot.inside <= 0) return rim;
     const dome = -0.06 * (spot.dx * spot.dx + spot.dy * spot.dy) * 0.08;
@@ -367,8 +367,8 @@ function daylight(seed: number, random: Random): { light: Light; exposure: numbe
     light: {
       angle,
       elevation: between(random, 0.6, 1),
-      sun: [2.5, 2.3, 1.95],
-      zenith: [0.5, 0.56, 0.62],
+      sun: [2, 1.85, 1.6],
+      zenith: [0.68, 0.73, 0.78],
       horizon: [0.7, 0.72, 0.72],
       bounce,
       softness: 0.05,

@@ -222,7 +222,7 @@ export function bottle(random: Random): Model {
     parts: [{ mesh, material, isClear: !isSolid }],
     lengthCm: length,
     radiusCm: radius,
-    stops: isSolid ? 1 : 0.5,
+    stops: isSolid ? 1 : 0.32,
   };
 }
 

@@ -165,10 +165,10 @@ export class Relief {
    * `dx, dy` (unit vector on the ground) and climbs `rise` cm per cm.
    */
   settle({ dx, dy, rise }: Sun): void {
-    this.shade = {
-      near: blurred(this.top, this.columns, this.rows, 4),
-      wide: blurred(this.top, this.columns, this.rows, 16),
-    };
+    // A clear thing shuts out the sky no more than it does the sun, or its inside would be dark.
+    const bulk = this.top.map((z, i) => this.ground[i]! + (z - this.ground[i]!) * this.stops[i]!);
+    const { columns, rows } = this;
+    this.shade = { near: blurred(bulk, columns, rows, 4), wide: blurred(bulk, columns, rows, 16) };
     this.sun = { dx, dy, rise };
     const across = Math.ceil(this.columns / BLOCK);
     const down = Math.ceil(this.rows / BLOCK);
