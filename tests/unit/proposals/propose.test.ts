@@ -37,7 +37,7 @@ function blocks(
     rings: [ringOfBox(box)],
     colour: classId === "red" ? ([190, 60, 50] as const) : ([60, 80, 170] as const),
   }));
-  return { raster: paint(width, height, shapes, [205, 190, 150], random), objects };
+  return { raster: paint(width, height, shapes, [205, 190, 150], random, 5), objects };
 }
 
 const flat = (width: number, height: number): Raster => ({
@@ -52,7 +52,7 @@ describe("propose", () => {
   it("finds every object that stands out, best first, with an outline inside its box", () => {
     const found = propose(raster, { limit: 30 });
     for (const { box } of objects)
-      expect(Math.max(...found.map((proposal) => boxIou(proposal.box, box)))).toBeGreaterThan(0.7);
+      expect(Math.max(...found.map((proposal) => boxIou(proposal.box, box)))).toBeGreaterThan(0.6);
     found.forEach(({ score, box, rings, classId }, n) => {
       if (n > 0) expect(score).toBeLessThanOrEqual(found[n - 1]!.score);
       expect(score).toBeGreaterThanOrEqual(0);
@@ -102,10 +102,10 @@ describe("propose", () => {
   });
 
   it("finds small objects in a large picture through tiles", () => {
-    const large = blocks(1300, 700, 8, 5);
+    const large = blocks(1000, 420, 6, 5);
     const found = propose(large.raster, { limit: 100 });
     const met = large.objects.filter(({ box }) => found.some((proposal) => boxIou(proposal.box, box) > 0.6));
-    expect(met.length).toBeGreaterThanOrEqual(7);
+    expect(met.length).toBeGreaterThanOrEqual(6);
   });
 });
 
@@ -146,7 +146,7 @@ describe("trainExemplars", () => {
   });
 
   it("learns classes from a few settled images, says by how much it gains, and names what it finds", () => {
-    const model = trainExemplars(images);
+    const model = trainExemplars(images, { foldsMax: 2 });
     expect(model.useful).toBe(true);
     expect(model.apWith).toBeGreaterThan(model.apWithout ?? 1);
     const back = JSON.parse(JSON.stringify(model)) as typeof model;
@@ -168,7 +168,7 @@ describe("trainExemplars", () => {
         box: [random() * 150, random() * 110, 20 + random() * 30, 20 + random() * 30] as Box,
       })),
     }));
-    expect(trainExemplars(anywhere).useful).toBe(false);
+    expect(trainExemplars(anywhere, { foldsMax: 2 }).useful).toBe(false);
     expect(trainExemplars([]).useful).toBe(false);
     expect(
       trainExemplars([{ raster: images[0]!.raster, instances: images[0]!.instances.slice(0, 2) }]),
