@@ -10,7 +10,7 @@ import { hashPassword } from "@/lib/auth/password";
 import { launchBrowser } from "../support/browser";
 import { DeskHands } from "../support/deskHands";
 import { signIn, signUpByMail } from "../support/people";
-import { coinsPicture, pebblePicture, turned, type TestPicture } from "../support/pictures";
+import { coinsPicture, pebblePicture, turned, type TestPicture } from "../support/jobPictures";
 import { startStack, type Stack } from "../support/stack";
 
 /**
@@ -84,22 +84,20 @@ describe("the whole job", () => {
       await requester.getByRole("button", { name: "Go on to the pictures" }).click();
       await requester.waitForURL(/\/setup\/images$/);
       const batchId = /batches\/([^/]+)\//.exec(requester.url())?.[1] ?? "";
-      await requester
-        .locator("input[type=file]")
-        .setInputFiles([
-          ...pictures.map(({ name, bytes }) => ({
-            name,
-            buffer: bytes,
-            mimeType: name.endsWith("png") ? "image/png" : "image/jpeg",
-          })),
-          {
-            name: "notes.jpg",
-            buffer: Buffer.from("these are notes, not a picture"),
-            mimeType: "image/jpeg",
-          },
-          { name: "report.pdf", buffer: Buffer.from("%PDF-1.7"), mimeType: "application/pdf" },
-          { name: "copy-of-01.jpg", buffer: pictures[0]?.bytes ?? Buffer.alloc(0), mimeType: "image/jpeg" },
-        ]);
+      await requester.locator("input[type=file]").setInputFiles([
+        ...pictures.map(({ name, bytes }) => ({
+          name,
+          buffer: bytes,
+          mimeType: name.endsWith("png") ? "image/png" : "image/jpeg",
+        })),
+        {
+          name: "notes.jpg",
+          buffer: Buffer.from("these are notes, not a picture"),
+          mimeType: "image/jpeg",
+        },
+        { name: "report.pdf", buffer: Buffer.from("%PDF-1.7"), mimeType: "application/pdf" },
+        { name: "copy-of-01.jpg", buffer: pictures[0]?.bytes ?? Buffer.alloc(0), mimeType: "image/jpeg" },
+      ]);
       await requester.getByRole("heading", { name: "In the batch: 12" }).waitFor({ timeout: 60_000 });
       await requester.getByText("whatever its name says").waitFor();
       await requester.getByText("Not a JPEG, PNG, WebP, AVIF or TIFF picture.").waitFor();

@@ -5,7 +5,7 @@ import { Money } from "@/components/ui/Money";
 import { Notice } from "@/components/ui/Notice";
 import { PageHeader } from "@/components/ui/PageHeader";
 import { Sheet } from "@/components/ui/Sheet";
-import { Stat } from "@/components/ui/Stat";
+import { Stat, Stats } from "@/components/ui/Stat";
 import { requirePageActor } from "@/lib/auth/page";
 import { walletSummary } from "@/lib/market/money/queries";
 import { listTopUpsOf } from "@/db/queries/payments";
@@ -39,9 +39,11 @@ export default async function WalletPage({ searchParams }: Props) {
             <Sheet key={team.id} title={team.name}>
               <div className="grid items-start gap-6 lg:grid-cols-[16rem_1fr]">
                 <div className="grid gap-4">
-                  <Stat caption="In the wallet" size="large">
-                    <Money cents={wallet.balanceCents} />
-                  </Stat>
+                  <Stats>
+                    <Stat caption="In the wallet" size="large">
+                      <Money cents={wallet.balanceCents} />
+                    </Stat>
+                  </Stats>
                   {team.role === "owner" && wallet.balanceCents > 0 ? (
                     <RefundDialog teamId={team.id} balanceCents={wallet.balanceCents} />
                   ) : null}
