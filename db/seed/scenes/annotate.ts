@@ -36,8 +36,8 @@ const HABITS: Record<Care, Habit> = {
     wanderPx: 0.7,
     clickPx: 0.4,
     outsidePx: 0.3,
-    coarseness: 0.015,
-    bridgePx: 3,
+    coarseness: 0.025,
+    bridgePx: 2,
     drawsHoles: true,
     drawsBoxes: 0,
     miss: 0.012,
@@ -49,8 +49,8 @@ const HABITS: Record<Care, Habit> = {
     wanderPx: 1.3,
     clickPx: 0.7,
     outsidePx: 0.6,
-    coarseness: 0.03,
-    bridgePx: 4,
+    coarseness: 0.04,
+    bridgePx: 3,
     drawsHoles: true,
     drawsBoxes: 0,
     miss: 0.035,
@@ -99,8 +99,10 @@ const HABITS: Record<Care, Habit> = {
   },
 };
 
-/** Share of an outline's area from which a further part or a hole is worth drawing. */
-const PART_MIN_SHARE = 0.1;
+/** Share of an outline's area from which a further part or a hole is worth drawing: the eye of a coil is, a slit is not. */
+const PART_MIN_SHARE = 0.08;
+const HOLE_MIN_SHARE = 0.02;
+const HOLE_MIN_PX2 = 60;
 
 export type Drawn = Pick<SceneInstance, "className" | "box" | "rings" | "occluded">;
 
@@ -184,7 +186,8 @@ function outlined(rings: Rings, truth: Truth, habit: Habit, random: Random): Rin
   const largest = Math.max(0, ...closed.map((ring) => Math.abs(signedRingArea(ring))));
   const worth = closed.filter((ring) => {
     const area = signedRingArea(ring);
-    return Math.abs(area) >= PART_MIN_SHARE * largest && (area > 0 || habit.drawsHoles);
+    if (area > 0) return area >= PART_MIN_SHARE * largest;
+    return habit.drawsHoles && -area >= Math.max(HOLE_MIN_PX2, HOLE_MIN_SHARE * largest);
   });
   return simplifyRings(worth, habit.coarseness).map((ring) => wandered(ring, habit, random));
 }

@@ -66,6 +66,8 @@ export type Drawable = {
   readonly material: Material;
   readonly owner: number;
   readonly isClear: boolean;
+  /** Lies on ground that counts as its owner's already, so it adds nothing to what the owner covers. */
+  readonly isCounted?: boolean;
 };
 
 /**
@@ -98,7 +100,7 @@ export class Film {
     for (const part of parts) this.drawMesh(part);
   }
 
-  private drawMesh({ mesh, material, owner, isClear }: Drawable): void {
+  private drawMesh({ mesh, material, owner, isClear, isCounted = false }: Drawable): void {
     const { camera, stamp, stamps, spot, surface } = this;
     const { width, height, focalPx, eye, right, up, forward } = camera;
     const { positions, normals, locals, uvs, triangles } = mesh;
@@ -146,7 +148,7 @@ export class Film {
           const wa = 1 - wb - wc;
           if (wa < CRACK || wb < CRACK || wc < CRACK) continue;
           const i = y * width + x;
-          if (owner > 0 && stamp[i] !== stamps) {
+          if (owner > 0 && !isCounted && stamp[i] !== stamps) {
             stamp[i] = stamps;
             full += 1;
           }

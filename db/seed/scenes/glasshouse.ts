@@ -173,13 +173,15 @@ function sow(
       const [x, y] = centreOf(trays, column, row);
       if (x < left - 5 || x > right + 5 || y < near - 5 || y > far + 5) continue;
       const z = relief.groundAt(x, y);
-      crumbs(stage, x, y, trays.pitchCm, random);
       const isLabelled = isInFrame(x, y);
       if (random() < emptyShare) {
-        if (isLabelled) empties.set(`${column},${row}`, stage.numberFor("empty cell"));
+        const number = isLabelled ? stage.numberFor("empty cell") : 0;
+        if (isLabelled) empties.set(`${column},${row}`, number);
+        crumbs(stage, x, y, trays.pitchCm, number, random);
         if (random() < 0.12) stage.add(tag(x, y, z, random));
         continue;
       }
+      crumbs(stage, x, y, trays.pitchCm, 0, random);
       const growth = Math.min(1, Math.max(0.02, age + nearZero(random) * 0.4 - (random() < 0.12 ? 0.35 : 0)));
       const count = random() < 0.07 ? 2 : 1;
       for (let i = 0; i < count; i++) {
@@ -197,8 +199,8 @@ function sow(
   return empties;
 }
 
-/** Perlite and bark on the compost of a cell. */
-function crumbs(stage: Stage, x: number, y: number, pitchCm: number, random: Random): void {
+/** Perlite and bark on the compost of a cell; in an empty cell they are part of it. */
+function crumbs(stage: Stage, x: number, y: number, pitchCm: number, owner: number, random: Random): void {
   const half = pitchCm / 2 - 1;
   for (let i = wholeBetween(random, 8, 22); i > 0; i--) {
     const isPerlite = random() < 0.62;
@@ -214,23 +216,27 @@ function crumbs(stage: Stage, x: number, y: number, pitchCm: number, random: Ran
       surface.gloss = 0.05;
     };
     const flat = isPerlite ? 0.8 : 0.35;
-    stage.add([
-      {
-        mesh: ball(
-          px,
-          py,
-          stage.topAt(px, py) + size * 0.2,
-          [size, size * between(random, 0.5, 0.9), size * flat],
-          random() * 3.14,
-          8,
-          10,
-          random,
-          0.3,
-        ),
-        material,
-        isClear: false,
-      },
-    ]);
+    stage.addTo(
+      [
+        {
+          mesh: ball(
+            px,
+            py,
+            stage.topAt(px, py) + size * 0.2,
+            [size, size * between(random, 0.5, 0.9), size * flat],
+            random() * 3.14,
+            8,
+            10,
+            random,
+            0.3,
+          ),
+          material,
+          isClear: false,
+          isCounted: true,
+        },
+      ],
+      owner,
+    );
   }
 }
 

@@ -26,7 +26,12 @@ export class Stage {
 
   /** Adds a thing; `className` undefined for what is no object of the key. `stops` is the light it holds back. */
   add(parts: Placed[], className?: string, stops = 1): void {
-    this.groups.push({ parts, owner: className === undefined ? 0 : this.numberFor(className) });
+    this.addTo(parts, className === undefined ? 0 : this.numberFor(className), stops);
+  }
+
+  /** Adds a thing that belongs to an object with this number, or to none with 0. */
+  addTo(parts: Placed[], owner: number, stops = 1): void {
+    this.groups.push({ parts, owner });
     for (const { mesh } of parts) this.relief.add(mesh, stops);
   }
 
