@@ -4,8 +4,30 @@ const ALPHABET = "0123456789abcdefghjkmnpqrstvwxyz"; // Crockford's base 32: no 
 
 /** Prefix of every kind of row, so that an id says what it is wherever it turns up. */
 export type IdPrefix =
-  | "usr" | "tem" | "inv" | "tok" | "bat" | "cls" | "exa" | "img" | "pps" | "clm" | "sub" | "run" | "dsp"
-  | "rel" | "acc" | "pst" | "ent" | "pay" | "out" | "job" | "aud" | "evt" | "imp" | "mdl";
+  | "usr"
+  | "tem"
+  | "inv"
+  | "tok"
+  | "bat"
+  | "cls"
+  | "exa"
+  | "img"
+  | "pps"
+  | "clm"
+  | "sub"
+  | "run"
+  | "dsp"
+  | "rel"
+  | "acc"
+  | "pst"
+  | "ent"
+  | "pay"
+  | "out"
+  | "job"
+  | "aud"
+  | "evt"
+  | "imp"
+  | "mdl";
 
 /** A new id, `prefix_` and 22 characters: 110 random bits, unguessable on the wire. */
 export function newId(prefix: IdPrefix): string {

@@ -1,7 +1,8 @@
-import { candidatesOf, type Candidate, type Candidates, type Explanation } from "./candidates";
+import { candidatesOf, type Candidate, type Candidates } from "./candidates";
 import { cluster } from "./cluster";
-import { fuse, type Fused } from "./fuse";
-import { combinedLoss, expectedQuality, predictIou, stepUp, type Expected, type Fusion } from "./predict";
+import { fuse } from "./fuse";
+import { nameOf, saysOf, whyExplained, type Judged, type JudgedImage } from "./judged";
+import { combinedLoss, expectedQuality, predictIou, stepUp, type Expected } from "./predict";
 import { prepareImage, type Item, type PreparedImage } from "./prepare";
 import { scoreAnnotators } from "./score";
 import { boxIou } from "./spans";
@@ -17,32 +18,6 @@ import {
 } from "./types";
 import { posteriorOf, typicalReliability, voteModel, type Say, type VoteModel } from "./votes";
 import { people, peopleOf, percent } from "./words";
-
-/** Everything known about one candidate once the votes are weighed. */
-export type Judged = {
-  readonly candidate: Candidate;
-  /** P(class) per class of the model, last P(nothing there). */
-  readonly posterior: Float64Array;
-  /** Index of the likeliest class. */
-  readonly classIndex: number;
-  readonly real: number;
-  readonly classProbability: number;
-  readonly accepted: boolean;
-  readonly fused: Fused | null;
-  /** Independent people who support the object. */
-  readonly support: number;
-  /** Independent drawings that went into the shape, and how they agree. */
-  readonly fusion: Fusion;
-};
-
-export type JudgedImage = {
-  readonly image: PreparedImage;
-  readonly candidates: Candidates;
-  readonly judged: readonly Judged[];
-  readonly model: VoteModel;
-  readonly reliability: Reliability;
-  readonly settings: ConsensusSettings;
-};
 
 /**
  * Merges what several annotators drew on one image into one agreed set of instances, with the reason for
@@ -92,18 +67,6 @@ function judgeCandidates(
 
 function classesOf(image: PreparedImage): string[] {
   return [...new Set(image.items.map(({ instance }) => instance.classId))].sort();
-}
-
-/** What each annotator says about a candidate; a class that the model does not know counts as none of its classes. */
-export function saysOf(image: PreparedImage, candidate: Candidate, model: VoteModel): Say[] {
-  const nothing = model.classIds.length;
-  const sharers = new Int32Array(image.annotatorIds.length);
-  for (const voter of image.voterOf) sharers[voter]!++;
-  return image.annotatorIds.map((id, annotator) => {
-    const item = candidate.saidBy[annotator]!;
-    const said = item < 0 ? nothing : (model.classIndex.get(image.items[item]!.instance.classId) ?? nothing);
-    return { table: model.tableOf(id), said, weight: 1 / sharers[image.voterOf[annotator]!]! };
-  });
 }
 
 function judge(
@@ -340,10 +303,6 @@ function whyAgreed(
   return `${parts.join("; ")}.`;
 }
 
-export function nameOf(classId: string, settings: ConsensusSettings): string {
-  return settings.classNames[classId] ?? classId;
-}
-
 function leftOutInstances(state: JudgedImage): LeftOutInstance[] {
   const { image, candidates, judged, model, settings } = state;
   const out: LeftOutInstance[] = [];
@@ -392,15 +351,4 @@ function nearestAgreed({ image, judged }: JudgedImage, item: number): number {
   let best = 0;
   for (const { fused } of judged) if (fused) best = Math.max(best, boxIou(spans.box, fused.box));
   return best;
-}
-
-export function whyExplained(explanation: Explanation): string {
-  switch (explanation.reason) {
-    case "part-of":
-      return "It is a part of an object that others drew whole.";
-    case "covers-several":
-      return `It covers ${explanation.of.length} objects that others drew one by one; each of them gains this vote.`;
-    case "duplicate":
-      return "The same person drew this object twice.";
-  }
 }

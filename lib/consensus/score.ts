@@ -1,5 +1,4 @@
-import type { Judged, JudgedImage } from "./mergeImage";
-import { nameOf, saysOf, whyExplained } from "./mergeImage";
+import { nameOf, saysOf, whyExplained, type Judged, type JudgedImage } from "./judged";
 import type { AnnotatorScore, InstanceScore } from "./types";
 import { posteriorOf, type VoteModel } from "./votes";
 import { people, percent } from "./words";

@@ -151,7 +151,6 @@ function companions(boxes: Int32Array, count: number, features: Float32Array): v
   );
   for (let i = 0; i < count; i++) {
     const p = order[i]!;
-    const l = boxes[p * 4]!;
     const t = boxes[p * 4 + 1]!;
     const r = boxes[p * 4 + 2]!;
     const b = boxes[p * 4 + 3]!;
