@@ -19,6 +19,8 @@ type Habit = {
   outsidePx: number;
   /** Loss of IoU that the few clicks of an outline bring. */
   coarseness: number;
+  /** Patience: an outline of more clicks than this is drawn coarser. */
+  clicksMax: number;
   /** Gaps up to this width are drawn over, as when a blade of weed lies across, px. */
   bridgePx: number;
   drawsHoles: boolean;
@@ -37,6 +39,7 @@ const HABITS: Record<Care, Habit> = {
     clickPx: 0.4,
     outsidePx: 0.3,
     coarseness: 0.025,
+    clicksMax: 110,
     bridgePx: 2,
     drawsHoles: true,
     drawsBoxes: 0,
@@ -50,6 +53,7 @@ const HABITS: Record<Care, Habit> = {
     clickPx: 0.7,
     outsidePx: 0.6,
     coarseness: 0.04,
+    clicksMax: 70,
     bridgePx: 3,
     drawsHoles: true,
     drawsBoxes: 0,
@@ -63,6 +67,7 @@ const HABITS: Record<Care, Habit> = {
     clickPx: 1.3,
     outsidePx: 1.4,
     coarseness: 0.06,
+    clicksMax: 36,
     bridgePx: 7,
     drawsHoles: false,
     drawsBoxes: 0.04,
@@ -76,6 +81,7 @@ const HABITS: Record<Care, Habit> = {
     clickPx: 1,
     outsidePx: 1.2,
     coarseness: 0.05,
+    clicksMax: 36,
     bridgePx: 8,
     drawsHoles: false,
     drawsBoxes: 0.85,
@@ -89,6 +95,7 @@ const HABITS: Record<Care, Habit> = {
     clickPx: 2.6,
     outsidePx: 2.5,
     coarseness: 0.12,
+    clicksMax: 18,
     bridgePx: 9,
     drawsHoles: false,
     drawsBoxes: 0.12,
@@ -189,7 +196,12 @@ function outlined(rings: Rings, truth: Truth, habit: Habit, random: Random): Rin
     if (area > 0) return area >= PART_MIN_SHARE * largest;
     return habit.drawsHoles && -area >= Math.max(HOLE_MIN_PX2, HOLE_MIN_SHARE * largest);
   });
-  return simplifyRings(worth, habit.coarseness).map((ring) => wandered(ring, habit, random));
+  let simple = simplifyRings(worth, habit.coarseness);
+  for (let loss = habit.coarseness * 1.5; loss < 0.3; loss *= 1.5) {
+    if (simple.reduce((clicks, ring) => clicks + ring.length, 0) <= habit.clicksMax) break;
+    simple = simplifyRings(worth, loss);
+  }
+  return simple.map((ring) => wandered(ring, habit, random));
 }
 
 /** Moves each vertex along its own normal by an amount that changes slowly: a hand is off by stretches, not by points. */
