@@ -167,6 +167,46 @@ export function boxFeatures(
   }
 }
 
+/** Numbers of `colourFeatures`. */
+export const COLOUR_FEATURES = 3 * BINS;
+
+/**
+ * Colour histograms of the middle of a box (half its area), of the whole, and of the whole less its surround: what a thing
+ * looks like however it is turned. Roots, so that small shares count. O(bins).
+ */
+export function colourFeatures(
+  context: BoxContext,
+  left: number,
+  top: number,
+  right: number,
+  bottom: number,
+  out: Float32Array,
+  at: number,
+): void {
+  const { width, height } = context;
+  const w = right - left;
+  const h = bottom - top;
+  const inX = Math.floor(w * 0.15);
+  const inY = Math.floor(h * 0.15);
+  const middleArea = (w - 2 * inX) * (h - 2 * inY);
+  histogramIn(context, left + inX, top + inY, right - inX, bottom - inY, around);
+  for (let n = 0; n < BINS; n++) out[at + n] = Math.sqrt(around[n]! / middleArea);
+  const growX = Math.max(1, Math.round(w * 0.25));
+  const growY = Math.max(1, Math.round(h * 0.25));
+  const outLeft = Math.max(0, left - growX);
+  const outTop = Math.max(0, top - growY);
+  const outRight = Math.min(width, right + growX);
+  const outBottom = Math.min(height, bottom + growY);
+  histogramIn(context, left, top, right, bottom, inside);
+  histogramIn(context, outLeft, outTop, outRight, outBottom, around);
+  const ring = Math.max(1, (outRight - outLeft) * (outBottom - outTop) - w * h);
+  for (let n = 0; n < BINS; n++) {
+    const own = Math.sqrt(inside[n]! / (w * h));
+    out[at + BINS + n] = own;
+    out[at + 2 * BINS + n] = own - Math.sqrt((around[n]! - inside[n]!) / ring);
+  }
+}
+
 function histogramIn(
   { width, colours }: BoxContext,
   left: number,

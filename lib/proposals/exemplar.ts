@@ -4,9 +4,9 @@ import { outlineInBox } from "@/lib/vision/outline";
 import { cutRaster, shrinkRaster, type Raster } from "@/lib/vision/raster";
 import { seeded } from "@/lib/vision/ranker";
 import { averagePrecision, type Found } from "./averagePrecision";
-import { BOX_FEATURES, boxFeatures } from "./boxFeatures";
+import { BOX_FEATURES, boxFeatures, COLOUR_FEATURES, colourFeatures } from "./boxFeatures";
 import { decodeBox, encodeBox } from "./boxCoding";
-import { candidates, WORK_SIDE_PX, type CandidateSet } from "./candidates";
+import { candidates, type CandidateSet } from "./candidates";
 import { channelsOf, describeWindow, scanWindows, WINDOW_FEATURES, type Channels } from "./channels";
 import { fitLinear, fitRidge, scalingOf } from "./linear";
 import { fitLogistic } from "./logistic";
@@ -58,8 +58,9 @@ export type TrainOptions = { foldsMax?: number; seed?: number };
 /** Side at which windows are described. */
 const SIDE_PX = 640;
 /** One scale of regions is enough beside windows, at a third of the time. */
-const REGION_SCALES = [25] as const;
-const EXTRA = BOX_FEATURES + 5;
+const REGION_SCALES = [16] as const;
+const REGION_SIDE_PX = 560;
+const EXTRA = BOX_FEATURES + COLOUR_FEATURES + 5;
 const FEATURES = WINDOW_FEATURES + EXTRA;
 const SIZES_MAX = 6;
 const POSITIVES_MAX = 600;
@@ -78,6 +79,8 @@ const MOVES = 2;
 const MOVED_BONUS = 0.3;
 const NEGATIVES_MAX = 2500;
 const ROUNDS = 3;
+/** Images searched for false alarms in a round. */
+const SCANNED_MAX = 3;
 const HARD_A_ROUND = 60;
 /** Windows of the search that get a verdict. */
 const SEARCHED_MAX = 300;
@@ -105,7 +108,7 @@ type Prepared = {
 
 function prepare(raster: Raster, instances: ExemplarImage["instances"]): Prepared {
   const medium = shrinkRaster(raster, SIDE_PX);
-  const small = shrinkRaster(medium, WORK_SIDE_PX);
+  const small = shrinkRaster(medium, REGION_SIDE_PX);
   const set = candidates(small, undefined, REGION_SCALES);
   const grow = medium.width / small.width;
   const toRaster = raster.width / medium.width;
@@ -139,10 +142,11 @@ function describe(image: Prepared, [x, y, w, h]: Box, prior: ExemplarClass["prio
   const right = Math.min(set.width, Math.max(left + 2, Math.round((x + w) / grow)));
   const bottom = Math.min(set.height, Math.max(top + 2, Math.round((y + h) / grow)));
   boxFeatures(set.context, left, top, right, bottom, out, WINDOW_FEATURES);
+  colourFeatures(set.context, left, top, right, bottom, out, WINDOW_FEATURES + BOX_FEATURES);
   const side = sideOf(image);
   const dw = (Math.log(w / side) - prior[0]) / prior[2];
   const dh = (Math.log(h / side) - prior[1]) / prior[3];
-  const at = WINDOW_FEATURES + BOX_FEATURES;
+  const at = WINDOW_FEATURES + BOX_FEATURES + COLOUR_FEATURES;
   out[at] = Math.max(-4, Math.min(4, dw));
   out[at + 1] = Math.max(-4, Math.min(4, dh));
   out[at + 2] = Math.min(16, dw * dw);
@@ -378,10 +382,10 @@ function learnClass(
     model.search = fit(WINDOW_FEATURES, 0.0005);
     model.verdict = fit(FEATURES, 0.0005);
     if (round === ROUNDS - 1) break;
-    const scanned =
-      images.length <= 6
-        ? images.map((_, n) => n)
-        : Array.from({ length: 6 }, (_, n) => (round * 6 + n) % images.length);
+    const scanned = Array.from(
+      { length: Math.min(SCANNED_MAX, images.length) },
+      (_, n) => (round * SCANNED_MAX + n) % images.length,
+    );
     for (const n of scanned) {
       const image = images[n]!;
       const wrong = detect(image, model, 400).filter(
@@ -439,7 +443,8 @@ export function trainExemplars(
   const classIds = [...new Set(prepared.flatMap(({ truth }) => truth.map(({ classId }) => classId)))].sort();
   // With one image its halves are held out in turn; a few objects are too few to judge by.
   const judged = images.length > 1 ? prepared : halves(images[0]);
-  const folds = Math.min(foldsMax, judged.length);
+  // With many classes two folds must do: measuring should not take longer than learning.
+  const folds = Math.min(classIds.length > 2 ? 2 : foldsMax, judged.length);
   const found = new Map<string, Found[]>();
   const agnostic: Found[] = [];
   const truth = judged.flatMap((image, n) =>

@@ -6,7 +6,7 @@ export type Tile = { left: number; top: number; width: number; height: number };
 /** From this many times the working side on, small objects need a closer look. */
 const CLOSER_FROM = 1.8;
 /** Side of a tile, px: it is shrunk to the working side as a photograph of usual size is. */
-const TILE_SIDE_PX = 640;
+const TILE_SIDE_PX = 720;
 const OVERLAP = 0.2;
 /** More tiles would take minutes; beyond, tiles grow. */
 const TILES_MAX = 40;
