@@ -3,6 +3,7 @@
 import { CircleHelp, Redo2, Undo2, ZoomIn, ZoomOut, Scan, ScrollText } from "lucide-react";
 import { memo, useCallback, useEffect, useMemo, useRef, useState } from "react";
 import { toast } from "sonner";
+import { formatDuration } from "@/components/ui/Figures";
 import { Button } from "@/components/ui/Button";
 import { cn } from "@/components/ui/cn";
 import { ConfirmDialog } from "@/components/ui/ConfirmDialog";
@@ -345,7 +346,7 @@ function TaskFigures({
       </div>
       <div>
         <dt className="text-muted font-text text-xs">
-          Time{task.medianSeconds === null ? "" : `, median ${Math.round(task.medianSeconds)} s`}
+          Time{task.medianSeconds === null ? "" : `, median ${formatDuration(task.medianSeconds * 1000)}`}
         </dt>
         <dd>{clock}</dd>
       </div>

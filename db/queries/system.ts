@@ -1,4 +1,4 @@
-import { and, desc, eq, sql, type SQL } from "drizzle-orm";
+import { and, desc, eq, lt, sql, type SQL } from "drizzle-orm";
 import type { Reader } from "@/db/client";
 import { auditLog, images, jobs, releases, users } from "@/db/schema";
 
@@ -11,6 +11,21 @@ export function listRecentJobs(db: Reader, status: (typeof jobs.$inferSelect)["s
     .orderBy(desc(jobs.createdAtMs), desc(jobs.id))
     .limit(limit)
     .all();
+}
+
+const SWEEPS_KEPT_MS = 60_000;
+
+/** Forgets finished sweeps of claims but the last minute's: thousands of them would hide the work of people. */
+export function forgetOldSweeps(db: Reader, nowMs: number): void {
+  db.delete(jobs)
+    .where(
+      and(
+        eq(jobs.kind, "claims.sweep"),
+        eq(jobs.status, "done"),
+        lt(jobs.finishedAtMs, nowMs - SWEEPS_KEPT_MS),
+      ),
+    )
+    .run();
 }
 
 /** The audit log, latest first, with who did it. */

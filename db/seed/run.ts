@@ -57,14 +57,14 @@ async function main(): Promise<void> {
     actor: actors.ines,
     teamId,
     plan: { ...NEAP_TIDE, pictures: await neapPictures },
-    nowMs: now - DAY_MS / 2,
+    nowMs: now - 0.9 * DAY_MS,
   });
   say("neap tide posted");
   const glassId = await postBatch({
     actor: actors.rowan,
     teamId,
     plan: { ...GLASSHOUSE, pictures: await glassPictures },
-    nowMs: now - DAY_MS,
+    nowMs: now - 0.8 * DAY_MS,
   });
   say("glasshouse posted");
   drawBatch({

@@ -8,9 +8,11 @@ import { shapeIou } from "@/lib/geometry/iou";
 import type { Box, Point, Shape } from "@/lib/geometry/types";
 import { hashPassword } from "@/lib/auth/password";
 import { launchBrowser } from "../support/browser";
+import { findViolations } from "../support/axe";
 import { DeskHands } from "../support/deskHands";
 import { signIn, signUpByMail } from "../support/people";
 import { coinsPicture, pebblePicture, turned, type TestPicture } from "../support/jobPictures";
+import { discoverScreens } from "../support/screens";
 import { startStack, type Stack } from "../support/stack";
 
 /**
@@ -263,6 +265,55 @@ describe("the whole job", () => {
       expect(query<{ cents: number }>("select sum(amount_cents) as cents from payouts")[0]?.cents).toBe(paid);
     },
   );
+
+  it(
+    "leaves every screen free of axe violations and no wider than it is, at both widths and in both themes",
+    { timeout: 240_000 },
+    async () => {
+      const [requester, annotator, , , admin] = contexts;
+      if (!requester || !annotator || !admin) throw new Error("the job above did not come to its end");
+      // A second batch stops halfway through its steps, so that each of them has a screen.
+      const page = await requester.newPage();
+      await page.goto(`${stack.url}/batches/new`, { waitUntil: "networkidle" });
+      await page.getByLabel("Title").fill("Rope and floats");
+      await page.getByRole("button", { name: "Go on to the pictures" }).click();
+      await page.waitForURL(/\/setup\/images$/);
+      await page
+        .locator("input[type=file]")
+        .setInputFiles([
+          { name: "other.jpg", buffer: pictures[1]?.bytes ?? Buffer.alloc(0), mimeType: "image/jpeg" },
+        ]);
+      await page.getByRole("heading", { name: "In the batch: 1" }).waitFor({ timeout: 60_000 });
+      const found: string[] = [];
+      let screens = 0;
+      for (const [role, context] of [
+        ["visitor", await browser.newContext()],
+        ["requester", requester],
+        ["annotator", annotator],
+        ["admin", admin],
+      ] as const) {
+        const look = await context.newPage();
+        for (const screen of await discoverScreens(context, stack.url, role)) {
+          await look.goto(stack.url + screen.path, { waitUntil: "networkidle" });
+          found.push(...(await findViolations(look, screen.name)));
+          screens++;
+        }
+        if (role === "visitor") {
+          await look.goto(stack.mailUrl);
+          found.push(...(await findViolations(look, "mailbox")));
+          // What a person sees who comes by a link that is wrong or used up.
+          for (const path of ["/reset", "/link", "/invitation", "/nowhere"]) {
+            await look.goto(stack.url + path, { waitUntil: "networkidle" });
+            found.push(...(await findViolations(look, path)));
+          }
+        }
+        await look.close();
+        if (role === "visitor") await context.close();
+      }
+      expect(found).toEqual([]);
+      expect(screens).toBeGreaterThanOrEqual(26);
+    },
+  );
 });
 
 async function pay(page: Page, card: string): Promise<void> {
@@ -371,6 +422,7 @@ async function drawByHand(
   await page.goto(`${stack.url}/desk/${task.claimId}`);
   const hands = new DeskHands(page);
   await hands.ready();
+  if (who === 0) expect(await findViolations(page, "desk")).toEqual([]);
   const isCoins = picture.name === "coins.png";
   if (isCoins) await hands.press("2");
   const left = [...picture.truth];

@@ -74,7 +74,7 @@ export default async function BatchesPage() {
                     ) : null}
                   </RowHead>
                   <Cell label="State">
-                    <BatchMark status={batch.status} split={batch.progress.split} />
+                    <BatchMark status={batch.status} progress={batch.progress} />
                   </Cell>
                   <Cell label="Agreed" className="md:min-w-40">
                     <Progress

@@ -8,8 +8,9 @@ import { ButtonLink } from "@/components/ui/Button";
 import { ClassSwatch } from "@/components/ui/ClassSwatch";
 import { EmptyState } from "@/components/ui/EmptyState";
 import { Money } from "@/components/ui/Money";
-import { Notice } from "@/components/ui/Notice";
 import { PageHeader } from "@/components/ui/PageHeader";
+import { Notice } from "@/components/ui/Notice";
+import { formatDuration, formatPercent } from "@/components/ui/Figures";
 import { Sheet } from "@/components/ui/Sheet";
 import { Stat, Stats } from "@/components/ui/Stat";
 import { StateMark } from "@/components/ui/StateMark";
@@ -137,7 +138,7 @@ export default async function BoardPage() {
                       )}
                     </Stat>
                     <Stat caption="Time a picture, median">
-                      {measured.medianSeconds === null ? "–" : `${Math.round(measured.medianSeconds)} s`}
+                      {measured.medianSeconds === null ? "–" : formatDuration(measured.medianSeconds * 1000)}
                     </Stat>
                     <Stat
                       caption="Waiting for you"

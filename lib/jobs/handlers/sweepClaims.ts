@@ -1,5 +1,5 @@
 import { getDb, inTransaction } from "@/db/client";
-import { noteDeadJobs } from "@/db/queries/system";
+import { forgetOldSweeps, noteDeadJobs } from "@/db/queries/system";
 import { expireClaims } from "@/lib/market/work/expireClaims";
 import type { Handler } from "./index";
 
@@ -7,5 +7,6 @@ export const sweepClaimsJob: Handler<"claims.sweep"> = async (_payload, { nowMs 
   inTransaction(getDb(), (tx) => {
     expireClaims(tx, nowMs());
     noteDeadJobs(tx);
+    forgetOldSweeps(tx, nowMs());
   });
 };

@@ -47,6 +47,7 @@ export function settingsOf(batch: BatchRow, key: readonly ClassRow[]): Partial<C
     kMin: batch.kMin,
     kMax: batch.kMax,
     agreementTarget: batch.agreementTarget,
+    classNames: Object.fromEntries(key.map((row) => [row.id, row.name])),
     boxClasses: key.filter((row) => row.geometry === "box").map((row) => row.id),
   };
 }

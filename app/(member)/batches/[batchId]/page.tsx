@@ -10,7 +10,7 @@ import { Bars } from "@/components/ui/Bars";
 import { ButtonLink } from "@/components/ui/Button";
 import { ClassSwatch } from "@/components/ui/ClassSwatch";
 import { EmptyState } from "@/components/ui/EmptyState";
-import { formatPercent } from "@/components/ui/Figures";
+import { formatDuration, formatPercent } from "@/components/ui/Figures";
 import { LineChart } from "@/components/ui/LineChart";
 import { Markdown } from "@/components/ui/Markdown";
 import { Money } from "@/components/ui/Money";
@@ -78,7 +78,7 @@ export default async function BatchPage({ params }: Props) {
             ? [{ href: "/docket", label: "Docket" }]
             : [{ href: "/batches", label: "Batches" }]
         }
-        marks={<BatchMark status={batch.status} split={status.progress?.split ?? 0} />}
+        marks={<BatchMark status={batch.status} progress={status.progress} />}
         actions={
           mayEdit ? (
             <BatchActions
@@ -125,7 +125,7 @@ export default async function BatchPage({ params }: Props) {
           </Stat>
           <Stat
             caption="Median pay an hour"
-            note={`${measured.tasks} tasks${measured.medianSeconds === null ? "" : `, ${Math.round(measured.medianSeconds)} s each`}`}
+            note={`${measured.tasks} tasks${measured.medianSeconds === null ? "" : `, ${formatDuration(measured.medianSeconds * 1000)} each`}`}
           >
             {measured.hourlyCents === null ? "–" : <Money cents={Math.round(measured.hourlyCents)} />}
           </Stat>
@@ -208,7 +208,7 @@ export default async function BatchPage({ params }: Props) {
                       <Money cents={person.payCents} />
                     </Cell>
                     <Cell label="Time a task" figure>
-                      {Math.round(person.seconds / person.submissions)} s
+                      {formatDuration((person.seconds * 1000) / person.submissions)}
                     </Cell>
                   </Row>
                 ))}

@@ -92,7 +92,7 @@ export function ImagesStep({ batchId, isDraft, initial }: Props) {
             aria-label="Pictures of the batch"
           >
             {ready.map((image) => (
-              <li key={image.id} className="grid gap-1.5">
+              <li key={image.id} className="grid min-w-0 content-start gap-1.5">
                 <img
                   src={`/api/images/${image.id}/thumb`}
                   alt=""

@@ -45,7 +45,8 @@ Every object of a class in the key, also if it is partly hidden or cut by the ed
 
 ## What to leave out
 
-- 
+- Reflections, shadows and printed pictures of objects.
+- What is too small or too blurred to name.
 
 ## How exact
 
