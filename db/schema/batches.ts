@@ -162,6 +162,16 @@ export const proposalSets = sqliteTable("proposal_sets", {
   createdAtMs: integer("created_at_ms").notNull(),
 });
 
+/** What the requester chose for a release. */
+export type ReleaseOptions = {
+  /** Whether the working copies (upright, without metadata) go in. */
+  withPictures: boolean;
+  /** Pixels of the upright picture, or of the file as uploaded before its EXIF orientation is applied. */
+  coordinates: "upright" | "stored";
+  /** SPDX identifier of the licence that the team gives its labels; empty where it states none. */
+  licence: string;
+};
+
 export const releases = sqliteTable(
   "releases",
   {
@@ -171,6 +181,10 @@ export const releases = sqliteTable(
       .references(() => batches.id),
     number: integer("number").notNull(),
     status: text("status", { enum: ["building", "ready", "failed"] }).notNull(),
+    options: text("options", { mode: "json" })
+      .$type<ReleaseOptions>()
+      .notNull()
+      .default({ withPictures: false, coordinates: "upright", licence: "" }),
     requestedBy: text("requested_by")
       .notNull()
       .references(() => users.id),

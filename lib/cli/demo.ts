@@ -1,4 +1,4 @@
-import { existsSync } from "node:fs";
+import { existsSync, mkdirSync, rmSync, writeFileSync } from "node:fs";
 import path from "node:path";
 import {
   ensureBuilt,
@@ -55,7 +55,17 @@ async function main(): Promise<void> {
   })) {
     if (await isPortTaken(port)) throw new Error(`Port ${port} is taken. Set ${name} to a free one.`);
   }
+  // Stands while the data is being made: a start that was interrupted leaves it, and half a demo is of no use.
+  const unfinished = path.join(plan.folder, "unfinished");
+  if (existsSync(unfinished)) {
+    say("The last start was interrupted before the demo's data was complete; making it anew.");
+    rmSync(plan.folder, { recursive: true, force: true });
+  }
   const isFirst = !existsSync(path.join(plan.folder, "merestone.sqlite"));
+  if (isFirst) {
+    mkdirSync(plan.folder, { recursive: true });
+    writeFileSync(unfinished, "");
+  }
   await ensureBuilt(say);
   const fakes = watch(startFakes(plan));
   await Promise.all(
@@ -74,7 +84,9 @@ async function main(): Promise<void> {
       ["--import", "tsx", "db/seed/run.ts"],
       stackEnv(plan),
       path.join(plan.folder, "logs", "seed.log"),
+      say,
     );
+    rmSync(unfinished);
   }
   say(banner());
 }

@@ -92,16 +92,20 @@ export async function ensureBuilt(say: (line: string) => void): Promise<void> {
   writeFileSync(stamp, wanted);
 }
 
-/** Runs a command to its end; throws with the last lines of its output when it fails. */
+/** Runs a command to its end, telling each line of its output; throws with the last ones when it fails. */
 export async function runToEnd(
   command: string,
   args: string[],
   environment: NodeJS.ProcessEnv,
   logFile?: string,
+  tell?: (line: string) => void,
 ): Promise<void> {
   const child = spawn(command, args, { cwd: ROOT, env: environment, stdio: ["ignore", "pipe", "pipe"] });
   let output = "";
-  child.stdout.on("data", (chunk: Buffer) => (output += chunk.toString()));
+  child.stdout.on("data", (chunk: Buffer) => {
+    output += chunk.toString();
+    for (const line of chunk.toString().trimEnd().split("\n")) tell?.(`  ${line}`);
+  });
   child.stderr.on("data", (chunk: Buffer) => (output += chunk.toString()));
   const code = await new Promise<number | null>((resolve) => child.on("close", resolve));
   if (logFile) {

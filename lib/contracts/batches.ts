@@ -130,3 +130,26 @@ export const ImageView = z.object({
   agreement: z.number().nullable(),
 });
 export type ImageView = z.output<typeof ImageView>;
+
+/** Licences that a team can give the labels of a release, by SPDX identifier; "" states none. */
+export const LICENCES = [
+  "",
+  "CC0-1.0",
+  "CC-BY-4.0",
+  "CC-BY-SA-4.0",
+  "CC-BY-NC-4.0",
+  "ODbL-1.0",
+  "CDLA-Permissive-2.0",
+] as const;
+
+export const ReleaseInput = z
+  .object({
+    batchId: z.string().min(5).max(40),
+    withPictures: z.boolean().default(false),
+    coordinates: z.enum(["upright", "stored"]).default("upright"),
+    licence: z.enum(LICENCES).default(""),
+  })
+  .refine((input) => !input.withPictures || input.coordinates === "upright", {
+    path: ["coordinates"],
+    message: "The pictures in a release are upright, so its coordinates must be too.",
+  });

@@ -1,4 +1,4 @@
-import type { Box, Point } from "./types";
+import type { Box, Point, Shape } from "./types";
 
 /** Value of the EXIF tag 0x0112: how the stored pixels must be turned or mirrored to stand upright. */
 export type Orientation = 1 | 2 | 3 | 4 | 5 | 6 | 7 | 8;
@@ -74,4 +74,26 @@ export function boxToUpright(
   const [ax, ay] = toUpright([x, y], width, height, orientation);
   const [bx, by] = toUpright([x + w, y + h], width, height, orientation);
   return [Math.min(ax, bx), Math.min(ay, by), Math.abs(bx - ax), Math.abs(by - ay)];
+}
+
+/**
+ * A shape of the upright image as a shape of the stored one, whose size is width x height px. Where the
+ * orientation mirrors, rings are reversed, so that each keeps the sense in which it runs. O(points).
+ */
+export function shapeToStored(shape: Shape, width: number, height: number, orientation: Orientation): Shape {
+  if (orientation === 1) return shape;
+  if (shape.kind === "box") {
+    const [x, y, w, h] = shape.box;
+    const [ax, ay] = toStored([x, y], width, height, orientation);
+    const [bx, by] = toStored([x + w, y + h], width, height, orientation);
+    return { kind: "box", box: [Math.min(ax, bx), Math.min(ay, by), Math.abs(bx - ax), Math.abs(by - ay)] };
+  }
+  const isMirrored = orientation === 2 || orientation === 4 || orientation === 5 || orientation === 7;
+  return {
+    kind: "polygon",
+    rings: shape.rings.map((ring) => {
+      const moved = ring.map((point) => toStored(point, width, height, orientation));
+      return isMirrored ? moved.reverse() : moved;
+    }),
+  };
 }

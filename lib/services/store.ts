@@ -143,6 +143,13 @@ export async function getObject(key: string): Promise<Buffer> {
   return Buffer.from(await answer.Body.transformToByteArray());
 }
 
+/** The object as a stream that is read as it arrives. */
+export async function readObject(key: string): Promise<Readable> {
+  const answer = await s3().send(new GetObjectCommand({ Bucket: Bucket(), Key: key }));
+  if (!(answer.Body instanceof Readable)) throw new Error(`object ${key} has no body`);
+  return answer.Body;
+}
+
 /** The object as a web stream with its length, for answering a request without holding it in memory. */
 export async function streamObject(
   key: string,

@@ -221,6 +221,10 @@ describe("the whole job", () => {
       // ---- the release is downloaded and fits the truth
       await requester.goto(`${stack.url}/batches/${batchId}`, { waitUntil: "networkidle" });
       await requester.getByRole("button", { name: "Build a release" }).click();
+      const choices = requester.getByRole("dialog", { name: "Build a release" });
+      await choices.getByLabel("Put the pictures in").check();
+      await choices.getByLabel("Licence of the labels").selectOption("CC-BY-4.0");
+      await choices.getByRole("button", { name: "Build", exact: true }).click();
       const link = requester.getByRole("link", { name: "Download" });
       await link.waitFor({ timeout: 30_000 });
       const [download] = await Promise.all([requester.waitForEvent("download"), link.click()]);
@@ -235,6 +239,7 @@ describe("the whole job", () => {
           name,
         ).toBe(sum);
       }
+      expect([...files.keys()].filter((name) => name.startsWith("data/pictures/"))).toHaveLength(12);
       const coco = [...files].find(([name]) => /coco.*\.json$/.test(name))?.[1].toString("utf8") ?? "{}";
       expectTruth(JSON.parse(coco) as Coco);
 

@@ -4,7 +4,12 @@ import { revalidatePath } from "next/cache";
 import { redirect } from "next/navigation";
 import { z } from "zod";
 import { nowMs } from "@/lib/clock";
-import { CreateBatchInput, KeyAndBriefInput, QualityAndPayInput } from "@/lib/contracts/batches";
+import {
+  CreateBatchInput,
+  KeyAndBriefInput,
+  QualityAndPayInput,
+  ReleaseInput,
+} from "@/lib/contracts/batches";
 import { ContestImageInput } from "@/lib/contracts/work";
 import { action } from "@/lib/http/action";
 import { closeBatch as close } from "@/lib/market/batches/closeBatch";
@@ -85,7 +90,7 @@ export const contest = action({ role: "requester", input: ContestImageInput }, (
   return { disputeId };
 });
 
-export const buildRelease = action({ role: "requester", input: Batch }, ({ actor, input }) => {
+export const buildRelease = action({ role: "requester", input: ReleaseInput }, ({ actor, input }) => {
   const releaseId = requestRelease({ actor, nowMs: nowMs(), ...input });
   revalidatePath(`/batches/${input.batchId}`);
   return { releaseId };

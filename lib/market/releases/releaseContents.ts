@@ -1,8 +1,10 @@
 import { createHash } from "node:crypto";
 import type { Reader } from "@/db/client";
-import { findBrief, listClasses, type BatchRow } from "@/db/queries/batches";
+import { findBrief, listClasses, type BatchRow, type ImageRow, type ReleaseRow } from "@/db/queries/batches";
 import { listAnnotatorsOf, listCurrentRuns } from "@/db/queries/work";
+import type { ReleaseOptions } from "@/db/schema";
 import type { Dataset, DatasetAnnotation } from "@/lib/formats/dataset";
+import { isOrientation, shapeToStored, uprightSize } from "@/lib/geometry/orientation";
 
 /** What a release states of its own quality. */
 export type ReleaseQuality = {
@@ -27,23 +29,31 @@ const mean = (values: readonly number[]) =>
 const rounded = (value: number) => Math.round(value * 10_000) / 10_000;
 
 /**
- * The settled labels of a batch as a dataset, with the quality they claim and where each came from.
+ * The settled labels of a batch as a dataset, with the quality they claim, where each came from, and the pictures
+ * that go with them. A picture in the release keeps its name but for the ending of its working copy's type.
  * Annotators appear by a pseudonym that differs from batch to batch. Same database, same result.
  */
-export function releaseContents(db: Reader, batch: BatchRow) {
+export function releaseContents(db: Reader, batch: BatchRow, options: ReleaseOptions) {
   const key = listClasses(db, batch.id);
   const numberOf = new Map(key.map((row) => [row.id, row.number]));
   const settled = listCurrentRuns(db, batch.id).filter(({ image }) => image.consensusState === "settled");
   const pseudonym = (annotatorId: string) =>
     `annotator-${createHash("sha256").update(`${batch.id}/${annotatorId}`).digest("hex").slice(0, 10)}`;
   const annotations: DatasetAnnotation[] = [];
+  const names = uniqueNames(
+    settled.map(({ image }) => (options.withPictures ? pictureName(image) : image.fileName)),
+  );
   const images = settled.map(({ run, image }, index) => {
+    const upright = [image.width ?? 0, image.height ?? 0] as const;
+    const orientation =
+      options.coordinates === "stored" && isOrientation(image.exifOrientation) ? image.exifOrientation : 1;
+    const [width, height] = uprightSize(...upright, orientation); // the same turn leads back
     for (const instance of run.result.agreed) {
       annotations.push({
         id: annotations.length + 1,
         imageId: index + 1,
         classId: numberOf.get(instance.classId) ?? 0,
-        shape: instance.shape,
+        shape: shapeToStored(instance.shape, width, height, orientation),
         crowd: instance.crowd,
         score: rounded(instance.score),
         support: instance.support,
@@ -52,9 +62,9 @@ export function releaseContents(db: Reader, batch: BatchRow) {
     }
     return {
       id: index + 1,
-      fileName: image.fileName,
-      width: image.width ?? 0,
-      height: image.height ?? 0,
+      fileName: names[index] ?? image.fileName,
+      width,
+      height,
       sha256: image.sha256,
     };
   });
@@ -93,9 +103,15 @@ export function releaseContents(db: Reader, batch: BatchRow) {
     batch: batch.title,
     brief: { version: batch.briefVersion, markdown: findBrief(db, batch.id)?.markdown ?? "" },
     redundancy: { fewest: batch.kMin, most: batch.kMax, agreementTarget: batch.agreementTarget },
-    images: settled.map(({ run, image }) => ({
-      fileName: image.fileName,
+    coordinates: options.coordinates,
+    licence: options.licence,
+    images: settled.map(({ run, image }, index) => ({
+      fileName: names[index] ?? image.fileName,
+      uploadedAs: image.fileName,
       sha256: image.sha256,
+      uprightWidth: image.width,
+      uprightHeight: image.height,
+      exifOrientation: image.exifOrientation ?? 1,
       origin: run.origin === "decision" ? "decided by an admin" : "merged from submissions",
       settledAt: new Date(image.settledAtMs ?? run.createdAtMs).toISOString(),
       agreement: rounded(run.agreement),
@@ -108,11 +124,41 @@ export function releaseContents(db: Reader, batch: BatchRow) {
       })),
     })),
   };
-  return { dataset, quality, provenance };
+  const pictures = options.withPictures
+    ? settled.map(({ image }, index) => ({
+        path: `pictures/${names[index] ?? image.fileName}`,
+        storageKey: image.workingKey ?? "",
+      }))
+    : [];
+  return { dataset, quality, provenance, pictures };
+}
+
+/** Name of a working copy: lossless uploads are kept as PNG, all others as JPEG. */
+function pictureName({ fileName, mediaType }: ImageRow): string {
+  const isPng = mediaType === "image/png" || mediaType === "image/tiff";
+  const fits = isPng ? /\.png$/i : /\.jpe?g$/i;
+  return fits.test(fileName) ? fileName : `${fileName.replace(/\.[^.]*$/, "")}.${isPng ? "png" : "jpg"}`;
+}
+
+/** The same names, a number put before the ending of each that came before in any case of letters. */
+function uniqueNames(names: readonly string[]): string[] {
+  const taken = new Set<string>();
+  return names.map((name) => {
+    const dot = name.lastIndexOf(".") > 0 ? name.lastIndexOf(".") : name.length;
+    let unique = name;
+    for (let n = 2; taken.has(unique.toLowerCase()); n++)
+      unique = `${name.slice(0, dot)}-${n}${name.slice(dot)}`;
+    taken.add(unique.toLowerCase());
+    return unique;
+  });
 }
 
 /** What the release says to whoever opens it. */
-export function releaseText(batch: BatchRow, number: number, quality: ReleaseQuality): string {
+export function releaseText(
+  batch: BatchRow,
+  { number, options }: Pick<ReleaseRow, "number" | "options">,
+  quality: ReleaseQuality,
+): string {
   const percent = (value: number) => `${(value * 100).toFixed(1)} %`;
   return [
     `${batch.title}, release ${number}`,
@@ -122,8 +168,19 @@ export function releaseText(batch: BatchRow, number: number, quality: ReleaseQua
     `Expected panoptic quality ${quality.predictedQuality.value.toFixed(3)}, 95 % interval ${quality.predictedQuality.low.toFixed(3)} to ${quality.predictedQuality.high.toFixed(3)}.`,
     `${quality.decidedByAdmin} images were decided by an admin.`,
     "",
-    "Coordinates are pixels of the upright image, origin at the top left corner of the top left pixel, x right, y down.",
+    options.coordinates === "upright"
+      ? "Coordinates are pixels of the upright image (EXIF orientation applied)."
+      : "Coordinates are pixels of the file as it was uploaded, before its EXIF orientation is applied; provenance.json states the orientation of each.",
+    "Origin at the top left corner of the top left pixel, x right, y down.",
+    ...(options.withPictures
+      ? [
+          "The folder pictures/ holds the upright pictures, converted to PNG or JPEG and free of camera and place data.",
+        ]
+      : []),
     "Regions follow the even-odd rule. Image files are matched by name and by SHA-256 of the file as uploaded.",
+    options.licence === ""
+      ? "Licence of the labels: none is stated; ask the team that published them."
+      : `Licence of the labels, as stated by the team that published them: ${options.licence} (https://spdx.org/licenses/${options.licence}).`,
     "",
     ...(batch.safetyCritical
       ? [

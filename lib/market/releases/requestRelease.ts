@@ -1,6 +1,6 @@
 import { count, eq, sql, and } from "drizzle-orm";
 import { getDb, inTransaction } from "@/db/client";
-import { images, releases } from "@/db/schema";
+import { images, releases, type ReleaseOptions } from "@/db/schema";
 import type { Actor } from "@/lib/auth/actor";
 import { AppError } from "@/lib/errors";
 import { newId } from "@/lib/ids";
@@ -8,16 +8,22 @@ import { enqueue } from "@/lib/jobs/queue";
 import { requireBatch } from "@/lib/market/access";
 import { audit } from "@/lib/market/audit";
 
-/** Asks for a dataset release of what is settled now. It is built in the background; returns its id. */
+type Input = { actor: Actor; nowMs: number; batchId: string } & Partial<ReleaseOptions>;
+
+/**
+ * Asks for a dataset release of what is settled now, without pictures, upright and without a licence unless
+ * said otherwise. It is built in the background; returns its id. While one is being built it is that one's.
+ */
 export function requestRelease({
   actor,
   nowMs,
   batchId,
-}: {
-  actor: Actor;
-  nowMs: number;
-  batchId: string;
-}): string {
+  withPictures = false,
+  coordinates = "upright",
+  licence = "",
+}: Input): string {
+  if (withPictures && coordinates === "stored")
+    throw new AppError("invalid", "The pictures in a release are upright, so its coordinates must be too.");
   return inTransaction(getDb(), (tx) => {
     requireBatch(tx, batchId, actor, "viewer");
     const settled =
@@ -42,7 +48,15 @@ export function requestRelease({
         .get()?.max ?? 0) + 1;
     const id = newId("rel");
     tx.insert(releases)
-      .values({ id, batchId, number, status: "building", requestedBy: actor.id, createdAtMs: nowMs })
+      .values({
+        id,
+        batchId,
+        number,
+        status: "building",
+        options: { withPictures, coordinates, licence },
+        requestedBy: actor.id,
+        createdAtMs: nowMs,
+      })
       .run();
     enqueue(tx, {
       kind: "release.build",
@@ -56,7 +70,7 @@ export function requestRelease({
       actorId: actor.id,
       action: "release.requested",
       subject: batchId,
-      detail: { number },
+      detail: { number, withPictures, coordinates, licence },
       nowMs,
     });
     return id;

@@ -1,0 +1,1 @@
+ALTER TABLE `releases` ADD `options` text DEFAULT '{"withPictures":false,"coordinates":"upright","licence":""}' NOT NULL;
