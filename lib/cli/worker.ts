@@ -21,6 +21,7 @@ process.on("SIGINT", () => (stopping = true));
 async function runJob(job: JobRow): Promise<void> {
   const db = getDb();
   const context: JobContext = {
+    jobId: job.id,
     nowMs,
     progress: (share, note) => void reportProgress(db, job, share, note ?? null, nowMs()),
   };

@@ -11,12 +11,13 @@ import {
   ListPartsCommand,
   NotFound,
   PutObjectCommand,
-  S3Client,
   UploadPartCommand,
+  type S3Client,
 } from "@aws-sdk/client-s3";
 import { Upload } from "@aws-sdk/lib-storage";
 import { getSignedUrl } from "@aws-sdk/s3-request-presigner";
 import { env } from "@/lib/env";
+import { createS3Client, createS3Presigner, type S3Config } from "./s3";
 
 export type PartTag = { number: number; etag: string };
 
@@ -25,27 +26,18 @@ const PRESIGNED_SECONDS = 3600;
 let client: S3Client | undefined;
 let presigner: S3Client | undefined;
 
-function configured(extra: Partial<ConstructorParameters<typeof S3Client>[0]> = {}): S3Client {
+function config(): S3Config {
   const { S3_ENDPOINT, S3_REGION, S3_ACCESS_KEY_ID, S3_SECRET_ACCESS_KEY } = env();
-  return new S3Client({
+  return {
     endpoint: S3_ENDPOINT,
     region: S3_REGION,
-    forcePathStyle: true,
-    credentials: { accessKeyId: S3_ACCESS_KEY_ID, secretAccessKey: S3_SECRET_ACCESS_KEY },
-    ...extra,
-  });
+    accessKeyId: S3_ACCESS_KEY_ID,
+    secretAccessKey: S3_SECRET_ACCESS_KEY,
+  };
 }
 
-function s3(): S3Client {
-  client ??= configured();
-  return client;
-}
-
-/** Presigns without a default checksum: the CRC32 of an empty body would refuse every real one. */
-function signer(): S3Client {
-  presigner ??= configured({ requestChecksumCalculation: "WHEN_REQUIRED" });
-  return presigner;
-}
+const s3 = (): S3Client => (client ??= createS3Client(config()));
+const signer = (): S3Client => (presigner ??= createS3Presigner(config()));
 
 const Bucket = () => env().S3_BUCKET;
 

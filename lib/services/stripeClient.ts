@@ -1,20 +1,11 @@
-import Stripe from "stripe";
+import type Stripe from "stripe";
 import { env } from "@/lib/env";
+import { createStripeClient } from "./stripe";
 
 let client: Stripe | undefined;
 
 /** The Stripe SDK, pointed at the configured address. */
 export function stripe(): Stripe {
-  if (client) return client;
-  const { STRIPE_SECRET_KEY, STRIPE_API_BASE } = env();
-  const base = new URL(STRIPE_API_BASE);
-  client = new Stripe(STRIPE_SECRET_KEY, {
-    host: base.hostname,
-    port: base.port || (base.protocol === "https:" ? "443" : "80"),
-    protocol: base.protocol === "https:" ? "https" : "http",
-    maxNetworkRetries: 2,
-    timeout: 20_000,
-    telemetry: false,
-  });
-  return client;
+  const { STRIPE_SECRET_KEY: secretKey, STRIPE_API_BASE: apiBase } = env();
+  return (client ??= createStripeClient({ secretKey, apiBase }));
 }

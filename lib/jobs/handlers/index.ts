@@ -12,6 +12,8 @@ import { trainBatchJob } from "./trainBatch";
 import { payoutRunJob } from "./payoutRun";
 
 export type JobContext = {
+  /** The same over all attempts of the job. */
+  jobId: string;
   nowMs: () => number;
   /** Says how far the job is, 0..1, and extends its lease. */
   progress: (share: number, note?: string) => void;

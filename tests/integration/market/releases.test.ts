@@ -1,6 +1,6 @@
 import { createHash } from "node:crypto";
 import { eq } from "drizzle-orm";
-import sharp from "sharp";
+import sharp, { type Sharp } from "sharp";
 import { afterAll, beforeAll, beforeEach, describe, expect, it, vi } from "vitest";
 import yauzl from "yauzl";
 import { inTransaction, type Db } from "@/db/client";
@@ -222,7 +222,7 @@ describe("a box of the upright picture", () => {
   );
 });
 
-async function redBox(picture: sharp.Sharp): Promise<Box> {
+async function redBox(picture: Sharp): Promise<Box> {
   const { data, info } = await picture.raw().toBuffer({ resolveWithObject: true });
   let [x0, y0, x1, y1] = [Infinity, Infinity, -1, -1];
   for (let y = 0; y < info.height; y++)

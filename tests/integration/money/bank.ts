@@ -12,6 +12,7 @@ import { refundRunJob } from "@/lib/jobs/handlers/refundRun";
 import { stripeEventJob } from "@/lib/jobs/handlers/stripeEvent";
 import { failJob, finishJob, takeJob, type JobRow } from "@/lib/jobs/queue";
 import { fundPosting, releasePosting } from "@/lib/ledger/postings";
+import type { JobContext } from "@/lib/jobs/handlers";
 import { startOnboarding } from "@/lib/market/money/onboarding";
 import { requestPayout } from "@/lib/market/money/payouts";
 import { startTopUp } from "@/lib/market/money/topUp";
@@ -21,7 +22,7 @@ import { freshDb } from "@/tests/support/db";
 const WEBHOOK_URL = "http://127.0.0.1/api/stripe/webhook";
 export const WEBHOOK_SECRET = "whsec_money_tests";
 
-type Job = (payload: never, context: { nowMs: () => number; progress: () => void }) => Promise<void>;
+type Job = (payload: never, context: JobContext) => Promise<void>;
 const JOBS: Record<string, Job> = {
   "stripe.event": stripeEventJob,
   "payout.run": payoutRunJob,
@@ -92,7 +93,11 @@ export class Bank {
       const job = takeJob(this.db, "test", nowMs);
       if (!job) return failed;
       try {
-        await JOBS[job.kind]?.(job.payload as never, { nowMs: () => nowMs, progress: () => undefined });
+        await JOBS[job.kind]?.(job.payload as never, {
+          jobId: job.id,
+          nowMs: () => nowMs,
+          progress: () => undefined,
+        });
         finishJob(this.db, job, nowMs);
       } catch (error) {
         failJob(this.db, job, error, nowMs);
