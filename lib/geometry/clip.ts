@@ -1,7 +1,8 @@
-import { Clipper, ClipType, FillRule, type PathsD } from "clipper2-ts";
+import { Clipper, ClipType, type PathsD } from "clipper2-ts";
 import { boxOfRings } from "./box";
 import { clipRingToBox } from "./clipRing";
 import { withoutRepeats, withoutSpikes } from "./clean";
+import { boundedBoolean } from "./clipper";
 import { prepareRings, regionIntersectionArea, type Region } from "./region";
 import { ringPerimeter } from "./ring";
 import type { Point, Ring, Rings } from "./types";
@@ -16,7 +17,11 @@ const CLIP_TYPE = {
 } as const;
 
 /** New corners are rounded to 1/10,000 px; the finer and coarser grids are for input on which that one goes wrong. */
-const DECIMALS = [4, 6, 5, 3] as const;
+const ATTEMPTS = [
+  { decimals: 4, turned: false, fresh: true },
+  { decimals: 4, turned: true, fresh: true },
+  ...[6, 5, 3].flatMap((decimals) => [false, true].map((turned) => ({ decimals, turned, fresh: false }))),
+];
 /** A corner moved by the rounding changes the area by its edges' length times this, px. */
 const ROUNDING_PX = 1e-4;
 
@@ -24,26 +29,34 @@ const ROUNDING_PX = 1e-4;
  * Combines two regions (even-odd) into rings that do not cross. An empty result has no rings. Corners that the operation
  * makes are rounded to 1/10,000 px; corners that it keeps stay as they were to the bit. The clipper's area is
  * checked against the sweep of region.ts, and where they differ by more than rounding (seen on overlapping
- * self-crossing rings) the operation is done again on a finer grid from normalised input.
+ * self-crossing rings), or the clipper finds no end, the operation is done again on other grids from normalised
+ * input, and with x and y exchanged, which makes another sweep of it. It always ends.
  * Engine: Clipper2 (Johnson; after Vatti, 1992). Areas and IoU never come from here.
  */
 export function combineRings(a: Rings, b: Rings, rule: RingsRule): Rings {
   const expectedPx2 = combinedArea(prepareRings(a), prepareRings(b), rule);
   const edgesPx = [...a, ...b].reduce((sum, ring) => sum + ringPerimeter(ring), 0);
   let best: { paths: PathsD; errorPx2: number } | undefined;
-  for (const decimals of DECIMALS) {
-    const isFirst = best === undefined;
-    const [subject, clip] = [a, b].map((rings) => (isFirst ? toPaths(rings) : normalised(rings, decimals)));
-    const paths = Clipper.booleanOpD(CLIP_TYPE[rule], subject ?? [], clip ?? [], FillRule.EvenOdd, decimals);
+  for (const { decimals, turned, fresh } of ATTEMPTS) {
+    const [subject, clip] = [a, b].map((rings) => {
+      const paths = turned ? exchanged(toPaths(rings)) : toPaths(rings);
+      return fresh ? paths : boundedBoolean(ClipType.Union, paths, [], decimals);
+    });
+    const found = subject && clip && boundedBoolean(CLIP_TYPE[rule], subject, clip, decimals);
+    if (!found) continue;
+    const paths = turned ? exchanged(found) : found;
     const errorPx2 = Math.abs(Clipper.areaPathsD(paths) - expectedPx2);
     if (best === undefined || errorPx2 < best.errorPx2) best = { paths, errorPx2 };
     if (best.errorPx2 <= ROUNDING_PX * edgesPx) break;
   }
-  return fromPaths(best?.paths ?? [], [...a, ...b]);
+  if (best === undefined)
+    throw new Error("These outlines cannot be combined: the clipper finds no end on any grid");
+  return fromPaths(best.paths, [...a, ...b]);
 }
 
-function normalised(rings: Rings, decimals: number): PathsD {
-  return Clipper.booleanOpD(ClipType.Union, toPaths(rings), [], FillRule.EvenOdd, decimals);
+/** The same paths with x and y exchanged, run backwards, so that the sign of areas stays. */
+function exchanged(paths: PathsD): PathsD {
+  return paths.map((path) => path.map(({ x, y }) => ({ x: y, y: x })).reverse());
 }
 
 function combinedArea(a: Region, b: Region, rule: RingsRule): number {
