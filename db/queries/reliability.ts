@@ -1,40 +1,67 @@
-import { asc, desc, eq, inArray, sql, and } from "drizzle-orm";
+import { asc, desc, eq, inArray } from "drizzle-orm";
 import type { Reader } from "@/db/client";
 import { images, submissions } from "@/db/schema";
 import type { ImageLabels } from "@/lib/consensus/types";
 
+/** An image and the fingerprint of all that was handed in for it: it changes when a submission arrives, and only then. */
+export type LabelStamp = { imageId: string; stamp: string };
+
+/** Submissions looked at for each image wanted: bounds the work however long the batch has run. */
+const SUBMISSIONS_PER_IMAGE = 10;
+
 /**
- * Labels of the batch's images that have two submissions or more, latest images first, at most `limit`: what
- * the reliability of its annotators is estimated from.
+ * The batch's images that have two submissions or more, latest first, at most `limit`: what the reliability of its
+ * annotators is estimated from. Looks at the latest 10 x `limit` submissions, whatever the size of the batch.
  */
-export function listReliabilityLabels(db: Reader, batchId: string, limit: number): ImageLabels[] {
+export function listLabelStamps(db: Reader, batchId: string, limit: number): LabelStamp[] {
   const latest = db
     .select({ imageId: submissions.imageId })
     .from(submissions)
     .where(eq(submissions.batchId, batchId))
-    .groupBy(submissions.imageId)
-    .having(sql`count(*) >= 2`)
-    .orderBy(desc(sql`max(${submissions.submittedAtMs})`))
-    .limit(limit)
-    .all()
-    .map((row) => row.imageId);
-  if (latest.length === 0) return [];
+    .orderBy(desc(submissions.submittedAtMs), desc(submissions.id))
+    .limit(SUBMISSIONS_PER_IMAGE * limit)
+    .all();
+  const imageIds = [...new Set(latest.map((row) => row.imageId))].slice(0, 2 * limit);
+  if (imageIds.length === 0) return [];
+  const parts = new Map<string, string[]>(imageIds.map((id) => [id, []]));
+  for (const { imageId, id, sha256 } of db
+    .select({ imageId: submissions.imageId, id: submissions.id, sha256: submissions.sha256 })
+    .from(submissions)
+    .where(inArray(submissions.imageId, imageIds))
+    .orderBy(asc(submissions.submittedAtMs), asc(submissions.id))
+    .all())
+    parts.get(imageId)?.push(`${id}:${sha256}`);
+  return [...parts]
+    .filter(([, list]) => list.length >= 2)
+    .slice(0, limit)
+    .map(([imageId, list]) => ({ imageId, stamp: list.join() }));
+}
+
+/** What was handed in for these images, as the consensus engine takes it, by image. */
+export function findLabelsOf(db: Reader, imageIds: readonly string[]): Map<string, ImageLabels> {
+  const byImage = new Map<string, ImageLabels>();
+  if (imageIds.length === 0) return byImage;
   const rows = db
-    .select({ image: images, annotatorId: submissions.annotatorId, document: submissions.document })
+    .select({
+      imageId: images.id,
+      width: images.width,
+      height: images.height,
+      annotatorId: submissions.annotatorId,
+      document: submissions.document,
+    })
     .from(submissions)
     .innerJoin(images, eq(images.id, submissions.imageId))
-    .where(and(eq(submissions.batchId, batchId), inArray(submissions.imageId, latest)))
+    .where(inArray(submissions.imageId, [...imageIds]))
     .orderBy(asc(submissions.submittedAtMs), asc(submissions.id))
     .all();
-  const byImage = new Map<string, ImageLabels>();
-  for (const { image, annotatorId, document } of rows) {
+  for (const { imageId, width, height, annotatorId, document } of rows) {
     const entry = { annotatorId, instances: document.instances };
-    const known = byImage.get(image.id);
-    byImage.set(image.id, {
-      width: image.width ?? 0,
-      height: image.height ?? 0,
+    const known = byImage.get(imageId);
+    byImage.set(imageId, {
+      width: width ?? 0,
+      height: height ?? 0,
       annotators: known ? [...known.annotators, entry] : [entry],
     });
   }
-  return [...byImage.values()];
+  return byImage;
 }

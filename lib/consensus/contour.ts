@@ -10,20 +10,21 @@ import { ROW_PHASE } from "./spans";
 export function contours(grid: Grid, field: Float32Array, level: number): Rings {
   const { columns, rows } = grid;
   // Edge ids: 2 * node for the edge to the right neighbour, 2 * node + 1 for the edge downwards.
-  const next = new Int32Array(2 * columns * rows).fill(-1);
+  const next = edgeLinks(2 * columns * rows);
   const starts: number[] = [];
   const link = (from: number, to: number) => {
     next[from] = to;
     starts.push(from);
   };
   for (let row = 0; row + 1 < rows; row++) {
+    const first = row * columns;
+    // The two nodes on the left of the cell, as bits 1 and 8; the right-hand ones are the next cell's left.
+    let before = (field[first]! >= level ? 1 : 0) | (field[first + columns]! >= level ? 8 : 0);
     for (let column = 0; column + 1 < columns; column++) {
-      const node = row * columns + column;
-      const a = field[node]! >= level;
-      const b = field[node + 1]! >= level;
-      const c = field[node + columns + 1]! >= level;
-      const d = field[node + columns]! >= level;
-      const code = Number(a) | (Number(b) << 1) | (Number(c) << 2) | (Number(d) << 3);
+      const node = first + column;
+      const after = (field[node + 1]! >= level ? 1 : 0) | (field[node + columns + 1]! >= level ? 8 : 0);
+      const code = before | ((after & 1) << 1) | ((after & 8) >> 1);
+      before = after;
       if (code === 0 || code === 15) continue;
       const top = 2 * node;
       const bottom = 2 * (node + columns);
@@ -98,6 +99,14 @@ export function contours(grid: Grid, field: Float32Array, level: number): Rings 
   return rings;
 }
 
+/** Kept between calls: all links are taken out again as the outlines are followed. */
+let links = new Int32Array(0);
+
+function edgeLinks(count: number): Int32Array {
+  if (links.length < count) links = new Int32Array(2 * count).fill(-1);
+  return links;
+}
+
 function crossing(grid: Grid, field: Float32Array, level: number, edge: number): Point {
   const { cellPx, columns } = grid;
   const node = edge >> 1;
@@ -149,70 +158,113 @@ function thin(ring: Ring, budget: number): Ring {
   if (n <= 3) return ring;
   const xs = Float64Array.from(ring, (point) => point[0]);
   const ys = Float64Array.from(ring, (point) => point[1]);
-  const previous = Int32Array.from(ring, (_, i) => (i + n - 1) % n);
-  const following = Int32Array.from(ring, (_, i) => (i + 1) % n);
-  const area = new Float64Array(n);
-  const heap = new Int32Array(n);
-  const place = new Int32Array(n);
-  const triangle = (i: number) => {
-    const p = previous[i]!;
-    const q = following[i]!;
-    return Math.abs((xs[i]! - xs[p]!) * (ys[q]! - ys[p]!) - (xs[q]! - xs[p]!) * (ys[i]! - ys[p]!)) / 2;
-  };
-  let size = n;
-  const less = (a: number, b: number) => area[a]! < area[b]! || (area[a] === area[b] && a < b);
-  const up = (at: number) => {
-    const item = heap[at]!;
-    while (at > 0) {
-      const parent = (at - 1) >> 1;
-      if (!less(item, heap[parent]!)) break;
-      heap[at] = heap[parent]!;
-      place[heap[at]!] = at;
-      at = parent;
-    }
-    heap[at] = item;
-    place[item] = at;
-  };
-  const down = (at: number) => {
-    const item = heap[at]!;
-    for (;;) {
-      let child = 2 * at + 1;
-      if (child >= size) break;
-      if (child + 1 < size && less(heap[child + 1]!, heap[child]!)) child++;
-      if (!less(heap[child]!, item)) break;
-      heap[at] = heap[child]!;
-      place[heap[at]!] = at;
-      at = child;
-    }
-    heap[at] = item;
-    place[item] = at;
-  };
+  const previous = new Int32Array(n);
+  const following = new Int32Array(n);
+  const queue = new VertexQueue(n);
   for (let i = 0; i < n; i++) {
-    area[i] = triangle(i);
-    heap[i] = i;
-    place[i] = i;
+    previous[i] = i === 0 ? n - 1 : i - 1;
+    following[i] = i === n - 1 ? 0 : i + 1;
+    queue.area[i] = triangle(xs, ys, previous[i]!, i, following[i]!);
   }
-  for (let at = (n >> 1) - 1; at >= 0; at--) down(at);
-  const gone = new Uint8Array(n);
+  queue.build();
   let left = budget;
-  while (size > 3) {
-    const i = heap[0]!;
-    if (area[i]! > left) break;
-    left -= area[i]!;
-    gone[i] = 1;
-    size--;
-    heap[0] = heap[size]!;
-    place[heap[0]!] = 0;
-    down(0);
+  while (queue.size > 3) {
+    const i = queue.heap[0]!;
+    if (queue.area[i]! > left) break;
+    left -= queue.area[i]!;
+    queue.shift();
     const p = previous[i]!;
     const q = following[i]!;
     following[p] = q;
     previous[q] = p;
-    for (const j of [p, q]) {
-      area[j] = triangle(j);
-      up(place[j]!);
-      down(place[j]!);
-    }
+    queue.move(p, triangle(xs, ys, previous[p]!, p, q));
+    queue.move(q, triangle(xs, ys, p, q, following[q]!));
   }
-  return ring.filter((_, i) => gone[i] === 0);
+  return ring.filter((_, i) => queue.place[i]! >= 0);
+}
+
+function triangle(xs: Float64Array, ys: Float64Array, p: number, i: number, q: number): number {
+  const x = xs[p]!;
+  const y = ys[p]!;
+  return Math.abs((xs[i]! - x) * (ys[q]! - y) - (xs[q]! - x) * (ys[i]! - y)) / 2;
+}
+
+/** Vertices by area of their triangle, smallest first, ties by index: a binary heap that knows each one's place. */
+class VertexQueue {
+  readonly area: Float64Array;
+  readonly heap: Int32Array;
+  /** Place in the heap; -1 once taken out. */
+  readonly place: Int32Array;
+  size: number;
+
+  constructor(count: number) {
+    this.area = new Float64Array(count);
+    this.heap = new Int32Array(count);
+    this.place = new Int32Array(count);
+    this.size = count;
+  }
+
+  build(): void {
+    for (let i = 0; i < this.size; i++) this.heap[i] = this.place[i] = i;
+    for (let at = (this.size >> 1) - 1; at >= 0; at--) this.down(at);
+  }
+
+  shift(): void {
+    this.place[this.heap[0]!] = -1;
+    this.size--;
+    this.heap[0] = this.heap[this.size]!;
+    this.place[this.heap[0]!] = 0;
+    this.down(0);
+  }
+
+  move(vertex: number, area: number): void {
+    const grows = area > this.area[vertex]!;
+    this.area[vertex] = area;
+    if (grows) this.down(this.place[vertex]!);
+    else this.up(this.place[vertex]!);
+  }
+
+  private up(at: number): void {
+    const { heap, place, area } = this;
+    const item = heap[at]!;
+    const own = area[item]!;
+    while (at > 0) {
+      const parent = (at - 1) >> 1;
+      const other = heap[parent]!;
+      const value = area[other]!;
+      if (value < own || (value === own && other < item)) break;
+      heap[at] = other;
+      place[other] = at;
+      at = parent;
+    }
+    heap[at] = item;
+    place[item] = at;
+  }
+
+  private down(at: number): void {
+    const { heap, place, area, size } = this;
+    const item = heap[at]!;
+    const own = area[item]!;
+    for (;;) {
+      let child = 2 * at + 1;
+      if (child >= size) break;
+      let other = heap[child]!;
+      let value = area[other]!;
+      if (child + 1 < size) {
+        const right = heap[child + 1]!;
+        const second = area[right]!;
+        if (second < value || (second === value && right < other)) {
+          child++;
+          other = right;
+          value = second;
+        }
+      }
+      if (own < value || (own === value && item < other)) break;
+      heap[at] = other;
+      place[other] = at;
+      at = child;
+    }
+    heap[at] = item;
+    place[item] = at;
+  }
 }

@@ -161,7 +161,8 @@ function fuseOutlines(
     return cover;
   });
   const weights = memberWeights(drawings, outlines, coverage, nodes, settings);
-  const field = voteField(grid, drawings, weights, coverage, settings, candidate, image);
+  const sum = weightedSum(drawings, weights, coverage, nodes);
+  const field = voteField(grid, drawings, weights, coverage, sum, settings, candidate, image);
   const area = countInside(field);
   let rings = contours(grid, field, 0.5);
   let shape: Shape;
@@ -184,7 +185,7 @@ function fuseOutlines(
       drawing.isBox || !single ? boxIou(drawing.box, spans.box) : regionIou(single, spans),
     );
   }
-  return { shape, box: spans.box, iouOf, withoutIou: iousWithout(grid, drawings, weights, coverage) };
+  return { shape, box: spans.box, iouOf, withoutIou: iousWithout(grid, drawings, weights, coverage, sum) };
 }
 
 /**
@@ -235,11 +236,31 @@ function add(field: Float32Array, cover: Float32Array, weight: number): void {
   for (let k = 0; k < field.length; k++) field[k]! += weight * cover[k]!;
 }
 
+/** The outlines' coverages, each times its weight: what votes and scores are both made from. */
+type WeightedSum = { field: Float32Array; weight: number };
+
+function weightedSum(
+  drawings: readonly Drawing[],
+  weights: readonly number[],
+  coverage: readonly Float32Array[],
+  nodes: number,
+): WeightedSum {
+  const field = scratch(drawings.length + 3, nodes);
+  let weight = 0;
+  drawings.forEach(({ isBox }, slot) => {
+    if (isBox) return;
+    add(field, coverage[slot]!, weights[slot]!);
+    weight += weights[slot]!;
+  });
+  return { field, weight };
+}
+
 function voteField(
   grid: Grid,
   drawings: readonly Drawing[],
   weights: readonly number[],
   coverage: readonly Float32Array[],
+  sum: WeightedSum,
   settings: ConsensusSettings,
   candidate: Candidate,
   image: PreparedImage,
@@ -261,7 +282,7 @@ function voteField(
     for (const slot of slots) add(field, coverage[slot]!, 1 / slots.length);
     return field;
   }
-  shareInto(field, drawings, weights, coverage);
+  shareInto(field, drawings, weights, coverage, sum);
   const radius = Math.min(TUNING.blurMax, Math.round(TUNING.blurShare * Math.sqrt(countInside(field))));
   if (radius >= 1) blur(grid, field, radius);
   return field;
@@ -273,17 +294,15 @@ function shareInto(
   drawings: readonly Drawing[],
   weights: readonly number[],
   coverage: readonly Float32Array[],
+  sum: WeightedSum,
 ): void {
-  let outlines = 0;
-  let total = 0;
+  const outlines = sum.weight;
+  for (let k = 0; k < field.length; k++) field[k] = sum.field[k]! / outlines;
+  if (drawings.every(({ isBox }) => !isBox)) return;
+  let total = outlines;
   drawings.forEach(({ isBox }, slot) => {
-    if (!isBox) outlines += weights[slot]!;
-    total += (isBox ? TUNING.boxWeight : 1) * weights[slot]!;
+    if (isBox) total += TUNING.boxWeight * weights[slot]!;
   });
-  drawings.forEach(({ isBox }, slot) => {
-    if (!isBox) add(field, coverage[slot]!, weights[slot]! / outlines);
-  });
-  if (total === outlines) return;
   const factor = scratch(drawings.length + 2, field.length);
   factor.fill(outlines / total);
   drawings.forEach(({ isBox }, slot) => {
@@ -329,14 +348,8 @@ function iousWithout(
   drawings: readonly Drawing[],
   weights: readonly number[],
   coverage: readonly Float32Array[],
+  { field, weight: total }: WeightedSum,
 ): Map<number, number> {
-  const field = scratch(drawings.length + 1, grid.columns * grid.rows);
-  let total = 0;
-  drawings.forEach(({ isBox }, slot) => {
-    if (isBox) return;
-    add(field, coverage[slot]!, weights[slot]!);
-    total += weights[slot]!;
-  });
   const result = new Map<number, number>();
   drawings.forEach((own, slot) => {
     const others = drawings.filter(({ voter }) => voter !== own.voter);

@@ -9,13 +9,8 @@ import { findImage } from "@/db/queries/batches";
 import { mergeImage } from "@/lib/consensus/mergeImage";
 import { requireBatch } from "@/lib/market/access";
 import { audit } from "@/lib/market/audit";
-import {
-  applyScores,
-  labelsOf,
-  recordRun,
-  reliabilityOf,
-  settingsOf,
-} from "@/lib/market/consensus/settleImage";
+import { applyScores, labelsOf, recordRun, settingsOf } from "@/lib/market/consensus/settleImage";
+import { reliabilityOf } from "@/lib/market/consensus/reliabilityOf";
 import { closeBatchEscrow } from "@/lib/market/money/settlement";
 import { expireClaims } from "@/lib/market/work/expireClaims";
 

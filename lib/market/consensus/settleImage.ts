@@ -1,5 +1,5 @@
 import { eq } from "drizzle-orm";
-import { getDb, inTransaction, type Reader, type Tx } from "@/db/client";
+import { getDb, inTransaction, type Tx } from "@/db/client";
 import {
   findBatch,
   findImage,
@@ -8,18 +8,10 @@ import {
   type ClassRow,
   type ImageRow,
 } from "@/db/queries/batches";
-import { listReliabilityLabels } from "@/db/queries/reliability";
 import { listSubmissionsOf, type SubmissionRow } from "@/db/queries/work";
 import { consensusRuns, images, submissions } from "@/db/schema";
 import { mergeImage } from "@/lib/consensus/mergeImage";
-import { estimateReliability } from "@/lib/consensus/reliability";
-import type {
-  AnnotatorScore,
-  ConsensusSettings,
-  ImageConsensus,
-  ImageLabels,
-  Reliability,
-} from "@/lib/consensus/types";
+import type { AnnotatorScore, ConsensusSettings, ImageConsensus, ImageLabels } from "@/lib/consensus/types";
 import { invariant } from "@/lib/errors";
 import { newId } from "@/lib/ids";
 import { enqueue } from "@/lib/jobs/queue";
@@ -27,9 +19,7 @@ import { tellIfAllSettled } from "@/lib/market/batches/batchLetters";
 import { openSplitDispute } from "@/lib/market/disputes/openDispute";
 import { adjustSubmissionPay, releaseForSubmission } from "@/lib/market/money/settlement";
 import { payOf } from "./payOf";
-
-/** How many settled images pass before what the batch tells about its annotators is estimated anew. */
-const RELIABILITY_IMAGES_MAX = 200;
+import { reliabilityOf } from "./reliabilityOf";
 
 /** The submissions of one image as the consensus engine takes them. */
 export function labelsOf(image: ImageRow, list: readonly SubmissionRow[]): ImageLabels {
@@ -50,16 +40,6 @@ export function settingsOf(batch: BatchRow, key: readonly ClassRow[]): Partial<C
     classNames: Object.fromEntries(key.map((row) => [row.id, row.name])),
     boxClasses: key.filter((row) => row.geometry === "box").map((row) => row.id),
   };
-}
-
-/** What the batch's submissions so far tell about its annotators; undefined before two people drew one image. */
-export function reliabilityOf(
-  db: Reader,
-  batch: BatchRow,
-  settings: Partial<ConsensusSettings>,
-): Reliability | undefined {
-  const history = listReliabilityLabels(db, batch.id, RELIABILITY_IMAGES_MAX);
-  return history.length > 0 ? estimateReliability(history, { settings }) : undefined;
 }
 
 /**
