@@ -48,6 +48,15 @@ export const DeskProposal = z.object({
 });
 export type DeskProposal = z.output<typeof DeskProposal>;
 
+/** How the tray chooses among proposals. */
+export const Dealing = z.object({
+  /** Of the proposals that people of the batch keep, the share that they adjust; 0..1. */
+  adjustedShare: z.number().min(0).max(1),
+  /** So many of the best are dealt even where no score promises to save time, until acceptance is measured. */
+  firstFew: z.int().min(0),
+});
+export type Dealing = z.output<typeof Dealing>;
+
 /** Everything that the desk needs to open one image. */
 export const DeskTask = z.object({
   claimId: z.string(),
@@ -58,6 +67,7 @@ export const DeskTask = z.object({
   height: z.int(),
   classes: z.array(DeskClass),
   proposals: z.array(DeskProposal),
+  dealing: Dealing,
   brief: z.object({
     version: z.int(),
     markdown: z.string(),

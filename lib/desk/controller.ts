@@ -751,7 +751,10 @@ export class DeskController {
   private makeScene(before: Scene | undefined): Scene {
     const { document } = this;
     const { task } = this.options;
-    const dealt = before?.document === document ? before.dealt : deal(task.proposals, document, this.classes);
+    const dealt =
+      before?.document === document
+        ? before.dealt
+        : deal(task.proposals, document, this.classes, task.dealing);
     this.dealtIndex = Math.min(this.dealtIndex, Math.max(0, dealt.length - 1));
     return {
       document,

@@ -1,4 +1,4 @@
-import type { DeskDocument, DeskInstance, DeskProposal, DeskClass } from "@/lib/contracts/desk";
+import type { Dealing, DeskClass, DeskDocument, DeskInstance, DeskProposal } from "@/lib/contracts/desk";
 import { boxIou, boxOfShape } from "@/lib/geometry/box";
 
 /**
@@ -13,10 +13,19 @@ export const SECONDS = {
   adjust: 1.35 + 2 * (1.1 + 0.2),
 } as const;
 
-/** A right proposal with this probability of being kept saves drawing; a wrong one costs a look. */
-export function expectedSecondsSaved(score: number, geometry: "box" | "polygon"): number {
+/**
+ * A right proposal with this probability of being kept saves drawing, less the adjusting that a share of them needs; a wrong one
+ * costs a look.
+ */
+export function expectedSecondsSaved(
+  score: number,
+  geometry: "box" | "polygon",
+  { adjustedShare }: Pick<Dealing, "adjustedShare"> = { adjustedShare: 0 },
+): number {
   const drawing = geometry === "box" ? SECONDS.drawBox : SECONDS.drawOutline;
-  return score * (drawing - SECONDS.check) - (1 - score) * SECONDS.check;
+  // Whoever would adjust for longer than drawing takes draws instead.
+  const saving = drawing - SECONDS.check - adjustedShare * Math.min(SECONDS.adjust, drawing);
+  return score * saving - (1 - score) * SECONDS.check;
 }
 
 /** Overlap at which a proposal stands for something that is drawn already. */
@@ -25,14 +34,19 @@ const COVERED_IOU = 0.5;
 /** At most so many wait in the tray: a person looks at few. */
 const DEALT_MAX = 40;
 
+/** Less likely than this, a proposal is not among the first few either. */
+const SCORE_MIN = 0.02;
+
 /**
  * The proposals worth the annotator's time, best first: those that save seconds in expectation, that were
- * not sent away or taken, and that no drawn shape covers. O(proposals x instances).
+ * not sent away or taken, and that no drawn shape covers. Until a batch's acceptance is measured the best
+ * `firstFew` are dealt in any case, those that are gone counted among them. O(proposals x instances).
  */
 export function deal(
   proposals: readonly DeskProposal[],
   document: DeskDocument,
   classes: readonly DeskClass[],
+  dealing: Dealing = { adjustedShare: 0, firstFew: 0 },
 ): DeskProposal[] {
   const gone = new Set([
     ...document.dismissedProposalIds,
@@ -47,15 +61,16 @@ export function deal(
       saved: expectedSecondsSaved(
         proposal.score,
         (proposal.classId ? geometryOf.get(proposal.classId) : undefined) ?? usual,
+        dealing,
       ),
     }))
+    .sort((a, b) => b.saved - a.saved || (a.proposal.id < b.proposal.id ? -1 : 1))
     .filter(
-      ({ proposal, saved }) =>
-        saved > 0 &&
+      ({ proposal, saved }, place) =>
+        (saved > 0 || (place < dealing.firstFew && proposal.score >= SCORE_MIN)) &&
         !gone.has(proposal.id) &&
         !drawn.some((box) => boxIou(box, boxOfShape(proposal.shape)) >= COVERED_IOU),
     )
-    .sort((a, b) => b.saved - a.saved || (a.proposal.id < b.proposal.id ? -1 : 1))
     .slice(0, DEALT_MAX)
     .map(({ proposal }) => proposal);
 }

@@ -22,6 +22,7 @@ export function deskTask(over: Partial<DeskTask> = {}): DeskTask {
     ...SIZE,
     classes: [CAN, FLOAT],
     proposals: [],
+    dealing: { adjustedShare: 0, firstFew: 0 },
     brief: { version: 1, markdown: "", examples: [] },
     pay: { baseCents: 4, boxCents: 2, polygonCents: 6, capCents: 90 },
     medianSeconds: null,

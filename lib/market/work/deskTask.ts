@@ -11,6 +11,7 @@ import { findClaim, findDraft, measureBatch } from "@/db/queries/work";
 import type { Actor } from "@/lib/auth/actor";
 import type { DeskTask } from "@/lib/contracts/desk";
 import { AppError, invariant } from "@/lib/errors";
+import { batchDealing } from "@/lib/market/proposals/batchDealing";
 
 /** Everything the desk needs to open one claimed image. */
 export function deskTask({ actor, claimId }: { actor: Actor; claimId: string }): DeskTask {
@@ -39,6 +40,7 @@ export function imageForDesk(
   const batch = image && findBatch(db, image.batchId);
   invariant(image && batch && image.width && image.height, "a claimed image was checked");
   const brief = findBrief(db, batch.id, briefVersion);
+  const { dealing, calibration } = batchDealing(db, batch.id);
   return {
     batchTitle: batch.title,
     imageName: image.fileName,
@@ -60,8 +62,9 @@ export function imageForDesk(
         proposal.rings.length > 0
           ? { kind: "polygon", rings: proposal.rings }
           : { kind: "box", box: proposal.box },
-      score: proposal.score,
+      score: calibration(proposal.score, proposal.source),
     })),
+    dealing,
     brief: {
       version: brief?.version ?? 0,
       markdown: brief?.markdown ?? "",

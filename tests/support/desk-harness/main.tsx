@@ -60,6 +60,7 @@ const task: DeskTask = {
     { id: "float", number: 4, name: "Net float", colour: "#cc79a7", pattern: "level", geometry: "box" },
   ],
   proposals: [],
+  dealing: { adjustedShare: 0, firstFew: 0 },
   brief: {
     version: 2,
     markdown: "Outline **every** piece of litter.\n\n- Leave weed and pebbles.",

@@ -107,6 +107,22 @@ describe("the tray's order", () => {
     const drawn = { ...nothing, instances: [instance("a", square(2, 2, 50))] };
     expect(deal([proposal("same", square(0, 0, 50))], drawn, [CAN])).toEqual([]);
   });
+  it("deals the best few of any score until acceptance is measured, and no new ones for those sent away", () => {
+    const weak = [0.09, 0.08, 0.07, 0.06, 0.001].map((score, n) =>
+      proposal(`weak${n}`, square(100 * n, 0, 50), { score }),
+    );
+    const dealing = { adjustedShare: 0.25, firstFew: 3 };
+    const ids = (dismissedProposalIds: string[]) =>
+      deal(weak, { ...nothing, dismissedProposalIds }, [CAN], dealing).map(({ id }) => id);
+    expect(ids([])).toEqual(["weak0", "weak1", "weak2"]);
+    expect(ids(["weak1"])).toEqual(["weak0", "weak2"]);
+    expect(deal(weak, nothing, [CAN], { ...dealing, firstFew: 0 })).toEqual([]);
+    expect(deal(weak.slice(4), nothing, [CAN], dealing)).toEqual([]);
+  });
+  it("asks for a likelier proposal where many need adjusting", () => {
+    const saved = (adjustedShare: number) => expectedSecondsSaved(0.3, "polygon", { adjustedShare });
+    expect(saved(0.8)).toBeLessThan(saved(0.1));
+  });
 });
 
 describe("the keys", () => {
