@@ -19,6 +19,10 @@ const EnvSchema = z.object({
   MAIL_FROM: z.string().default("Merestone <post@merestone.example>"),
   /** "1" in the demo: shows the local stand-ins' links (mailbox) and the demo accounts. */
   MERESTONE_DEMO: z.enum(["0", "1"]).default("0"),
+  /** Handed-in work is paid within so many hours, even where its consensus still waits for people. */
+  SETTLE_WITHIN_HOURS: z.coerce.number().min(1).default(72),
+  /** From so many cents at stake a dispute is decided by two admins: one proposes, another confirms. */
+  DISPUTE_TWO_ADMINS_CENTS: z.coerce.number().int().min(1).default(500),
   LOG_LEVEL: z.enum(["debug", "info", "warn", "error", "silent"]).default("info"),
 });
 

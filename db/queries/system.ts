@@ -1,4 +1,4 @@
-import { and, desc, eq, lt, sql, type SQL } from "drizzle-orm";
+import { and, desc, eq, inArray, lt, sql, type SQL } from "drizzle-orm";
 import type { Reader } from "@/db/client";
 import { auditLog, images, jobs, releases, users } from "@/db/schema";
 
@@ -20,7 +20,7 @@ export function forgetOldSweeps(db: Reader, nowMs: number): void {
   db.delete(jobs)
     .where(
       and(
-        eq(jobs.kind, "claims.sweep"),
+        inArray(jobs.kind, ["claims.sweep", "payouts.schedule", "consensus.overdue"]),
         eq(jobs.status, "done"),
         lt(jobs.finishedAtMs, nowMs - SWEEPS_KEPT_MS),
       ),

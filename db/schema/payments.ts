@@ -1,4 +1,4 @@
-import { index, integer, sqliteTable, text } from "drizzle-orm/sqlite-core";
+import { index, integer, sqliteTable, text, uniqueIndex } from "drizzle-orm/sqlite-core";
 import { teams, users } from "./people";
 
 /** Card payments into a team's wallet. The row is written before Stripe is called. */
@@ -61,10 +61,34 @@ export const payouts = sqliteTable(
     stripeTransferId: text("stripe_transfer_id").unique(),
     stripePayoutId: text("stripe_payout_id").unique(),
     failure: text("failure"),
+    /** The due time of the schedule that asked for it; null when the annotator asked. One payout a due time. */
+    scheduledForMs: integer("scheduled_for_ms"),
     createdAtMs: integer("created_at_ms").notNull(),
     paidAtMs: integer("paid_at_ms"),
   },
-  (t) => [index("payouts_annotator").on(t.annotatorId, t.createdAtMs)],
+  (t) => [
+    index("payouts_annotator").on(t.annotatorId, t.createdAtMs),
+    uniqueIndex("payouts_scheduled").on(t.annotatorId, t.scheduledForMs),
+  ],
+);
+
+/** When an annotator wants to be paid without asking. No row is the same as "never". */
+export const payoutSchedules = sqliteTable(
+  "payout_schedules",
+  {
+    annotatorId: text("annotator_id")
+      .primaryKey()
+      .references(() => users.id),
+    rhythm: text("rhythm", { enum: ["never", "weekly", "monthly"] }).notNull(),
+    /** ISO 8601 weekday, 1 Monday to 7 Sunday; used by the weekly rhythm. */
+    weekday: integer("weekday").notNull(),
+    /** Less than this waits for the next time. */
+    leastCents: integer("least_cents").notNull(),
+    /** When the next payout is due; null for "never". */
+    dueAtMs: integer("due_at_ms"),
+    changedAtMs: integer("changed_at_ms").notNull(),
+  },
+  (t) => [index("payout_schedules_due").on(t.dueAtMs)],
 );
 
 /** Signed events of Stripe, each kept once. */

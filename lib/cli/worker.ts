@@ -13,6 +13,7 @@ import { ensureBucket } from "@/lib/services/store";
 const LANES = 3;
 const IDLE_MS = 150;
 const SWEEP_EVERY_MS = 15_000;
+const DUE_EVERY_MS = 60_000;
 
 let stopping = false;
 process.on("SIGTERM", () => (stopping = true));
@@ -53,8 +54,14 @@ async function lane(workerId: string): Promise<void> {
 
 async function sweepRegularly(): Promise<void> {
   let nextReconcileMs = nowMs() + 60_000;
+  let nextDueMs = 0;
   while (!stopping) {
     enqueue(getDb(), { kind: "claims.sweep", payload: {}, uniqueKey: "claims.sweep", nowMs: nowMs() });
+    if (nowMs() >= nextDueMs) {
+      for (const kind of ["payouts.schedule", "consensus.overdue"] as const)
+        enqueue(getDb(), { kind, payload: {}, uniqueKey: kind, nowMs: nowMs() });
+      nextDueMs = nowMs() + DUE_EVERY_MS;
+    }
     if (nowMs() >= nextReconcileMs) {
       enqueue(getDb(), {
         kind: "ledger.reconcile",

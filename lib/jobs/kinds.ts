@@ -7,6 +7,8 @@ export type JobPayloads = {
   "batch.train": { batchId: string };
   "release.build": { releaseId: string };
   "claims.sweep": Record<string, never>;
+  "payouts.schedule": Record<string, never>;
+  "consensus.overdue": Record<string, never>;
   "payout.run": { payoutId: string };
   "refund.run": { refundId: string };
   "stripe.event": { eventId: string };

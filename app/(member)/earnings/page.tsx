@@ -14,7 +14,9 @@ import { When } from "@/components/ui/When";
 import { requirePageActor } from "@/lib/auth/page";
 import { refreshOnboarding } from "@/lib/market/money/payouts";
 import { earnings } from "@/lib/market/money/queries";
+import { DEFAULT_SCHEDULE, findPayoutSchedule } from "@/lib/market/money/payoutSchedule";
 import { OnboardButton, PayoutButton } from "./_components/PayoutForms";
+import { ScheduleForm } from "./_components/ScheduleForm";
 
 export const metadata: Metadata = { title: "Earnings" };
 
@@ -29,6 +31,7 @@ export default async function EarningsPage({ searchParams }: Props) {
   const person = findUser(db, actor.id);
   const money = earnings(db, actor.id);
   const payouts = listPayoutsOf(db, actor.id);
+  const schedule = findPayoutSchedule(db, actor.id) ?? DEFAULT_SCHEDULE;
   const paidCents = payouts
     .filter((payout) => payout.status === "paid")
     .reduce((sum, payout) => sum + payout.amountCents, 0);
@@ -37,7 +40,7 @@ export default async function EarningsPage({ searchParams }: Props) {
     <>
       <PageHeader
         title="Earnings"
-        lead="Settled pay is yours at once; ask for it whenever you like."
+        lead="Settled pay is yours at once. Ask for it whenever you like, or let it come by itself."
         actions={
           person?.payoutsEnabled ? (
             <PayoutButton payableCents={money.payableCents} />
@@ -79,13 +82,33 @@ export default async function EarningsPage({ searchParams }: Props) {
             <Money cents={money.months.find((row) => row.month === thisMonth)?.cents ?? 0} />
           </Stat>
         </Stats>
+        <Sheet
+          title="Payout by itself"
+          id="schedule"
+          lead={
+            schedule.dueAtMs === null ? (
+              "Off: money goes out when you ask for it."
+            ) : (
+              <>
+                Next on <When at={schedule.dueAtMs} />, if there is <Money cents={schedule.leastCents} /> or
+                more.
+              </>
+            )
+          }
+        >
+          <ScheduleForm
+            rhythm={schedule.rhythm}
+            weekday={schedule.weekday}
+            leastCents={schedule.leastCents}
+          />
+        </Sheet>
         <Sheet title="Payouts">
           {payouts.length === 0 ? (
             <p className="text-muted">No payout yet.</p>
           ) : (
             <Table caption="Payouts">
               <TableHead>
-                <HeadCell>Asked for</HeadCell>
+                <HeadCell>Begun</HeadCell>
                 <HeadCell>State</HeadCell>
                 <HeadCell align="end">Amount</HeadCell>
               </TableHead>
@@ -94,6 +117,9 @@ export default async function EarningsPage({ searchParams }: Props) {
                   <Row key={payout.id}>
                     <RowHead className="font-normal">
                       <When at={payout.createdAtMs} />
+                      {payout.scheduledForMs === null ? null : (
+                        <span className="text-muted block text-sm">by itself</span>
+                      )}
                     </RowHead>
                     <Cell label="State">
                       <PayoutMark status={payout.status} />

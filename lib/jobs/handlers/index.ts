@@ -10,6 +10,8 @@ import { stripeEventJob } from "./stripeEvent";
 import { sweepClaimsJob } from "./sweepClaims";
 import { trainBatchJob } from "./trainBatch";
 import { payoutRunJob } from "./payoutRun";
+import { payoutsScheduleJob } from "./payoutsSchedule";
+import { settleOverdueJob } from "./settleOverdue";
 
 export type JobContext = {
   /** The same over all attempts of the job. */
@@ -33,6 +35,8 @@ export const HANDLERS: { [K in JobKind]: Handler<K> } = {
   "batch.train": trainBatchJob,
   "release.build": releaseBuildJob,
   "claims.sweep": sweepClaimsJob,
+  "payouts.schedule": payoutsScheduleJob,
+  "consensus.overdue": settleOverdueJob,
   "payout.run": payoutRunJob,
   "refund.run": refundRunJob,
   "stripe.event": stripeEventJob,

@@ -176,21 +176,25 @@ type Scored = {
 };
 
 /**
- * Writes score and pay of each submission. The first score pays; a later one (a decided dispute) moves the
- * difference by a posting linked to the first. Returns the cents by which pay rose in sum.
+ * Writes score and pay of each submission. The first score pays; a later one moves the difference by a posting
+ * linked to the first. Only a decision lowers a pay that was posted: a consensus that follows pay by time
+ * (settleOverdue) raises it or leaves it. Returns the cents by which pay rose in sum.
  */
 export function applyScores(tx: Tx, { batch, key, list, scores, runId, disputeId, nowMs }: Scored): number {
   let movedCents = 0;
-  for (const { submission, score, payCents, feeCents } of paysOf({ batch, key, list, scores })) {
+  for (const due of paysOf({ batch, key, list, scores })) {
+    const { submission, score } = due;
+    const isKept = disputeId === null && due.payCents < (submission.payCents ?? 0);
+    const payCents = isKept ? (submission.payCents ?? 0) : due.payCents;
+    const feeCents = isKept ? (submission.feeCents ?? 0) : due.feeCents;
     const parties = { submissionId: submission.id, batchId: batch.id, annotatorId: submission.annotatorId };
     if (submission.payCents === null) {
       if (payCents > 0) releaseForSubmission(tx, { ...parties, payCents, feeCents, nowMs });
       movedCents += payCents;
-    } else if (submission.payCents !== payCents) {
-      invariant(disputeId, "pay that was posted changes by a decision only");
+    } else if (submission.payCents !== payCents || submission.feeCents !== feeCents) {
       adjustSubmissionPay(tx, {
         ...parties,
-        disputeId,
+        cause: disputeId ?? runId,
         oldPayCents: submission.payCents,
         oldFeeCents: submission.feeCents ?? 0,
         newPayCents: payCents,

@@ -53,28 +53,36 @@ export function requestPayout({ actor, nowMs, amountCents: wanted }: Request): {
       );
     if (amountCents > payableCents)
       throw new AppError("conflict", `There is ${formatUsd(payableCents)} to be paid out.`);
-    const payoutId = newId("out");
-    tx.insert(payouts)
-      .values({ id: payoutId, annotatorId: actor.id, amountCents, status: "queued", createdAtMs: nowMs })
-      .run();
-    insertPosting(tx, {
-      source: "payout",
-      sourceId: payoutId,
-      kind: "start",
-      posting: payoutStartPosting(actor.id, amountCents),
-      memo: "Payout",
-      nowMs,
-    });
-    enqueuePayout(tx, payoutId, actor.id, nowMs);
-    audit(tx, {
-      actorId: actor.id,
-      action: "payout.requested",
-      subject: payoutId,
-      detail: { amountCents },
-      nowMs,
-    });
+    const payoutId = beginPayout(tx, { annotatorId: actor.id, amountCents, scheduledForMs: null, nowMs });
     return { payoutId, amountCents };
   });
+}
+
+type Begin = { annotatorId: string; amountCents: number; scheduledForMs: number | null; nowMs: number };
+
+/** Writes intent, posting and job of a payout whose amount was checked, in the caller's transaction. */
+export function beginPayout(tx: Tx, { annotatorId, amountCents, scheduledForMs, nowMs }: Begin): string {
+  const payoutId = newId("out");
+  tx.insert(payouts)
+    .values({ id: payoutId, annotatorId, amountCents, status: "queued", scheduledForMs, createdAtMs: nowMs })
+    .run();
+  insertPosting(tx, {
+    source: "payout",
+    sourceId: payoutId,
+    kind: "start",
+    posting: payoutStartPosting(annotatorId, amountCents),
+    memo: "Payout",
+    nowMs,
+  });
+  enqueuePayout(tx, payoutId, annotatorId, nowMs);
+  audit(tx, {
+    actorId: scheduledForMs === null ? annotatorId : null,
+    action: scheduledForMs === null ? "payout.requested" : "payout.scheduled",
+    subject: payoutId,
+    detail: { amountCents },
+    nowMs,
+  });
+  return payoutId;
 }
 
 function enqueuePayout(tx: Tx, payoutId: string, annotatorId: string, nowMs: number, attempt = 1): void {
@@ -187,6 +195,15 @@ export function noteTransfer(
     .set({ stripeTransferId: transferId, status: "sent" })
     .where(eq(payouts.id, payout.id))
     .run();
+  tell(
+    tx,
+    payout,
+    "Your payout is on its way",
+    [
+      `${formatUsd(payout.amountCents)} has left for your bank account. It usually arrives within a few working days.`,
+    ],
+    nowMs,
+  );
 }
 
 const startOf = (tx: Tx, payoutId: string) =>

@@ -57,7 +57,8 @@ type Adjust = {
   submissionId: string;
   batchId: string;
   annotatorId: string;
-  disputeId: string;
+  /** Id of the dispute, or of the consensus run, that changes the pay. */
+  cause: string;
   oldPayCents: number;
   oldFeeCents: number;
   newPayCents: number;
@@ -66,11 +67,12 @@ type Adjust = {
 };
 
 /**
- * Sets right the pay of a submission after a decision, by a posting linked to the first. Once a dispute. After
+ * Sets right the pay of a submission after a decision, or after a consensus that followed pay by time, by a
+ * posting linked to the first. Once a cause. After
  * the batch is closed the difference moves between the annotator and the team's wallet.
  */
 export function adjustSubmissionPay(tx: Tx, change: Adjust): void {
-  const { submissionId, batchId, annotatorId, disputeId, nowMs } = change;
+  const { submissionId, batchId, annotatorId, cause, nowMs } = change;
   const first = findPosting(tx, { source: "submission", sourceId: submissionId, kind: "release" });
   invariant(first || change.oldPayCents === 0, "pay that is corrected was posted");
   const payDeltaCents = change.newPayCents - change.oldPayCents;
@@ -80,7 +82,7 @@ export function adjustSubmissionPay(tx: Tx, change: Adjust): void {
   insertPosting(tx, {
     source: "submission",
     sourceId: submissionId,
-    kind: `adjust:${disputeId}`,
+    kind: `adjust:${cause}`,
     posting: adjustmentPosting({
       batchId,
       annotatorId,
@@ -96,7 +98,7 @@ export function adjustSubmissionPay(tx: Tx, change: Adjust): void {
       centsIn(entries, accountId("payable", annotatorId)) +
         centsIn(entries, accountId("debt", annotatorId)) ===
         payDeltaCents && centsIn(entries, accountId("fee")) === feeDeltaCents,
-    memo: "Pay corrected by a decision",
+    memo: cause.startsWith("run_") ? "Pay raised by a later result" : "Pay corrected by a decision",
     linkedTo: first?.id ?? null,
     nowMs,
   });

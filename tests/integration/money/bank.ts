@@ -143,8 +143,7 @@ export class Bank {
   }
 
   /** Pay of a batch that is not kept as a row: only its money matters here. */
-  earn(annotator: Actor, teamId: string, payCents: number): void {
-    const batchId = `bat_of_${annotator.id}`;
+  earn(annotator: Actor, teamId: string, payCents: number, batchId = `bat_of_${annotator.id}`): void {
     inTransaction(this.db, (tx) => {
       const cause = { source: "batch", sourceId: batchId, memo: "A test", nowMs: Date.now() };
       insertPosting(tx, { ...cause, kind: "fund", posting: fundPosting(teamId, batchId, payCents) });

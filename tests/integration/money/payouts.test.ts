@@ -49,7 +49,10 @@ describe("a payout", () => {
     expect(await bank.quiet()).toEqual([]);
     expect(rows()).toMatchObject([{ status: "paid", amountCents: 2500 }]);
     expect(transfers().map((row) => row.amount)).toEqual([2500]);
-    expect(letters(bank.db, "payout")).toMatchObject([{ subject: "Your payout arrived" }]);
+    expect(letters(bank.db, "payout")).toMatchObject([
+      { subject: "Your payout is on its way" },
+      { subject: "Your payout arrived" },
+    ]);
     expect(earnings(bank.db, annotator.id)).toMatchObject({ payableCents: 0, transitCents: 0, debtCents: 0 });
     await expectAgreement();
   });
@@ -186,7 +189,10 @@ describe("a payout that does not arrive", () => {
     expect(rows()).toMatchObject([{ status: "failed" }]);
     expect(rows()[0]?.failure).not.toBe("");
     expect(payable()).toBe(700);
-    expect(letters(bank.db, "payout")).toMatchObject([{ subject: "Your payout came back" }]);
+    expect(letters(bank.db, "payout")).toMatchObject([
+      { subject: "Your payout is on its way" },
+      { subject: "Your payout came back" },
+    ]);
     await expectAgreement();
   });
 

@@ -58,7 +58,7 @@ function correct(newPayCents: number, newFeeCents: number, disputeId = "dsp_1"):
       submissionId: first,
       batchId: market.batchId,
       annotatorId: annotator.id,
-      disputeId,
+      cause: disputeId,
       oldPayCents: row?.payCents ?? 0,
       oldFeeCents: row?.feeCents ?? 0,
       newPayCents,
