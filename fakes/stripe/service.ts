@@ -35,6 +35,8 @@ export type StripeOptions = Partial<Settings> & {
   /** How events are handed over, for tests without a socket. */
   deliver?: Deliver | undefined;
   random?: (() => number) | undefined;
+  /** Whether time passes by `tick` alone, for histories that must replay exactly. */
+  isManual?: boolean | undefined;
 };
 
 export type StripeService = {
@@ -85,8 +87,9 @@ export function createStripe(options: StripeOptions): StripeService {
     status: number;
   }[] = [];
   const inProgress = new Set<string>();
-  const timer = setInterval(() => void tick().catch((error: unknown) => console.error(error)), TICK_MS);
-  timer.unref();
+  const timer = options.isManual
+    ? undefined
+    : setInterval(() => void tick().catch((error: unknown) => console.error(error)), TICK_MS).unref();
 
   return {
     core,

@@ -2,10 +2,10 @@ import { randomUUID } from "node:crypto";
 import { setTimeout as sleep } from "node:timers/promises";
 import { getDb } from "@/db/client";
 import { nowMs } from "@/lib/clock";
-import { HANDLERS, type JobContext } from "@/lib/jobs/handlers";
+import { HANDLERS } from "@/lib/jobs/handlers";
 import { stopThreads } from "@/lib/jobs/pool";
-import { enqueue, failJob, finishJob, reportProgress, takeJob, type JobRow } from "@/lib/jobs/queue";
-import { JobRefused } from "@/lib/jobs/refused";
+import { enqueue, reportProgress, takeJob, type JobRow } from "@/lib/jobs/queue";
+import { runJob } from "@/lib/jobs/runJob";
 import { log } from "@/lib/log";
 import { ensureBucket } from "@/lib/services/store";
 
@@ -19,35 +19,17 @@ let stopping = false;
 process.on("SIGTERM", () => (stopping = true));
 process.on("SIGINT", () => (stopping = true));
 
-async function runJob(job: JobRow): Promise<void> {
+async function run(job: JobRow): Promise<void> {
   const db = getDb();
-  const context: JobContext = {
-    jobId: job.id,
-    nowMs,
-    progress: (share, note) => void reportProgress(db, job, share, note ?? null, nowMs()),
-  };
   // A long handler that reports nothing still lives: its lease is extended while it runs.
   const pulse = setInterval(() => reportProgress(db, job, job.progress, job.progressNote, nowMs()), 20_000);
-  try {
-    const handler = HANDLERS[job.kind as keyof typeof HANDLERS] as (
-      payload: unknown,
-      context: JobContext,
-    ) => Promise<void>;
-    if (!handler) throw new JobRefused(`no handler for ${job.kind}`);
-    await handler(job.payload, context);
-    finishJob(db, job, nowMs());
-  } catch (error) {
-    log().warn({ err: error, job: job.id, kind: job.kind, attempt: job.attempts }, "job failed");
-    failJob(db, job, error, nowMs(), !(error instanceof JobRefused));
-  } finally {
-    clearInterval(pulse);
-  }
+  await runJob(db, job, HANDLERS, nowMs).finally(() => clearInterval(pulse));
 }
 
 async function lane(workerId: string): Promise<void> {
   while (!stopping) {
     const job = takeJob(getDb(), workerId, nowMs());
-    if (job) await runJob(job);
+    if (job) await run(job);
     else await sleep(IDLE_MS);
   }
 }
