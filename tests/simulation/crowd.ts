@@ -14,6 +14,8 @@ export type Annotator = {
   held: Held[];
   /** Handed in, and the answer came. */
   done: string[];
+  /** Batches that had no picture for this person, and the step at which they said so. */
+  bored: Map<string, number>;
   isOnboarded: boolean;
 };
 

@@ -1,3 +1,4 @@
+import { createHash } from "node:crypto";
 import type { Actor } from "@/lib/auth/actor";
 import type { DeskDocument } from "@/lib/contracts/desk";
 import { Acknowledged, audit, sha256 } from "./auditor";
@@ -20,8 +21,10 @@ const CROWD: readonly Kind[] = [
   "copier",
   "slow",
 ];
-const OPEN_BATCHES_MAX = 4;
+const OPEN_BATCHES_MAX = 6;
 const AUDIT_EVERY = 1000;
+/** Steps for which a person does not ask again a batch that had nothing. */
+const BORED_STEPS = 80;
 /** A call to the outside may last long enough for others to act, and for others during those. */
 const DEPTH_MAX = 2;
 
@@ -47,6 +50,8 @@ export type Report = {
   /** Of operations, by name: answered, refused, unanswered because a hosted service was not there. */
   operations: Record<string, [number, number, number]>;
   violations: string[];
+  /** SHA-256 of all that was asked and answered: the same for every replay. */
+  history: string;
   /** The step at which a violation was seen. */
   at: number;
   seconds: number;
@@ -70,6 +75,7 @@ export class Episode {
   private readonly seen = new Map<string, DeskDocument[]>();
   /** Sent and not answered: the annotator's browser sends it again. */
   private unsure: { annotator: Annotator; held: Held; document: DeskDocument }[] = [];
+  private readonly history = createHash("sha256");
   private depth = 0;
   private due = 0;
   private step = 0;
@@ -100,11 +106,11 @@ export class Episode {
     const startedMs = performance.now();
     const violations: string[] = [];
     try {
-      await this.product.start();
+      this.product.start();
       await this.settleIn();
       const deaths = this.chooseDeaths();
       for (this.step = 1; this.step <= this.plan.steps; this.step += 1) {
-        if (deaths.has(this.step)) this.product.arm(this.dice.int(1, 16));
+        if (deaths.has(this.step)) await this.product.doom(this.dice.int(1, 16));
         await this.turn();
         if (!this.product.isAlive) await this.recover();
         if (this.broken !== undefined) throw this.broken;
@@ -139,6 +145,7 @@ export class Episode {
       faults: { ...this.bank.faults, duplicated: this.bank.duplicated, interleaved: this.interleaved },
       operations: this.operations,
       violations,
+      history: this.history.digest("hex").slice(0, 16),
       at: this.step,
       seconds: (performance.now() - startedMs) / 1000,
     };
@@ -161,7 +168,7 @@ export class Episode {
       this.admins.push(await this.product.get("person", { role: "admin", name }));
     for (const [index, kind] of CROWD.entries()) {
       const actor = await this.product.get("person", { role: "annotator", name: `${kind}${index}` });
-      this.annotators.push({ actor, kind, held: [], done: [], isOnboarded: false });
+      this.annotators.push({ actor, kind, held: [], done: [], bored: new Map(), isOnboarded: false });
     }
     for (const { actor, teamId } of this.requesters)
       await this.ask("topUp", { actor, teamId, amountCents: 60_000 });
@@ -212,10 +219,13 @@ export class Episode {
     const counts = (this.operations[operation] ??= [0, 0, 0]);
     try {
       const reply = await this.product.ask(operation, input);
+      const said = reply.ok ? JSON.stringify(reply.value) : (reply.message.split("\n")[0] ?? "");
+      this.history.update(`${this.bank.nowMs()} ${operation} ${said}\n`);
       counts[reply.ok ? 0 : reply.why === "refused" ? 1 : 2] += 1;
       return reply;
     } catch (error) {
       if (!(error instanceof Died)) throw error;
+      this.history.update(`${operation} died\n`);
       return undefined;
     }
   }
@@ -227,7 +237,7 @@ export class Episode {
       work: 10,
       job: 0.5 + Math.min(14, this.due),
       letter: Math.min(8, this.bank.post.length),
-      requester: 1.2,
+      requester: 2,
       pay: 0.5,
       admin: 0.7,
       money: 0.8,
@@ -403,9 +413,15 @@ export class Episode {
       return this.contest(annotator);
     const held = dice.pick(annotator.held);
     if (!held || (annotator.held.length < 2 && dice.chance(0.15))) {
-      const batch = dice.pick(this.batches.filter(({ status }) => status === "open"));
+      const { bored } = annotator;
+      const batch = dice.pick(
+        this.batches.filter(
+          ({ status, batchId }) => status === "open" && (bored.get(batchId) ?? 0) < this.step - BORED_STEPS,
+        ),
+      );
       if (!batch) return;
       const reply = await this.ask("claim", { actor, batchId: batch.batchId });
+      if (reply && !reply.ok) bored.set(batch.batchId, this.step);
       if (!reply?.ok) return;
       const { claimId, imageId } = reply.value;
       if (!annotator.held.some((row) => row.claimId === claimId))

@@ -1,5 +1,6 @@
 import { fork, type ChildProcess } from "node:child_process";
 import type { Input, Operations, Value } from "./operations";
+import { ProductCore } from "./productCore";
 import type { FromProduct, Outcome, ToProduct, WireAnswer, WireCall } from "./protocol";
 import type { Random } from "./random";
 
@@ -26,16 +27,21 @@ type Options = {
   answer: (call: WireCall) => Promise<WireAnswer | null>;
 };
 
-/** The product's process, as the driver sees it: it may be asked, it may die, and it can be started again. */
+/** Where the product runs at the moment, and how it is spoken to. */
+type Host = { tell: (message: ToProduct) => void; stop: () => Promise<void> };
+
+/**
+ * The product as the driver sees it. It runs inside this process, where a step costs least, until it is to die:
+ * then it moves to a process of its own on the same file, dies there by SIGKILL, and comes back.
+ */
 export class Product {
-  private child: ChildProcess | undefined;
+  private host: Host | undefined;
   private readonly asked = new Map<
     number,
     { resolve: (done: Outcome) => void; reject: (error: Error) => void }
   >();
   private readonly answering = new Set<Promise<void>>();
   private count = 0;
-  private killAt: number | undefined;
   private gone: Promise<void> = Promise.resolve();
   deaths = 0;
   calls = 0;
@@ -43,81 +49,96 @@ export class Product {
   constructor(private readonly options: Options) {}
 
   get isAlive(): boolean {
-    return this.child !== undefined;
+    return this.host !== undefined;
   }
 
-  async start(): Promise<void> {
+  /** Begins inside this process. */
+  start(): void {
+    const { file, secretKey } = this.options;
+    const core: ProductCore = new ProductCore({
+      file,
+      secretKey,
+      say: (message) => this.hear(host, message),
+      point: () => undefined,
+    });
+    const host: Host = {
+      tell: (message) => void core.take(message),
+      stop: async () => core.close(),
+    };
+    this.host = host;
+  }
+
+  /** Moves to a process that dies at the n-th commit or call from now. Nothing may be under way. */
+  async doom(points: number): Promise<void> {
+    await this.host?.stop();
+    this.host = undefined;
     const { program, file, secretKey, webhookSecret } = this.options;
-    const child = fork(program, [file, secretKey], {
-      execArgv: ["--no-warnings", ...(process.env.SIM_PROF ? ["--cpu-prof", `--cpu-prof-dir=${process.env.SIM_PROF}`] : [])],
-      env: { ...process.env, LOG_LEVEL: "silent", STRIPE_WEBHOOK_SECRET: webhookSecret, NODE_ENV: "test" },
+    const child = fork(program, [file, secretKey, String(points)], {
+      execArgv: ["--no-warnings"],
+      env: { ...process.env, LOG_LEVEL: "silent", STRIPE_WEBHOOK_SECRET: webhookSecret },
       stdio: ["ignore", "inherit", "inherit", "ipc"],
     });
-    this.child = child;
-    const exited = new Promise<void>((resolve) => child.once("exit", () => resolve()));
-    const ready = new Promise<void>((resolve, reject) => {
+    this.gone = new Promise((resolve) => child.once("exit", () => resolve()));
+    const host: Host = {
+      tell: (message) => void (child.connected && child.send(message, () => undefined)),
+      stop: async () => {
+        child.disconnect();
+        await this.gone;
+      },
+    };
+    await this.listen(child, host);
+    this.host = host;
+  }
+
+  private listen(child: ChildProcess, host: Host): Promise<void> {
+    return new Promise((resolve, reject) => {
       child.once("error", reject);
       child.on("message", (message: FromProduct) => {
         if (message.what === "ready") resolve();
-        else if (message.what === "call") this.relay(child, message.id, message.call);
-        else this.settle(message.id, message.outcome, message.wrong);
+        else this.hear(host, message);
       });
-      // Messages that were written before a death are read before the channel closes.
+      // What was said before a death is heard before the channel closes.
       child.once("disconnect", () => {
-        if (this.child === child) this.child = undefined;
-        reject(new Died("the process died while it started"));
+        reject(new Error("the product's process did not start"));
+        if (this.host !== host) return;
+        this.host = undefined;
         const asked = [...this.asked.values()];
         this.asked.clear();
         for (const { reject: refuse } of asked) refuse(new Died("the process died"));
       });
     });
-    this.gone = exited;
-    await ready;
   }
 
-  /** Lets the process die at the n-th commit or call from the next message on. */
-  arm(points: number): void {
-    this.killAt = points;
+  private hear(host: Host, message: FromProduct): void {
+    if (message.what === "call") return this.relay(host, message.id, message.call);
+    if (message.what === "ready") return;
+    const waiting = this.asked.get(message.id);
+    this.asked.delete(message.id);
+    if (message.wrong !== null) waiting?.reject(new Violation(message.wrong));
+    else waiting?.resolve(message.outcome);
   }
 
-  private moment(): Pick<ToProduct, "nowMs" | "entropy" | "killAt"> {
-    const { killAt } = this;
-    this.killAt = undefined;
-    return {
-      nowMs: this.options.nowMs(),
-      entropy: this.options.dice.fork(),
-      ...(killAt !== undefined && { killAt }),
-    };
-  }
-
-  private tell(child: ChildProcess, message: ToProduct): void {
-    if (child.connected) child.send(message, () => undefined);
-  }
-
-  private settle(id: number, outcome: Outcome, wrong: string | null): void {
-    const waiting = this.asked.get(id);
-    this.asked.delete(id);
-    if (wrong !== null) waiting?.reject(new Violation(wrong));
-    else waiting?.resolve(outcome);
-  }
-
-  private relay(child: ChildProcess, id: number, call: WireCall): void {
+  private relay(host: Host, id: number, call: WireCall): void {
     this.calls += 1;
     const done = this.options.answer(call).then((answer) => {
-      if (this.child === child) this.tell(child, { what: "answer", id, answer, ...this.moment() });
+      if (this.host === host) host.tell({ what: "answer", id, answer, ...this.moment() });
     });
     this.answering.add(done);
     void done.finally(() => this.answering.delete(done));
   }
 
+  private moment(): Pick<ToProduct, "nowMs" | "entropy"> {
+    return { nowMs: this.options.nowMs(), entropy: this.options.dice.fork() };
+  }
+
   /** Asks for one operation. Throws Died when the process does not live to answer. */
   async ask<K extends keyof Operations>(operation: K, input: Input<K>): Promise<Reply<Value<K>>> {
-    const { child } = this;
-    if (!child) throw new Died("the process is dead");
+    const { host } = this;
+    if (!host) throw new Died("the process is dead");
     const id = (this.count += 1);
     const outcome = await new Promise<Outcome>((resolve, reject) => {
       this.asked.set(id, { resolve, reject });
-      this.tell(child, { what: "do", id, operation, input, ...this.moment() });
+      host.tell({ what: "do", id, operation, input, ...this.moment() });
     });
     if (!outcome.ok && outcome.why === "bug") throw new Violation(`${operation}: ${outcome.message}`);
     return outcome as Reply<Value<K>>;
@@ -135,14 +156,12 @@ export class Product {
     this.deaths += 1;
     await this.gone;
     while (this.answering.size > 0) await Promise.allSettled(this.answering);
-    this.killAt = undefined;
-    await this.start();
+    this.start();
   }
 
   async stop(): Promise<void> {
-    const { child } = this;
-    this.child = undefined;
-    child?.disconnect();
-    await this.gone;
+    const { host } = this;
+    this.host = undefined;
+    await host?.stop();
   }
 }

@@ -4,8 +4,6 @@ import type { Entropy } from "./random";
 type Moment = {
   nowMs: number;
   entropy: Entropy;
-  /** Set to have the process kill itself at the n-th point from here. */
-  killAt?: number | undefined;
 };
 
 export type ToProduct = Moment &

@@ -4,6 +4,7 @@ import path from "node:path";
 import { parseArgs } from "node:util";
 import { build } from "vite";
 import { migrateDatabase, openDatabase } from "@/db/client";
+import { WEBHOOK_SECRET } from "./bank";
 import { Episode, type Report } from "./episode";
 
 const { values } = parseArgs({
@@ -44,17 +45,31 @@ async function buildProgram(folder: string): Promise<string> {
 }
 
 const line = (report: Report): string => {
-  const { seed, steps, kills, days, submissions, payouts, payoutCents, topUpCents, calls, faults, seconds } =
-    report;
+  const {
+    seed,
+    steps,
+    kills,
+    days,
+    submissions,
+    payouts,
+    payoutCents,
+    topUpCents,
+    calls,
+    faults,
+    seconds,
+    history,
+  } = report;
   const struck = Object.entries(faults).map(([name, count]) => `${name} ${count}`);
   return (
     `seed ${seed}: ${steps} steps over ${days.toFixed(0)} days, ${kills} kills, ${submissions} submissions, ` +
     `${payouts} payouts of $${(payoutCents / 100).toFixed(2)}, top-ups of $${(topUpCents / 100).toFixed(2)}, ${calls} calls (${struck.join(", ")}), ` +
-    `${seconds.toFixed(1)} s, ${Math.round(steps / seconds)} steps/s`
+    `${seconds.toFixed(1)} s, ${Math.round(steps / seconds)} steps/s, history ${history}`
   );
 };
 
 async function main(): Promise<number> {
+  process.env.LOG_LEVEL = "silent";
+  process.env.STRIPE_WEBHOOK_SECRET = WEBHOOK_SECRET;
   const [seed, steps, seeds, kills] = [number("seed"), number("steps"), number("seeds"), number("kills")];
   const folder = mkdtempSync(path.join(os.tmpdir(), "merestone-simulation-"));
   const total = { steps: 0, kills: 0, submissions: 0, payouts: 0, payoutCents: 0, failed: 0 };

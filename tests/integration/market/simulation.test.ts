@@ -1,0 +1,37 @@
+import { execFile } from "node:child_process";
+import path from "node:path";
+import { promisify } from "node:util";
+import { describe, expect, it } from "vitest";
+
+const run = promisify(execFile);
+const TIMEOUT_MS = 600_000;
+
+/** A process of its own: the simulation replaces the process's random bytes, Stripe client and fetch. */
+const simulate = async (input: Record<string, number>): Promise<string> => {
+  const options = Object.entries(input).flatMap(([name, value]) => [`--${name}`, String(value)]);
+  const program = path.resolve("tests/simulation/simulate.ts");
+  const { stdout } = await run(process.execPath, ["--import", "tsx", program, ...options]);
+  return stdout;
+};
+const historyOf = (text: string) => /history ([0-9a-f]+)/.exec(text)?.[1];
+
+describe("a market of careful and careless people, failing services and dying processes", () => {
+  it(
+    "loses no cent, no label and no payout, whatever the seed",
+    async () => {
+      const text = await simulate({ seed: 1, seeds: 6, steps: 1500, kills: 3 });
+      expect(text).toContain("0 seeds failed");
+    },
+    TIMEOUT_MS,
+  );
+
+  it(
+    "replays a seed exactly, deaths included",
+    async () => {
+      const once = historyOf(await simulate({ seed: 7, steps: 400, kills: 2 }));
+      expect(once).toBeDefined();
+      expect(historyOf(await simulate({ seed: 7, steps: 400, kills: 2 }))).toBe(once);
+    },
+    TIMEOUT_MS,
+  );
+});
