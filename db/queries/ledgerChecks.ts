@@ -129,6 +129,69 @@ const linksHold: Check = (db) => {
   ];
 };
 
+/** A cause posts once: the index that holds it is there, and no index can be fooled after the fact. */
+const causesAreUnique: Check = (db) => {
+  const index = db.get<{ name: string }>(
+    sql`select name from sqlite_master where type = 'index' and name = 'ledger_postings_cause' and sql like 'CREATE UNIQUE%'`,
+  );
+  const twice = db.all<{ source: string; source_id: string; kind: string }>(
+    sql`select source, source_id, kind from ledger_postings group by source, source_id, kind having count(*) > 1`,
+  );
+  return [
+    ...(index ? [] : ["the unique index of causes is missing"]),
+    ...twice.map((row) => `${row.kind} of ${row.source} ${row.source_id} was posted twice`),
+  ];
+};
+
+/** What moved for a submission, its pay and its fee, is what its row says, whoever paid it. */
+const submissionsAddUp: Check = (db) =>
+  db
+    .all<{ id: string; pay: number; fee: number; paid: number; charged: number }>(
+      sql`select s.id, coalesce(s.pay_cents, 0) as pay, coalesce(s.fee_cents, 0) as fee,
+        coalesce(sum(case when a.kind in ('payable', 'debt') then e.cents end), 0) as paid,
+        coalesce(sum(case when a.kind = 'fee' then e.cents end), 0) as charged
+      from submissions s
+      left join ledger_postings p on p.source = 'submission' and p.source_id = s.id
+      left join ledger_entries e on e.posting_id = p.id
+      left join ledger_accounts a on a.id = e.account_id
+      group by s.id having paid <> pay or charged <> fee`,
+    )
+    .map(
+      (row) =>
+        `submission ${row.id} earns ${row.pay} + ${row.fee}, its postings ${row.paid} + ${row.charged}`,
+    );
+
+/** What takes a posting back mirrors all of it: same accounts, opposite cents. */
+const mirrorsMirror: Check = (db) =>
+  db
+    .all<{ id: string; linked_to: string }>(
+      sql`select p.id, p.linked_to from ledger_postings p where p.kind in ('void', 'suspense-cleared') and exists (
+        select 1 from (
+          select account_id, cents from ledger_entries where posting_id in (p.id, p.linked_to)
+          union all
+          select e.account_id, e.cents from ledger_postings m join ledger_entries e on e.posting_id = m.id
+            where m.source = p.source and m.source_id = p.source_id and m.kind = 'available'
+        ) group by account_id having sum(cents) <> 0)`,
+    )
+    .map((row) => `posting ${row.id} does not take back all of ${row.linked_to}`);
+
+/** A balance transaction of Stripe's stands in one posting, and what lies in suspense is known to a person. */
+const stripeStandsOnce: Check = (db) => {
+  const twice = db.all<{ source_id: string; kinds: string }>(
+    sql`select source_id, group_concat(kind) as kinds from ledger_postings p
+      where source = 'stripe' and source_id like 'txn%' and kind not in ('available', 'suspense-cleared')
+        and not (kind = 'suspense' and exists (select 1 from ledger_postings c where c.linked_to = p.id and c.kind = 'suspense-cleared'))
+      group by source_id having count(*) > 1`,
+  );
+  const silent = db.all<{ source_id: string }>(
+    sql`select source_id from ledger_postings p where kind = 'suspense' and not exists (select 1 from ledger_alerts where what in ('suspense', 'unknown payment'))`,
+  );
+  return [
+    ...twice.map((row) => `${row.source_id} stands as ${row.kinds}`),
+    ...silent.map((row) => `${row.source_id} lies in suspense and nobody was told`),
+  ];
+};
+
 /** What is on its way is what the rows of payouts and refunds say is on its way. */
 const underWayAddsUp: Check = (db) =>
   db
@@ -182,24 +245,28 @@ const closedHoldsAreEmpty: Check = (db) =>
     )
     .map((row) => `${row.id} is closed and holds ${row.balance}`);
 
+/** By the invariant that each holds; the numbers are those of DEVELOPERS.md. */
 const CHECKS: readonly Check[] = [
-  sumsToZero,
-  isAppendOnly,
-  balancesEqualEntries,
-  neverBelowZero,
-  escrowAddsUp,
-  refundsFitPayments,
-  linksHold,
-  underWayAddsUp,
-  payoutsAreWhole,
-  closedHoldsAreEmpty,
-  trialBalanceIsZero,
+  sumsToZero, // 1
+  isAppendOnly, // 2
+  balancesEqualEntries, // 3
+  neverBelowZero, // 4
+  causesAreUnique, // 5
+  escrowAddsUp, // 6, 8
+  submissionsAddUp, // 7
+  refundsFitPayments, // 8
+  linksHold, // 9
+  mirrorsMirror, // 9
+  payoutsAreWhole, // 10, 12
+  underWayAddsUp, // 12
+  closedHoldsAreEmpty, // 11
+  stripeStandsOnce, // 13, with the reconciliation
+  trialBalanceIsZero, // 1
 ];
 
 /**
- * What in the ledger does not hold; empty when all does. Reads the whole ledger: O(entries). That a cause posts
- * once and that shares sum to their pool holds by a unique index and by construction; whether the ledger agrees
- * with Stripe is the reconciliation's to say.
+ * What in the ledger does not hold; empty when all does. Reads the whole ledger: O(entries). Whether the ledger
+ * agrees with Stripe is the reconciliation's to say.
  */
 export function ledgerViolations(db: Reader): string[] {
   return CHECKS.flatMap((check) => check(db));

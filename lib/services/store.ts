@@ -98,18 +98,25 @@ export async function listParts(key: string, uploadId: string): Promise<PartTag[
   }
 }
 
+/**
+ * Joins the parts of an upload. One that was joined before (an answer that was lost, a crash before it was
+ * noted) is no failure: whether the object is there is for `findObjectSize` to say.
+ */
 export async function completeMultipart(key: string, uploadId: string, parts: PartTag[]): Promise<void> {
   const Parts = [...parts]
     .sort((a, b) => a.number - b.number)
     .map((p) => ({ PartNumber: p.number, ETag: p.etag }));
-  await s3().send(
-    new CompleteMultipartUploadCommand({
-      Bucket: Bucket(),
-      Key: key,
-      UploadId: uploadId,
-      MultipartUpload: { Parts },
-    }),
-  );
+  const command = new CompleteMultipartUploadCommand({
+    Bucket: Bucket(),
+    Key: key,
+    UploadId: uploadId,
+    MultipartUpload: { Parts },
+  });
+  await s3()
+    .send(command)
+    .catch((error: unknown) => {
+      if (!(error instanceof Error && error.name === "NoSuchUpload")) throw error;
+    });
 }
 
 export async function abortMultipart(key: string, uploadId: string): Promise<void> {

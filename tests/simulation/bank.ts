@@ -37,6 +37,8 @@ export class Bank {
   readonly service = createStripe({ folder: null, secretKey: SECRET_KEY, isManual: true });
   readonly mail = createResend({ folder: null, apiKey: "re_localdemo" });
   isCalm = false;
+  /** How bad the network is: seeds differ, for what calm weather hides. */
+  private readonly weather: number;
   duplicated = 0;
   /** Letters that were taken although their key had been used. */
   private letters = 0;
@@ -45,6 +47,7 @@ export class Bank {
     private readonly dice: Random,
     startMs: number,
   ) {
+    this.weather = dice.pick([0.3, 1, 1, 3]) ?? 1;
     const { clock, world } = this.service;
     clock.freeze(startMs);
     this.mail.clock.freeze(startMs);
@@ -79,7 +82,7 @@ export class Bank {
 
   /** What the product asked, as the network brings it there and back; null when either way is lost. */
   async answer(call: WireCall): Promise<WireAnswer | null> {
-    const dice = this.isCalm ? 1 : this.dice.next();
+    const dice = this.isCalm ? 1 : this.dice.next() / this.weather;
     if (dice < 0.03) return this.note("lostBefore", null);
     if (dice < 0.04 && call.method === "POST" && call.service === "stripe")
       return this.note(
@@ -94,7 +97,7 @@ export class Bank {
         });
       return this.note("tooMany", failure(429, { type: "invalid_request_error", code: "rate_limit" }));
     }
-    if (dice < 0.055 && call.service === "stripe") {
+    if (dice < 0.06 && call.service === "stripe") {
       this.note("broken", null);
       await this.control("fault", { when: "inside", action: "status", status: 500 });
     }

@@ -28,6 +28,26 @@ const BORED_STEPS = 80;
 /** A call to the outside may last long enough for others to act, and for others during those. */
 const DEPTH_MAX = 2;
 
+const HABITS = [
+  "work",
+  "job",
+  "letter",
+  "requester",
+  "pay",
+  "admin",
+  "money",
+  "trouble",
+  "sweep",
+  "regular",
+  "nightly",
+] as const;
+type Habit = (typeof HABITS)[number];
+
+function chooseHabits(dice: Random): Record<Habit, number> {
+  const share = () => dice.pick([0.3, 1, 1, 3]) ?? 1;
+  return Object.fromEntries(HABITS.map((habit) => [habit, share()])) as Record<Habit, number>;
+}
+
 type Requester = { actor: Actor; teamId: string };
 type Batch = {
   batchId: string;
@@ -75,6 +95,8 @@ export class Episode {
   private readonly seen = new Map<string, DeskDocument[]>();
   /** Sent and not answered: the annotator's browser sends it again. */
   private unsure: { annotator: Annotator; held: Held; document: DeskDocument }[] = [];
+  /** How much of each there is in this history (swarm testing: A. Groce et al., 2012). */
+  private readonly habits: Record<Habit, number>;
   private readonly history = createHash("sha256");
   private depth = 0;
   private due = 0;
@@ -84,6 +106,7 @@ export class Episode {
 
   constructor(private readonly plan: Plan) {
     this.dice = new Random([plan.seed, 0x5eed]);
+    this.habits = chooseHabits(this.dice);
     seedIds(new Random([plan.seed, 0x1d5]));
     this.bank = new Bank(new Random([plan.seed, 0xba4c]), START_MS);
     this.product = new Product({
@@ -233,17 +256,19 @@ export class Episode {
   private async turn(): Promise<void> {
     const { dice } = this;
     await this.bank.advance(this.howLong());
+    const { habits } = this;
     const kind = dice.weighted({
-      work: 10,
-      job: 0.5 + Math.min(14, this.due),
-      letter: Math.min(8, this.bank.post.length),
-      requester: 2,
-      pay: 0.5,
-      admin: 0.7,
-      money: 0.8,
-      trouble: 0.15,
-      sweep: 0.1,
-      nightly: 0.02,
+      work: 10 * habits.work,
+      job: (0.5 + Math.min(14, this.due)) * habits.job,
+      letter: Math.min(8, this.bank.post.length) * habits.letter,
+      requester: 2 * habits.requester,
+      pay: 0.5 * habits.pay,
+      admin: 0.4 * habits.admin,
+      money: 0.8 * habits.money,
+      trouble: 0.15 * habits.trouble,
+      sweep: 0.1 * habits.sweep,
+      regular: 0.06 * habits.regular,
+      nightly: 0.02 * habits.nightly,
     });
     switch (kind) {
       case "work":
@@ -395,6 +420,14 @@ export class Episode {
       annotator.isOnboarded = true;
       return;
     }
+    if (dice.chance(0.1)) {
+      const rhythm = dice.pick(["never", "weekly", "monthly"] as const) ?? "never";
+      await this.ask("schedule", {
+        actor,
+        input: { rhythm, weekday: dice.int(1, 7), leastCents: dice.int(100, 300) },
+      });
+      return;
+    }
     const isAll = dice.chance(0.6);
     const reply = await this.ask("payout", { actor, ...(!isAll && { amountCents: dice.int(100, 400) }) });
     if (!reply?.ok) return;
@@ -530,6 +563,7 @@ export class Episode {
     }
     for (const { actor, isOnboarded } of this.annotators) {
       if (!isOnboarded) continue;
+      await this.ask("schedule", { actor, input: { rhythm: "never", weekday: 1, leastCents: 100 } });
       const reply = await this.ask("payout", { actor });
       if (reply?.ok) this.acknowledged.payouts.set(reply.value.payoutId, reply.value.amountCents);
     }

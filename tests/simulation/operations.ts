@@ -7,10 +7,12 @@ import type { DecideInput } from "@/lib/contracts/work";
 import type { DeskDocument } from "@/lib/contracts/desk";
 import { InvariantError } from "@/lib/errors";
 import { payoutRunJob } from "@/lib/jobs/handlers/payoutRun";
+import { payoutsScheduleJob } from "@/lib/jobs/handlers/payoutsSchedule";
 import { reconcileJob } from "@/lib/jobs/handlers/reconcile";
 import { refundRunJob } from "@/lib/jobs/handlers/refundRun";
 import { sendMailJob } from "@/lib/jobs/handlers/sendMail";
 import { settleImageJob } from "@/lib/jobs/handlers/settleImage";
+import { settleOverdueJob } from "@/lib/jobs/handlers/settleOverdue";
 import { stripeEventJob } from "@/lib/jobs/handlers/stripeEvent";
 import { sweepClaimsJob } from "@/lib/jobs/handlers/sweepClaims";
 import { enqueue, takeJob } from "@/lib/jobs/queue";
@@ -20,6 +22,8 @@ import { setAgreementTarget } from "@/lib/market/batches/editBatch";
 import { setPaused } from "@/lib/market/batches/publishBatch";
 import { decideDispute } from "@/lib/market/disputes/decideDispute";
 import { contestImage, contestScore, withdrawDispute } from "@/lib/market/disputes/openDispute";
+import type { PayoutScheduleInput } from "@/lib/contracts/payments";
+import { setPayoutSchedule } from "@/lib/market/money/payoutSchedule";
 import { refreshOnboarding, requestPayout, startOnboarding } from "@/lib/market/money/payouts";
 import { reconcile } from "@/lib/market/money/reconcile";
 import { refundWallet } from "@/lib/market/money/refunds";
@@ -41,6 +45,8 @@ const HANDLERS: Handlers = {
   "refund.run": refundRunJob,
   "stripe.event": stripeEventJob,
   "ledger.reconcile": reconcileJob,
+  "payouts.schedule": payoutsScheduleJob,
+  "consensus.overdue": settleOverdueJob,
   "batch.train": async () => undefined,
 };
 
@@ -130,11 +136,17 @@ export const OPERATIONS = {
   account: ({ actor }: By) =>
     getDb().select({ id: users.stripeAccountId }).from(users).where(eq(users.id, actor.id)).get()?.id ?? null,
   payout: (input: By & { amountCents?: number }, nowMs: number) => requestPayout({ ...input, nowMs }),
+  schedule: (input: By & { input: PayoutScheduleInput }, nowMs: number) =>
+    setPayoutSchedule({ ...input, nowMs }),
   webhook: (input: { body: string; signature: string }, nowMs: number) =>
     receiveStripeEvent({ ...input, nowMs }),
 
   sweep: (_input: unknown, nowMs: number) =>
     enqueue(getDb(), { kind: "claims.sweep", payload: {}, uniqueKey: "claims.sweep", nowMs }),
+  regular(_input: unknown, nowMs: number) {
+    for (const kind of ["payouts.schedule", "consensus.overdue"] as const)
+      enqueue(getDb(), { kind, payload: {}, uniqueKey: kind, nowMs });
+  },
   nightly: (_input: unknown, nowMs: number) =>
     enqueue(getDb(), {
       kind: "ledger.reconcile",

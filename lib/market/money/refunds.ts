@@ -2,15 +2,17 @@ import { and, desc, eq, sql } from "drizzle-orm";
 import Stripe from "stripe";
 import { getDb, inTransaction, type Tx } from "@/db/client";
 import { balanceOf, findPosting, insertPosting, raiseAlert } from "@/db/queries/ledger";
-import { refunds, topUps } from "@/db/schema";
+import { refunds, teamMembers, topUps, users } from "@/db/schema";
 import type { Actor } from "@/lib/auth/actor";
 import { AppError, invariant } from "@/lib/errors";
 import { newId } from "@/lib/ids";
 import { enqueue } from "@/lib/jobs/queue";
+import { formatUsd } from "@/lib/ledger/amounts";
 import { accountId } from "@/lib/ledger/posting";
 import { refundBackPosting, refundSentPosting, refundStartPosting } from "@/lib/ledger/postings";
 import { requireTeam } from "@/lib/market/access";
 import { audit } from "@/lib/market/audit";
+import { post } from "@/lib/market/mail";
 import { stripe } from "@/lib/services/stripeClient";
 import { bookTransaction, bucketOf, transactionOf, type Transaction } from "./balanceTransactions";
 
@@ -179,7 +181,8 @@ function noteReturn(tx: Tx, refundId: string, transaction: Transaction, reason: 
     linkedTo: startOf(tx, refundId),
     nowMs,
   });
-  markFailed(tx, refund, `The card's bank sent it back: ${reason.replaceAll("_", " ")}.`);
+  const failure = `The card's bank sent it back: ${reason.replaceAll("_", " ")}.`;
+  markFailed(tx, refund, { failure, subject: "A refund came back", nowMs });
 }
 
 function voidRefund(tx: Tx, refundId: string, failure: string, nowMs: number): void {
@@ -194,13 +197,33 @@ function voidRefund(tx: Tx, refundId: string, failure: string, nowMs: number): v
     linkedTo: startOf(tx, refundId),
     nowMs,
   });
-  markFailed(tx, refund, failure);
+  markFailed(tx, refund, { failure, subject: "A refund did not go through", nowMs });
 }
 
-function markFailed(tx: Tx, refund: RefundRow, failure: string): void {
+type Failed = { failure: string; subject: string; nowMs: number };
+
+function markFailed(tx: Tx, refund: RefundRow, { failure, subject, nowMs }: Failed): void {
   tx.update(topUps)
     .set({ refundedCents: sql`${topUps.refundedCents} - ${refund.amountCents}` })
     .where(eq(topUps.id, refund.topUpId))
     .run();
   tx.update(refunds).set({ status: "failed", failure }).where(eq(refunds.id, refund.id)).run();
+  for (const to of listOwners(tx, refund.teamId)) {
+    const lines = [
+      `The refund of ${formatUsd(refund.amountCents)} did not reach the card: ${failure}`,
+      "The money is in the wallet again. You can ask for it once more, or spend it on a batch.",
+    ];
+    post(tx, { to, subject, lines, action: { label: "Wallet", path: "/wallet" }, tag: "refund" }, nowMs);
+  }
+}
+
+/** The owners of a team: those who may ask for a refund. */
+function listOwners(tx: Tx, teamId: string): string[] {
+  return tx
+    .select({ email: users.email })
+    .from(teamMembers)
+    .innerJoin(users, eq(users.id, teamMembers.userId))
+    .where(and(eq(teamMembers.teamId, teamId), eq(teamMembers.role, "owner")))
+    .all()
+    .map(({ email }) => email);
 }

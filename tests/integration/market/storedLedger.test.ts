@@ -11,9 +11,15 @@ import {
 } from "@/db/queries/ledger";
 import { ledgerAccounts, ledgerEntries, ledgerPostings } from "@/db/schema";
 import { accountId, type Posting } from "@/lib/ledger/posting";
-import { fundPosting, releasePosting, topUpPosting } from "@/lib/ledger/postings";
+import {
+  closePosting,
+  fundPosting,
+  releasePosting,
+  suspensePosting,
+  topUpPosting,
+} from "@/lib/ledger/postings";
 import { freshDb } from "@/tests/support/db";
-import { refusalOf, START_MS } from "@/tests/support/market";
+import { openMarket, refusalOf, settledImage, START_MS } from "@/tests/support/market";
 
 let db: Db;
 beforeEach(() => {
@@ -131,5 +137,55 @@ describe("the check of the ledger", () => {
     expect(found).toMatch(/wallet:u is negative/);
     expect(found).toMatch(/debt:x owes a negative debt/);
     expect(found).toMatch(/linked to one that is not there/);
+  });
+
+  it("finds a cause that could post twice, and one that did", () => {
+    db.run(sql`drop index ledger_postings_cause`);
+    write("a", topUpPosting("t", 500));
+    db.run(
+      sql`insert into ledger_postings select 'pst_again', source, source_id, kind, digest, linked_to, memo, posted_at_ms from ledger_postings`,
+    );
+    const found = ledgerViolations(db).join("\n");
+    expect(found).toMatch(/unique index of causes is missing/);
+    expect(found).toMatch(/test of test a was posted twice/);
+  });
+
+  it("finds work whose pay is not what moved for it", () => {
+    const market = openMarket(db);
+    const [id = ""] = settledImage(market);
+    expect(ledgerViolations(db)).toEqual([]);
+    db.run(sql`update submissions set pay_cents = pay_cents + 1, fee_cents = fee_cents - 1 where id = ${id}`);
+    expect(ledgerViolations(db).join("\n")).toMatch(new RegExp(`submission ${id} earns`));
+  });
+
+  it("finds a void that takes back less than was begun", () => {
+    const start = write("b", fundPosting("t", "b", 200));
+    const back = {
+      source: "test",
+      sourceId: "c",
+      kind: "void",
+      memo: "",
+      nowMs: START_MS,
+      linkedTo: start.id,
+    };
+    inTransaction(db, (tx) => insertPosting(tx, { ...back, posting: closePosting("t", "b", 150) }));
+    expect(ledgerViolations(db).join("\n")).toMatch(/does not take back all of/);
+  });
+
+  it("finds money of Stripe's that stands twice, and suspense of which nobody was told", () => {
+    for (const kind of ["topup", "suspense"])
+      inTransaction(db, (tx) =>
+        insertPosting(tx, {
+          source: "stripe",
+          sourceId: "txn_1",
+          kind,
+          posting: kind === "topup" ? topUpPosting("t", 10) : suspensePosting(10),
+          memo: "",
+          nowMs: START_MS,
+        }),
+      );
+    const found = ledgerViolations(db).join("\n");
+    expect(found).toMatch(/txn_1 stands as/);
+    expect(found).toMatch(/txn_1 lies in suspense and nobody was told/);
   });
 });

@@ -5,7 +5,7 @@ import { refunds } from "@/db/schema";
 import type { Actor } from "@/lib/auth/actor";
 import { reconcile } from "@/lib/market/money/reconcile";
 import { refundWallet, runRefund } from "@/lib/market/money/refunds";
-import { cents, join, person, refusalOf } from "@/tests/support/market";
+import { cents, join, letters, person, refusalOf } from "@/tests/support/market";
 import { Bank } from "./bank";
 
 let bank: Bank;
@@ -106,6 +106,9 @@ describe("a refund of the wallet", () => {
     expect(rows()).toMatchObject([{ status: "failed" }]);
     expect([wallet(), refunding()]).toEqual([1000, 0]);
     expect(bank.topUpRows()).toMatchObject([{ refundedCents: 0 }]);
+    const told = letters(bank.db, "refund");
+    expect(told).toMatchObject([{ to: owner.email, subject: "A refund did not go through" }]);
+    expect(told[0]?.text).toContain("$10.00");
     await expectAgreement();
   });
 
@@ -120,6 +123,7 @@ describe("a refund of the wallet", () => {
     await bank.control("webhooks/resend");
     await bank.quiet();
     expect(wallet()).toBe(10_000);
+    expect(letters(bank.db, "refund")).toMatchObject([{ to: owner.email, subject: "A refund came back" }]);
     await expectAgreement();
   });
 
