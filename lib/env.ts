@@ -22,7 +22,7 @@ const EnvSchema = z.object({
   /** Handed-in work is paid within so many hours, even where its consensus still waits for people. */
   SETTLE_WITHIN_HOURS: z.coerce.number().min(1).default(72),
   /** From so many cents at stake a dispute is decided by two admins: one proposes, another confirms. */
-  DISPUTE_TWO_ADMINS_CENTS: z.coerce.number().int().min(1).default(500),
+  DISPUTE_TWO_ADMINS_CENTS: z.coerce.number().int().min(1).default(1000),
   LOG_LEVEL: z.enum(["debug", "info", "warn", "error", "silent"]).default("info"),
 });
 

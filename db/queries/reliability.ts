@@ -1,4 +1,4 @@
-import { asc, desc, eq, inArray } from "drizzle-orm";
+import { and, asc, desc, eq, inArray, ne } from "drizzle-orm";
 import type { Reader } from "@/db/client";
 import { images, submissions } from "@/db/schema";
 import type { ImageLabels } from "@/lib/consensus/types";
@@ -17,7 +17,9 @@ export function listLabelStamps(db: Reader, batchId: string, limit: number): Lab
   const latest = db
     .select({ imageId: submissions.imageId })
     .from(submissions)
-    .where(eq(submissions.batchId, batchId))
+    .innerJoin(images, eq(images.id, submissions.imageId))
+    // A broken task never counts against anybody.
+    .where(and(eq(submissions.batchId, batchId), ne(images.consensusState, "void")))
     .orderBy(desc(submissions.submittedAtMs), desc(submissions.id))
     .limit(SUBMISSIONS_PER_IMAGE * limit)
     .all();

@@ -232,6 +232,7 @@ export function findDispute(db: Reader, disputeId: string): DisputeRow | undefin
   return db.select().from(disputes).where(eq(disputes.id, disputeId)).get();
 }
 
+/** The open dispute of an image that was opened first. */
 export function findOpenDispute(db: Reader, imageId: string): DisputeRow | undefined {
   return db
     .select()
@@ -241,8 +242,14 @@ export function findOpenDispute(db: Reader, imageId: string): DisputeRow | undef
     .get();
 }
 
-/** The docket: open disputes by due time (then money), or decided ones, newest first. */
-export function listDocket(db: Reader, status: "open" | "decided", limit = 200) {
+const HOUR_MS = 3_600_000;
+
+/**
+ * The docket. Open disputes: overdue ones first, then by money at stake times the time waited (an hour is added,
+ * so that money counts from the start), then the oldest. Decided ones: newest first.
+ */
+export function listDocket(db: Reader, status: "open" | "decided", nowMs: number, limit = 200) {
+  const { dueAtMs, stakeCents, openedAtMs, decidedAtMs, id } = disputes;
   return db
     .select({
       dispute: disputes,
@@ -257,8 +264,13 @@ export function listDocket(db: Reader, status: "open" | "decided", limit = 200) 
     .where(eq(disputes.status, status))
     .orderBy(
       ...(status === "open"
-        ? [asc(disputes.dueAtMs), desc(disputes.stakeCents)]
-        : [desc(disputes.decidedAtMs)]),
+        ? [
+            desc(sql`${dueAtMs} < ${nowMs}`),
+            desc(sql`${stakeCents} * (${nowMs} - ${openedAtMs} + ${HOUR_MS})`),
+            asc(openedAtMs),
+            asc(id),
+          ]
+        : [desc(decidedAtMs), asc(id)]),
     )
     .limit(limit)
     .all();
@@ -274,13 +286,39 @@ export function listDisputesOf(db: Reader, batchId: string): DisputeRow[] {
     .all();
 }
 
-/** Decided disputes like this one (same batch first, then the same kind), newest first. */
-export function listSimilarDecisions(db: Reader, dispute: DisputeRow, limit: number): DisputeRow[] {
+/** What two disputes have in common. */
+export type Likeness = "batch" | "class" | "error";
+
+/**
+ * Decided disputes like this one: of the same kind of error, class or batch. Those with the most in common
+ * first, then the newest. Looks at all decided disputes; their number grows with decisions, not with work.
+ */
+export function listSimilarDecisions(
+  db: Reader,
+  dispute: DisputeRow,
+  limit: number,
+): { dispute: DisputeRow; fileName: string; alike: Likeness[] }[] {
+  const sameBatch = sql<number>`(${disputes.batchId} = ${dispute.batchId})`;
+  const sameError = sql<number>`(${disputes.errorKind} = ${dispute.errorKind})`;
+  // Classes belong to one batch, so across batches they are compared by name.
+  const nameOf = (id: unknown) => sql`(select lower(name) from classes where id = ${id})`;
+  const sameClass = sql<number>`coalesce(${nameOf(disputes.classId)} = ${nameOf(dispute.classId)}, 0)`;
+  const score = sql`${sameBatch} + 2 * ${sameError} + 2 * ${sameClass}`;
   return db
-    .select()
+    .select({ dispute: disputes, fileName: images.fileName, sameBatch, sameError, sameClass })
     .from(disputes)
-    .where(and(eq(disputes.status, "decided"), eq(disputes.kind, dispute.kind), ne(disputes.id, dispute.id)))
-    .orderBy(desc(sql`${disputes.batchId} = ${dispute.batchId}`), desc(disputes.decidedAtMs))
+    .innerJoin(images, eq(images.id, disputes.imageId))
+    .where(and(eq(disputes.status, "decided"), ne(disputes.id, dispute.id), sql`${score} > 0`))
+    .orderBy(desc(score), desc(disputes.decidedAtMs), asc(disputes.id))
     .limit(limit)
-    .all();
+    .all()
+    .map(({ dispute: row, fileName, ...same }) => ({
+      dispute: row,
+      fileName,
+      alike: [
+        ...(same.sameError ? ["error" as const] : []),
+        ...(same.sameClass ? ["class" as const] : []),
+        ...(same.sameBatch ? ["batch" as const] : []),
+      ],
+    }));
 }

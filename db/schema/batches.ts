@@ -3,7 +3,8 @@ import { teams, users } from "./people";
 
 export const BATCH_STATUSES = ["draft", "open", "paused", "closed"] as const;
 export const IMAGE_STATUSES = ["awaiting", "checking", "ready", "refused"] as const;
-export const CONSENSUS_STATES = ["none", "settled", "short", "split"] as const;
+/** `void`: a decision set the picture aside, because the brief, the picture or the product was at fault. */
+export const CONSENSUS_STATES = ["none", "settled", "short", "split", "void"] as const;
 
 export const batches = sqliteTable(
   "batches",

@@ -113,10 +113,29 @@ export const consensusRuns = sqliteTable(
   ],
 );
 
+/** What was wrong, in the words of who contests; a split picture comes by itself as a disagreement. */
+export const ERROR_KINDS = [
+  "outline",
+  "class",
+  "missing",
+  "extra",
+  "brief",
+  "broken",
+  "other",
+  "disagreement",
+] as const;
+export type ErrorKind = (typeof ERROR_KINDS)[number];
+
+/** Whose fault a broken task is: never the annotator's. */
+export const FAULTS = ["brief", "picture", "product"] as const;
+export type Fault = (typeof FAULTS)[number];
+
 export type DisputeDecision =
   | { outcome: "keep" }
+  | { outcome: "restore" }
   | { outcome: "pick"; submissionId: string }
-  | { outcome: "redraw"; document: DeskDocument };
+  | { outcome: "redraw"; document: DeskDocument }
+  | { outcome: "broken"; fault: Fault };
 
 export const disputes = sqliteTable(
   "disputes",
@@ -136,7 +155,12 @@ export const disputes = sqliteTable(
     openedBy: text("opened_by").references(() => users.id), // null: by itself
     reason: text("reason").notNull(),
     status: text("status", { enum: ["open", "decided", "withdrawn"] }).notNull(),
-    /** Frozen when it opens: run, submissions, brief version, settings, timing. */
+    errorKind: text("error_kind", { enum: ERROR_KINDS }).notNull().default("other"),
+    /** The class of the key that it is about, where there is one. */
+    classId: text("class_id"),
+    /** The decided dispute whose decision is appealed. An appeal is a dispute of its own. */
+    appealOf: text("appeal_of"),
+    /** Which run and brief it is judged by; the whole evidence is in dispute_evidence. */
     evidence: text("evidence", { mode: "json" }).$type<Record<string, unknown>>().notNull(),
     stakeCents: integer("stake_cents").notNull(),
     openedAtMs: integer("opened_at_ms").notNull(),
@@ -145,6 +169,14 @@ export const disputes = sqliteTable(
     decisionReason: text("decision_reason"),
     decidedBy: text("decided_by").references(() => users.id),
     decidedAtMs: integer("decided_at_ms"),
+    /** Above the money limit: what one admin proposes and another confirms or sends back. */
+    proposal: text("proposal", { mode: "json" }).$type<DisputeDecision>(),
+    proposalReason: text("proposal_reason"),
+    proposedBy: text("proposed_by").references(() => users.id),
+    proposedAtMs: integer("proposed_at_ms"),
+    confirmedBy: text("confirmed_by").references(() => users.id),
+    /** Earlier decisions that the decider cites. */
+    citedIds: text("cited_ids", { mode: "json" }).$type<string[]>().notNull().default([]),
     /** Money moved by the decision, from escrow's view: positive was paid out in addition. */
     movedCents: integer("moved_cents"),
   },
@@ -154,5 +186,37 @@ export const disputes = sqliteTable(
     uniqueIndex("disputes_one_open")
       .on(t.subject)
       .where(sql`status = 'open'`),
+    uniqueIndex("disputes_one_appeal")
+      .on(t.appealOf)
+      .where(sql`status <> 'withdrawn'`),
   ],
+);
+
+/** The evidence as it was when the dispute opened: the exact text and its hash. A trigger refuses any change. */
+export const disputeEvidence = sqliteTable("dispute_evidence", {
+  disputeId: text("dispute_id")
+    .primaryKey()
+    .references(() => disputes.id),
+  snapshot: text("snapshot").notNull(), // JSON, read as text so that the hash is of what is stored
+  /** SHA-256 of the snapshot's UTF-8 bytes, hex. */
+  sha256: text("sha256").notNull(),
+  frozenAtMs: integer("frozen_at_ms").notNull(),
+});
+
+/** What happened to a dispute, in order. Only added to. */
+export const disputeSteps = sqliteTable(
+  "dispute_steps",
+  {
+    id: integer("id").primaryKey({ autoIncrement: true }),
+    disputeId: text("dispute_id")
+      .notNull()
+      .references(() => disputes.id),
+    kind: text("kind", {
+      enum: ["opened", "proposed", "sent-back", "confirmed", "decided", "withdrawn", "appealed"],
+    }).notNull(),
+    actorId: text("actor_id").references(() => users.id), // null: the product itself
+    reason: text("reason").notNull().default(""),
+    atMs: integer("at_ms").notNull(),
+  },
+  (t) => [index("dispute_steps_dispute").on(t.disputeId, t.id)],
 );

@@ -15,6 +15,8 @@ export const PEOPLE = {
   rowan: { name: "Rowan Teale", email: "rowan.teale@skerrow.example", role: "requester" },
   petra: { name: "Petra Oake", email: "petra.oake@skerrow.example", role: "requester" },
   ada: { name: "Ada Merrin", email: "ada.merrin@merestone.example", role: "admin" },
+  edda: { name: "Edda Rook", email: "edda.rook@merestone.example", role: "admin" },
+  corin: { name: "Corin Vale", email: "corin.vale@merestone.example", role: "admin" },
   tomas: { name: "Tomas Brandt", email: "tomas.brandt@skerrow.example", role: "annotator" },
   lioba: { name: "Lioba Fenn", email: "lioba.fenn@skerrow.example", role: "annotator" },
   maren: { name: "Maren Holt", email: "maren.holt@skerrow.example", role: "annotator" },

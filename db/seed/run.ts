@@ -6,10 +6,10 @@ import { CARE, seedPeople, type AnnotatorKey } from "./people";
 import { GLASSHOUSE, NEAP_TIDE, SPRING_TIDE } from "./plans";
 import { env } from "@/lib/env";
 import { findUser } from "@/db/queries/people";
-import { listDocket, listSubmissionsOf } from "@/db/queries/work";
+import { findDispute, listDocket, listSubmissionsOf } from "@/db/queries/work";
 import { listReleases } from "@/db/queries/batches";
 import { contestImage, contestScore } from "@/lib/market/disputes/openDispute";
-import { decideDispute } from "@/lib/market/disputes/decideDispute";
+import { confirmProposal, decideDispute } from "@/lib/market/disputes/decideDispute";
 import { requestPayout, startOnboarding } from "@/lib/market/money/payouts";
 import { requestRelease } from "@/lib/market/releases/requestRelease";
 import { ensureBucket } from "@/lib/services/store";
@@ -91,7 +91,7 @@ async function main(): Promise<void> {
 
   /** An admin decides what the people could not agree on: the closest of the submissions is taken. */
   function decideOpen(atMs: number): void {
-    for (const { dispute } of listDocket(db, "open")) {
+    for (const { dispute } of listDocket(db, "open", atMs)) {
       const list = listSubmissionsOf(db, dispute.imageId);
       const best = list.find((submission) => submission.annotatorId === actors.tomas.id) ?? list[0];
       if (!best) continue;
@@ -106,7 +106,20 @@ async function main(): Promise<void> {
             "This submission follows the visible edges as the brief asks and misses nothing; the others differ by what they left out.",
         },
       });
+      confirm(dispute.id, atMs);
     }
+  }
+
+  /** Where so much is at stake that two admins must agree, a second one does. */
+  function confirm(disputeId: string, atMs: number): void {
+    const proposedAtMs = findDispute(db, disputeId)?.proposedAtMs;
+    if (proposedAtMs)
+      confirmProposal({
+        actor: actors.edda,
+        nowMs: atMs + 3_600_000,
+        disputeId,
+        answer: { verdict: "confirm", proposedAtMs },
+      });
   }
 
   /** The one whose work scores worst contests it; the admin looks and keeps the result, with a reason. */
@@ -122,6 +135,7 @@ async function main(): Promise<void> {
       actor: annotator,
       nowMs: now - DAY_MS,
       submissionId: contested.id,
+      errorKind: "outline",
       reason: "I drew the rope under the weed as well, because one can see where it goes. Please count it.",
     });
     decideDispute({
@@ -138,13 +152,15 @@ async function main(): Promise<void> {
 
   /** One picture of the second batch waits on the docket for the visitor. */
   function openOne(): void {
-    if (listDocket(db, "open").length > 0) return;
+    if (listDocket(db, "open", now).length > 0) return;
     const image = findSettled(db, glassId);
     if (image)
       contestImage({
         actor: actors.rowan,
         nowMs: Date.now(),
         imageId: image.id,
+        errorKind: "outline",
+        classId: null,
         reason: "Two seedlings that touch were merged into one in the second row. Please look again.",
       });
   }

@@ -124,7 +124,7 @@ export const ImageView = z.object({
   width: z.int().nullable(),
   height: z.int().nullable(),
   proposalState: z.enum(["none", "queued", "done", "failed"]),
-  consensusState: z.enum(["none", "settled", "short", "split"]),
+  consensusState: z.enum(["none", "settled", "short", "split", "void"]),
   slotsWanted: z.int(),
   submitted: z.int(),
   agreement: z.number().nullable(),

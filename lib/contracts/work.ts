@@ -18,12 +18,32 @@ const Reason = z
   .min(10, "Say in a sentence what is wrong; the admin decides on it.")
   .max(2000, "2,000 characters at most.");
 
-export const ContestScoreInput = z.object({ submissionId: z.string(), reason: Reason });
-export const ContestImageInput = z.object({ imageId: z.string(), reason: Reason });
+/** What can be wrong, as whoever contests says it. "disagreement" is kept for pictures that split. */
+const ErrorKindSchema = z.enum(["outline", "class", "missing", "extra", "brief", "broken", "other"]);
+
+const About = { reason: Reason, errorKind: ErrorKindSchema, classId: z.string().nullable() };
+
+export const ContestScoreInput = z.object({ submissionId: z.string(), ...About });
+export type ContestScoreInput = z.output<typeof ContestScoreInput>;
+export const ContestImageInput = z.object({ imageId: z.string(), ...About });
+export const AppealInput = z.object({ disputeId: z.string(), reason: Reason });
+
+/** Earlier decisions that this one follows. */
+const CitedIds = z.array(z.string().min(5).max(40)).max(10).optional();
+const Because = { reason: Reason, citedIds: CitedIds };
 
 export const DecideInput = z.discriminatedUnion("outcome", [
-  z.object({ outcome: z.literal("keep"), reason: Reason }),
-  z.object({ outcome: z.literal("pick"), submissionId: z.string(), reason: Reason }),
-  z.object({ outcome: z.literal("redraw"), document: DeskDocument, reason: Reason }),
+  z.object({ outcome: z.literal("keep"), ...Because }),
+  z.object({ outcome: z.literal("restore"), ...Because }),
+  z.object({ outcome: z.literal("pick"), submissionId: z.string(), ...Because }),
+  z.object({ outcome: z.literal("redraw"), document: DeskDocument, ...Because }),
+  z.object({ outcome: z.literal("broken"), fault: z.enum(["brief", "picture", "product"]), ...Because }),
 ]);
 export type DecideInput = z.output<typeof DecideInput>;
+
+/** A second admin's answer to a proposal; `proposedAtMs` says which one was read. */
+export const ConfirmInput = z.discriminatedUnion("verdict", [
+  z.object({ verdict: z.literal("confirm"), proposedAtMs: z.int() }),
+  z.object({ verdict: z.literal("send-back"), proposedAtMs: z.int(), reason: Reason }),
+]);
+export type ConfirmInput = z.output<typeof ConfirmInput>;

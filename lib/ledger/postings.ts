@@ -226,3 +226,14 @@ export function suspensePosting(netCents: number, bucket: StripeBucket = "availa
     { accountId: accountId("suspense"), cents: netCents },
   ]);
 }
+
+/**
+ * The product broke a task that the team paid for: the platform gives the team's wallet what was paid, and the
+ * cost is its own. Negative cents take it back, when an appeal finds otherwise.
+ */
+export function goodwillPosting(teamId: string, cents: number): Posting {
+  return posting([
+    { accountId: accountId("wallet", teamId), cents },
+    { accountId: accountId("shortfall"), cents: -cents },
+  ]);
+}

@@ -1,4 +1,4 @@
-import { and, count, eq, inArray, ne } from "drizzle-orm";
+import { and, count, eq, inArray, notInArray } from "drizzle-orm";
 import type { Tx } from "@/db/client";
 import type { BatchRow } from "@/db/queries/batches";
 import { images, teamMembers, users } from "@/db/schema";
@@ -46,7 +46,11 @@ export function tellIfAllSettled(
     .select({ count: count() })
     .from(images)
     .where(
-      and(eq(images.batchId, batch.id), eq(images.status, "ready"), ne(images.consensusState, "settled")),
+      and(
+        eq(images.batchId, batch.id),
+        eq(images.status, "ready"),
+        notInArray(images.consensusState, ["settled", "void"]),
+      ),
     )
     .get();
   if ((left?.count ?? 0) > 0) return;

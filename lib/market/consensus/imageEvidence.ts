@@ -16,17 +16,27 @@ const MARK: Record<InstanceOutcome, Note["mark"]> = {
   duplicate: "disputed",
 };
 
+type Run = Pick<RunRow, "id" | "origin" | "agreement" | "verdict" | "result" | "createdAtMs">;
+type Drawn = Pick<SubmissionRow, "id" | "annotatorId" | "document" | "quality" | "payCents">;
+
+type Options = {
+  runId: string | null;
+  named: boolean;
+  /** What was frozen for a dispute, in place of what is there now. */
+  frozen?: { runs: readonly Run[]; submissions: readonly Drawn[] } | undefined;
+};
+
 /**
  * Everything that was drawn on one image, as layers of outlines with the reason for each in words. With
  * `named` the annotators' names are shown (admins); otherwise they are numbered in the order they handed in.
  */
-export function imageEvidence(
-  db: Reader,
-  image: ImageRow,
-  { runId, named }: { runId: string | null; named: boolean },
-) {
-  const run = runId ? findRun(db, runId) : undefined;
-  const list = listSubmissionsOf(db, image.id);
+export function imageEvidence(db: Reader, image: ImageRow, { runId, named, frozen }: Options) {
+  const run: Run | undefined = frozen
+    ? frozen.runs.find((entry) => entry.id === runId)
+    : runId
+      ? findRun(db, runId)
+      : undefined;
+  const list: readonly Drawn[] = frozen?.submissions ?? listSubmissionsOf(db, image.id);
   const key = listClasses(db, image.batchId).map(({ id, number, name, colour }) => ({
     id,
     number,
@@ -57,7 +67,7 @@ export function imageEvidence(
   };
 }
 
-function agreedLayer(run: RunRow) {
+function agreedLayer(run: Run) {
   return {
     id: "agreed",
     label: run.origin === "decision" ? "Decided" : "Agreed",
@@ -72,7 +82,7 @@ function agreedLayer(run: RunRow) {
   };
 }
 
-function personLayer(submission: SubmissionRow, run: RunRow | undefined, label: string) {
+function personLayer(submission: Drawn, run: Run | undefined, label: string) {
   const score = run?.result.scores.find((entry) => entry.annotatorId === submission.annotatorId);
   const leftOut = new Map(
     run?.result.leftOut

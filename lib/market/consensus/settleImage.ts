@@ -22,7 +22,10 @@ import { payOf } from "./payOf";
 import { reliabilityOf } from "./reliabilityOf";
 
 /** The submissions of one image as the consensus engine takes them. */
-export function labelsOf(image: ImageRow, list: readonly SubmissionRow[]): ImageLabels {
+export function labelsOf(
+  image: ImageRow,
+  list: readonly Pick<SubmissionRow, "annotatorId" | "document">[],
+): ImageLabels {
   invariant(image.width && image.height, "an image with submissions was checked");
   return {
     width: image.width,
@@ -52,7 +55,7 @@ export function settleImage({ imageId, nowMs }: { imageId: string; nowMs: number
   const image = findImage(db, imageId);
   const batch = image && findBatch(db, image.batchId);
   if (!image || !batch || batch.status === "closed") return; // closing paid what was there
-  if (image.consensusState === "settled" || image.consensusState === "split") return;
+  if (isOver(image)) return;
   const list = listSubmissionsOf(db, imageId);
   if (list.length < image.slotsWanted) return;
   const key = listClasses(db, batch.id);
@@ -62,7 +65,7 @@ export function settleImage({ imageId, nowMs }: { imageId: string; nowMs: number
   const millis = Math.round(performance.now() - startMs);
   inTransaction(db, (tx) => {
     const current = findImage(tx, imageId);
-    if (!current || current.consensusState === "settled" || current.consensusState === "split") return;
+    if (!current || isOver(current)) return;
     if (findBatch(tx, batch.id)?.status === "closed") return;
     if (listSubmissionsOf(tx, imageId).length !== list.length) return; // one more came in: its own job follows
     const runId = recordRun(tx, {
@@ -95,6 +98,9 @@ export function settleImage({ imageId, nowMs }: { imageId: string; nowMs: number
     openSplitDispute(tx, { batch, image, runId, reason: result.reason, nowMs });
   });
 }
+
+/** Nothing more is merged: it is settled, on the docket, or set aside. */
+const isOver = ({ consensusState }: ImageRow) => consensusState !== "none" && consensusState !== "short";
 
 type NewRun = {
   image: ImageRow;

@@ -1,4 +1,4 @@
-import { and, asc, eq, inArray, isNull, lte, ne } from "drizzle-orm";
+import { and, asc, eq, inArray, isNull, lte } from "drizzle-orm";
 import { getDb, inTransaction, type Tx } from "@/db/client";
 import { findBatch, findImage, listClasses } from "@/db/queries/batches";
 import { listSubmissionsOf } from "@/db/queries/work";
@@ -30,7 +30,7 @@ export function settleOverdue({ nowMs, progress }: Run): { images: number } {
         isNull(submissions.payCents),
         lte(submissions.submittedAtMs, nowMs - env().SETTLE_WITHIN_HOURS * HOUR_MS),
         inArray(batches.status, ["open", "paused"]),
-        ne(images.consensusState, "settled"),
+        inArray(images.consensusState, ["none", "short", "split"]),
       ),
     )
     .orderBy(asc(submissions.imageId))

@@ -1,47 +1,35 @@
-import { and, eq, isNotNull } from "drizzle-orm";
+import { and, eq } from "drizzle-orm";
 import { getDb, inTransaction, type Tx } from "@/db/client";
-import { findBatch, findImage, type BatchRow, type ImageRow } from "@/db/queries/batches";
-import { findRun, findSubmission, listSubmissionsOf, type SubmissionRow } from "@/db/queries/work";
-import { disputes, users } from "@/db/schema";
+import { findBatch, findImage, listClasses, type BatchRow, type ImageRow } from "@/db/queries/batches";
+import {
+  findDispute,
+  findRun,
+  findSubmission,
+  listSubmissionsOf,
+  type SubmissionRow,
+} from "@/db/queries/work";
+import { disputes } from "@/db/schema";
+import type { ErrorKind } from "@/db/schema/work";
 import type { Actor } from "@/lib/auth/actor";
+import { env } from "@/lib/env";
 import { AppError, invariant } from "@/lib/errors";
 import { newId } from "@/lib/ids";
 import { requireBatch } from "@/lib/market/access";
 import { audit } from "@/lib/market/audit";
-import { post } from "@/lib/market/mail";
+import { listPartiesOf } from "./parties";
+import { freezeEvidence } from "./evidence";
+import { noteStep } from "./steps";
+import { tellAdmins, tellParties } from "./tell";
 
 type By = { actor: Actor; nowMs: number };
+/** What kind of error it is about, and which class of the key. */
+type About = { errorKind?: ErrorKind; classId?: string | null };
 
-/** The time within which the docket promises a decision. */
-const TARGET_MS = 48 * 3_600_000;
+const HOUR_MS = 3_600_000;
 
-/** What the decision will be judged on, frozen now: later edits of brief or settings do not touch it. */
-function freeze(batch: BatchRow, image: ImageRow, runId: string | null, list: readonly SubmissionRow[]) {
-  return {
-    runId,
-    imageSize: [image.width, image.height],
-    briefVersion: batch.briefVersion,
-    settings: {
-      kMin: batch.kMin,
-      kMax: batch.kMax,
-      agreementTarget: batch.agreementTarget,
-      baseCents: batch.baseCents,
-      boxCents: batch.boxCents,
-      polygonCents: batch.polygonCents,
-      capCents: batch.capCents,
-      feeBps: batch.feeBps,
-    },
-    submissions: list.map(({ id, sha256, annotatorId, activeSeconds, submittedAtMs, payCents, quality }) => ({
-      id,
-      sha256,
-      annotatorId,
-      activeSeconds,
-      submittedAtMs,
-      payCents,
-      quality,
-    })),
-  };
-}
+/** The time within which the docket promises a decision; more money at stake is decided sooner. */
+const TARGET_MS = 48 * HOUR_MS;
+const TARGET_LARGE_MS = 24 * HOUR_MS;
 
 /** What the decision could move at most: the cap of each submission on the image that it touches. */
 function stakeOf(batch: BatchRow, list: readonly SubmissionRow[]): number {
@@ -56,6 +44,8 @@ type New = {
   batch: BatchRow;
   image: ImageRow;
   kind: "score" | "image" | "split";
+  about?: About;
+  appealOf?: string;
   runId: string | null;
   submissionId: string | null;
   openedBy: string | null;
@@ -63,9 +53,10 @@ type New = {
   nowMs: number;
 };
 
-function insertDispute(
+/** Puts a dispute on the docket: freezes its evidence, tells the admins who may decide it, and both sides. */
+export function insertDispute(
   tx: Tx,
-  { batch, image, kind, runId, submissionId, openedBy, reason, nowMs }: New,
+  { batch, image, kind, about = {}, appealOf, runId, submissionId, openedBy, reason, nowMs }: New,
 ): string {
   const all = listSubmissionsOf(tx, image.id);
   const touched = submissionId ? all.filter((submission) => submission.id === submissionId) : all;
@@ -76,7 +67,13 @@ function insertDispute(
     .where(and(eq(disputes.subject, subject), eq(disputes.status, "open")))
     .get();
   if (open) throw new AppError("conflict", "This is on the docket already.");
+  const classId = about.classId ?? null;
+  if (classId && !listClasses(tx, batch.id).some((row) => row.id === classId))
+    throw new AppError("invalid", "The key has no such class.", { classId: "Not in the key." });
   const id = newId("dsp");
+  const stakeCents = stakeOf(batch, touched);
+  const targetMs = stakeCents >= env().DISPUTE_TWO_ADMINS_CENTS ? TARGET_LARGE_MS : TARGET_MS;
+  const evidence = freezeEvidence(tx, { disputeId: id, batch, image, runId, submissionId, nowMs });
   tx.insert(disputes)
     .values({
       id,
@@ -85,39 +82,57 @@ function insertDispute(
       submissionId,
       subject,
       kind,
+      errorKind: kind === "split" ? "disagreement" : (about.errorKind ?? "other"),
+      classId,
+      appealOf: appealOf ?? null,
       openedBy,
       reason,
       status: "open",
-      evidence: freeze(batch, image, runId, all),
-      stakeCents: stakeOf(batch, touched),
+      evidence: evidence.summary,
+      stakeCents,
       openedAtMs: nowMs,
-      dueAtMs: nowMs + TARGET_MS,
+      dueAtMs: nowMs + targetMs,
     })
     .run();
+  evidence.keep();
+  noteStep(tx, { disputeId: id, kind: "opened", actorId: openedBy, reason, nowMs });
   audit(tx, {
     actorId: openedBy,
     action: "dispute.opened",
     subject: id,
-    detail: { kind, imageId: image.id, submissionId },
+    detail: {
+      kind,
+      imageId: image.id,
+      submissionId,
+      appealOf: appealOf ?? null,
+      evidence: evidence.summary.sha256,
+    },
     nowMs,
   });
-  for (const admin of tx
-    .select()
-    .from(users)
-    .where(and(eq(users.role, "admin"), eq(users.status, "active"), isNotNull(users.emailVerifiedAtMs)))
-    .all()) {
-    post(
+  const dispute = findDispute(tx, id);
+  invariant(dispute, "the dispute was written");
+  const what = appealOf ? "An appeal" : "A dispute";
+  tellAdmins(tx, dispute, {
+    subject: `On the docket: ${image.fileName}`,
+    lines: [`${what} waits for a decision: ${batch.title}, ${image.fileName}.`, reason],
+    label: "Open it",
+    nowMs,
+  });
+  if (openedBy)
+    tellParties(
       tx,
+      listPartiesOf(tx, dispute).filter((party) => party.userId !== openedBy),
       {
-        to: admin.email,
-        subject: `On the docket: ${image.fileName}`,
-        lines: [`A dispute waits for a decision: ${batch.title}, ${image.fileName}.`, reason],
-        action: { label: "Open it", path: `/docket/${id}` },
-        tag: "docket",
+        subject: `${appealOf ? "Appealed" : "Contested"}: ${image.fileName}`,
+        lines: [
+          `${appealOf ? "The decision about" : "The result of"} ${image.fileName} (${batch.title}) is ${appealOf ? "appealed" : "contested"}.`,
+          `The reason given: ${reason}`,
+          "An admin decides on the evidence as it is now. Until then nothing changes.",
+        ],
+        tag: "contested",
+        nowMs,
       },
-      nowMs,
     );
-  }
   return id;
 }
 
@@ -145,7 +160,7 @@ export function openSplitDispute(
 }
 
 function requireWindow(batch: BatchRow, sinceMs: number, nowMs: number): void {
-  if (nowMs > sinceMs + batch.disputeWindowHours * 3_600_000) {
+  if (nowMs > sinceMs + batch.disputeWindowHours * HOUR_MS) {
     throw new AppError("conflict", `The ${batch.disputeWindowHours} hours for contesting are over.`);
   }
 }
@@ -157,7 +172,8 @@ function requireUndecided(tx: Tx, subject: string): void {
     .from(disputes)
     .where(and(eq(disputes.subject, subject), eq(disputes.status, "decided")))
     .get();
-  if (decided) throw new AppError("conflict", "An admin has decided on this already. Write to us to appeal.");
+  if (decided)
+    throw new AppError("conflict", "An admin has decided on this already. You can appeal the decision.");
 }
 
 /** An annotator contests the score of an own submission. */
@@ -166,7 +182,8 @@ export function contestScore({
   nowMs,
   submissionId,
   reason,
-}: By & { submissionId: string; reason: string }): string {
+  ...about
+}: By & About & { submissionId: string; reason: string }): string {
   return inTransaction(getDb(), (tx) => {
     const submission = findSubmission(tx, submissionId);
     if (!submission || submission.annotatorId !== actor.id)
@@ -174,7 +191,10 @@ export function contestScore({
     const run = submission.scoredRunId ? findRun(tx, submission.scoredRunId) : undefined;
     if (!run) throw new AppError("conflict", "There is no score to contest yet.");
     if (run.origin === "decision")
-      throw new AppError("conflict", "An admin has decided on this image already. Write to us to appeal.");
+      throw new AppError(
+        "conflict",
+        "An admin has decided on this image already. You can appeal the decision.",
+      );
     requireUndecided(tx, submission.id);
     const batch = findBatch(tx, submission.batchId);
     const image = findImage(tx, submission.imageId);
@@ -184,6 +204,7 @@ export function contestScore({
       batch,
       image,
       kind: "score",
+      about,
       runId: run.id,
       submissionId,
       openedBy: actor.id,
@@ -199,7 +220,8 @@ export function contestImage({
   nowMs,
   imageId,
   reason,
-}: By & { imageId: string; reason: string }): string {
+  ...about
+}: By & About & { imageId: string; reason: string }): string {
   return inTransaction(getDb(), (tx) => {
     const image = findImage(tx, imageId);
     if (!image) throw new AppError("not_found", "There is no such image.");
@@ -208,13 +230,17 @@ export function contestImage({
     if (!run || image.consensusState !== "settled")
       throw new AppError("conflict", "Only a settled image can be contested.");
     if (run.origin === "decision")
-      throw new AppError("conflict", "An admin has decided on this image already. Write to us to appeal.");
+      throw new AppError(
+        "conflict",
+        "An admin has decided on this image already. You can appeal the decision.",
+      );
     requireUndecided(tx, image.id);
     requireWindow(batch, run.createdAtMs, nowMs);
     return insertDispute(tx, {
       batch,
       image,
       kind: "image",
+      about,
       runId: run.id,
       submissionId: null,
       openedBy: actor.id,
@@ -234,6 +260,7 @@ export function withdrawDispute({ actor, nowMs, disputeId }: By & { disputeId: s
       .run();
     if (changed.changes === 0)
       throw new AppError("not_found", "There is no open dispute of yours with this id.");
+    noteStep(tx, { disputeId, kind: "withdrawn", actorId: actor.id, nowMs });
     audit(tx, { actorId: actor.id, action: "dispute.withdrawn", subject: disputeId, nowMs });
   });
 }

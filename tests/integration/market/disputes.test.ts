@@ -16,6 +16,7 @@ import { payoutStartPosting } from "@/lib/ledger/postings";
 import { closeBatch } from "@/lib/market/batches/closeBatch";
 import { settleImage } from "@/lib/market/consensus/settleImage";
 import { decideDispute } from "@/lib/market/disputes/decideDispute";
+import { findEvidence } from "@/lib/market/disputes/evidence";
 import { contestImage, contestScore, withdrawDispute } from "@/lib/market/disputes/openDispute";
 import { freshDb } from "@/tests/support/db";
 import {
@@ -95,10 +96,10 @@ describe("contesting a score", () => {
     expect(dispute).toMatchObject({ kind: "score", submissionId, status: "open", openedBy: annotator(0).id });
     // The cap is 40 cents and 14 are paid: 26 more at most.
     expect(dispute?.stakeCents).toBe(26);
-    expect(dispute?.evidence).toMatchObject({
-      briefVersion: 1,
-      settings: { capCents: 40 },
-      imageSize: [640, 480],
+    expect(dispute?.evidence).toMatchObject({ briefVersion: 1 });
+    expect(findEvidence(db, dispute?.id ?? "")?.snapshot).toMatchObject({
+      batch: { capCents: 40 },
+      image: { width: 640, height: 480 },
     });
     expect(letters(db, "docket")).toHaveLength(1);
   });
@@ -185,7 +186,7 @@ describe("a decision", () => {
     const [submissionId] = settledImage(market) as [string];
     const disputeId = contest(submissionId);
     const [runsBefore, settledAtMs] = [runs(), findImage(db, imageId)?.settledAtMs];
-    expect(decide(disputeId, keep)).toEqual({ movedCents: 0 });
+    expect(decide(disputeId, keep)).toEqual({ state: "decided", movedCents: 0 });
     expect([runs(), pays()]).toEqual([runsBefore, [14, 14]]);
     expect(findImage(db, imageId)?.settledAtMs).toBe(settledAtMs);
     expect(findDispute(db, disputeId)).toMatchObject({

@@ -23,6 +23,12 @@ describe("the postings of the market move exactly", () => {
       postings.refundStartPosting("t", 5),
       { "wallet:t": -5, "refunding:t": 5 },
     ],
+    [
+      "what the platform gives for a task that it broke",
+      postings.goodwillPosting("t", 33),
+      { "wallet:t": 33, shortfall: -33 },
+    ],
+    ["the same back after an appeal", postings.goodwillPosting("t", -33), { "wallet:t": -33, shortfall: 33 }],
     ["a refund out of Stripe", postings.refundSentPosting("t", 5), { "refunding:t": -5, stripe: 5 }],
     [
       "a refund for which Stripe takes a fee",

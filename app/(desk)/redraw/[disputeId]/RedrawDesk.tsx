@@ -36,12 +36,16 @@ export function RedrawDesk({ disputeId, task }: { disputeId: string; task: DeskT
     setPending(true);
     setProblem(null);
     try {
-      await callJson("POST", `/api/disputes/${disputeId}/decision`, {
-        outcome: "redraw",
-        document: drawn,
-        reason,
-      });
-      toast.success("Decided.");
+      const answer = await callJson<{ state: "decided" | "proposed" }>(
+        "POST",
+        `/api/disputes/${disputeId}/decision`,
+        {
+          outcome: "redraw",
+          document: drawn,
+          reason,
+        },
+      );
+      toast.success(answer.state === "proposed" ? "Proposed. Another admin confirms it." : "Decided.");
       router.replace(`/docket/${disputeId}`);
     } catch (error) {
       setProblem(error instanceof Error ? error.message : "That did not work.");

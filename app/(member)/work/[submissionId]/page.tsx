@@ -10,9 +10,12 @@ import { PageHeader } from "@/components/ui/PageHeader";
 import { Sheet } from "@/components/ui/Sheet";
 import { Stat, Stats } from "@/components/ui/Stat";
 import { When } from "@/components/ui/When";
+import { DisputeNotices } from "@/app/(member)/_disputes/DisputeNotices";
 import { requirePageActor } from "@/lib/auth/page";
 import { nowMs } from "@/lib/clock";
 import type { InstanceOutcome } from "@/lib/consensus/types";
+import { env } from "@/lib/env";
+import { isParty } from "@/lib/market/disputes/parties";
 import { ContestScore } from "./_components/ContestScore";
 
 export const metadata: Metadata = { title: "Your score" };
@@ -37,34 +40,33 @@ export default async function WorkItemPage({ params }: Props) {
   const image = findImage(db, submission.imageId);
   const batch = findBatch(db, submission.batchId);
   if (!image?.width || !image.height || !batch) notFound();
+  const key = listClasses(db, batch.id).map(({ id, number, name, colour }) => ({ id, number, name, colour }));
   const run = submission.scoredRunId ? findRun(db, submission.scoredRunId) : undefined;
   const score = run?.result.scores.find((entry) => entry.annotatorId === actor.id);
   const outcomes = new Map(score?.instances.map((entry) => [entry.instanceId, entry]));
   const disputes = listDisputesOf(db, batch.id).filter(
-    (dispute) =>
-      dispute.submissionId === submission.id ||
-      (dispute.imageId === image.id && dispute.submissionId === null),
+    (dispute) => dispute.imageId === image.id && isParty(db, dispute, actor.id),
   );
   const open = disputes.find((dispute) => dispute.status === "open");
-  const decided = disputes.find((dispute) => dispute.status === "decided");
+  const isDecided = disputes.some(
+    (dispute) => dispute.status === "decided" && dispute.subject === submission.id,
+  );
   const closesAtMs = run ? run.createdAtMs + batch.disputeWindowHours * 3_600_000 : 0;
-  const mayContest = run?.origin === "engine" && !open && nowMs() <= closesAtMs;
+  const mayContest = run?.origin === "engine" && !open && !isDecided && nowMs() <= closesAtMs;
   return (
     <>
       <PageHeader
         title={image.fileName}
         crumbs={[{ href: "/work", label: "Work" }]}
         lead={batch.title}
-        actions={mayContest ? <ContestScore submissionId={submission.id} closesAtMs={closesAtMs} /> : null}
+        actions={
+          mayContest ? (
+            <ContestScore submissionId={submission.id} closesAtMs={closesAtMs} classes={key} />
+          ) : null
+        }
       />
       <div className="grid gap-6">
-        {open ? (
-          <Notice kind="caution" title="On the docket">
-            {open.openedBy === actor.id ? `You wrote: ${open.reason}` : open.reason} A decision is due{" "}
-            <When at={open.dueAtMs} form="relative" />.
-          </Notice>
-        ) : null}
-        {decided ? <Notice title="Decided by an admin">{decided.decisionReason}</Notice> : null}
+        <DisputeNotices disputes={disputes} actorId={actor.id} />
         {score ? (
           <Stats>
             <Stat caption="Score">{score.quality.toFixed(2)}</Stat>
@@ -76,10 +78,19 @@ export default async function WorkItemPage({ params }: Props) {
             </Stat>
             <Stat caption="Mean overlap">{score.meanIou === null ? "–" : score.meanIou.toFixed(2)}</Stat>
           </Stats>
+        ) : image.consensusState === "void" ? (
+          <Stats>
+            <Stat caption="Score" note="does not count">
+              none
+            </Stat>
+            <Stat caption="Pay">
+              <Money cents={submission.payCents ?? 0} />
+            </Stat>
+          </Stats>
         ) : (
           <Notice title="Waiting for the others">
-            Your score and pay follow when enough people have drawn this picture, at the latest when the batch
-            is closed.
+            Your score and pay follow when enough people have drawn this picture, and your pay at the latest{" "}
+            <When at={submission.submittedAtMs + env().SETTLE_WITHIN_HOURS * 3_600_000} form="relative" />.
           </Notice>
         )}
         <Sheet title="Your outlines and the agreed ones">
@@ -88,12 +99,7 @@ export default async function WorkItemPage({ params }: Props) {
             imageName={image.fileName}
             width={image.width}
             height={image.height}
-            classes={listClasses(db, batch.id).map(({ id, number, name, colour }) => ({
-              id,
-              number,
-              name,
-              colour,
-            }))}
+            classes={key}
             layers={[
               {
                 id: "own",

@@ -8,7 +8,7 @@ import { StateMark } from "@/components/ui/StateMark";
 type Tile = {
   id: string;
   fileName: string;
-  consensusState: "none" | "settled" | "short" | "split";
+  consensusState: "none" | "settled" | "short" | "split" | "void";
   submitted: number;
   slotsWanted: number;
   agreement: number | null;
@@ -20,6 +20,7 @@ const FILTERS = [
   { value: "short", label: "Short" },
   { value: "split", label: "Split" },
   { value: "none", label: "To draw" },
+  { value: "void", label: "Set aside" },
 ] as const;
 
 const PAGE = 48;
@@ -84,5 +85,6 @@ export function ImageMark({ state }: { state: Tile["consensusState"] }) {
   if (state === "settled") return <StateMark state="agreed">settled</StateMark>;
   if (state === "short") return <StateMark state="waits">short</StateMark>;
   if (state === "split") return <StateMark state="disputed">split</StateMark>;
+  if (state === "void") return <StateMark state="plain">set aside</StateMark>;
   return <StateMark state="plain">to draw</StateMark>;
 }

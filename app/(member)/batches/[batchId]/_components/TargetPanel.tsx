@@ -14,7 +14,11 @@ type Props = {
   kMax: number;
   capCents: number;
   feeBps: number;
-  agreements: { agreement: number; submissions: number; state: "none" | "settled" | "short" | "split" }[];
+  agreements: {
+    agreement: number;
+    submissions: number;
+    state: "none" | "settled" | "short" | "split" | "void";
+  }[];
   medianPayCents: number | null;
 };
 

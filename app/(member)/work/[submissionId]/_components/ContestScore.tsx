@@ -1,21 +1,18 @@
 "use client";
 
-import { useRouter } from "next/navigation";
-import { useState } from "react";
-import { toast } from "sonner";
-import { Button } from "@/components/ui/Button";
-import { ConfirmDialog } from "@/components/ui/ConfirmDialog";
-import { TextArea } from "@/components/ui/TextArea";
+import { ContestDialog, type KeyClass } from "@/app/(member)/_disputes/ContestDialog";
 import { When } from "@/components/ui/When";
 import { contest } from "../../actions";
 
+type Props = { submissionId: string; closesAtMs: number; classes: readonly KeyClass[] };
+
 /** Puts the own score on the docket, with a reason. */
-export function ContestScore({ submissionId, closesAtMs }: { submissionId: string; closesAtMs: number }) {
-  const router = useRouter();
-  const [reason, setReason] = useState("");
+export function ContestScore({ submissionId, closesAtMs, classes }: Props) {
   return (
-    <ConfirmDialog
+    <ContestDialog
+      label="Contest the score"
       title="Contest this score?"
+      classes={classes}
       consequence={
         <>
           An admin looks at your outlines, those of the others, and the brief as it was when you claimed the
@@ -23,22 +20,7 @@ export function ContestScore({ submissionId, closesAtMs }: { submissionId: strin
           until <When at={closesAtMs} />.
         </>
       }
-      confirmLabel="Contest it"
-      trigger={<Button>Contest the score</Button>}
-      onConfirm={async () => {
-        const answer = await contest(null, { submissionId, reason });
-        if (!answer.ok) return answer.message;
-        toast.success("It is on the docket.");
-        router.refresh();
-      }}
-    >
-      <TextArea
-        label="What is wrong with it?"
-        rows={4}
-        maxLength={2000}
-        value={reason}
-        onChange={(event) => setReason(event.currentTarget.value)}
-      />
-    </ConfirmDialog>
+      send={(about) => contest(null, { submissionId, ...about })}
+    />
   );
 }

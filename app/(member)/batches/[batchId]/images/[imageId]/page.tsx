@@ -3,16 +3,16 @@ import { notFound } from "next/navigation";
 import { getDb } from "@/db/client";
 import { findImage } from "@/db/queries/batches";
 import { getTeamRole } from "@/db/queries/people";
-import { findOpenDispute, listRuns } from "@/db/queries/work";
+import { listDisputesOf, listRuns } from "@/db/queries/work";
 import { EvidenceView } from "@/components/evidence/EvidenceView";
 import { EmptyState } from "@/components/ui/EmptyState";
 import { formatPercent } from "@/components/ui/Figures";
-import { Notice } from "@/components/ui/Notice";
 import { PageHeader } from "@/components/ui/PageHeader";
 import { Sheet } from "@/components/ui/Sheet";
 import { Stat, Stats } from "@/components/ui/Stat";
 import { Cell, HeadCell, Row, RowHead, Table, TableBody, TableHead } from "@/components/ui/Table";
 import { When } from "@/components/ui/When";
+import { DisputeNotices } from "@/app/(member)/_disputes/DisputeNotices";
 import { orNotFound, requirePageActor } from "@/lib/auth/page";
 import { nowMs } from "@/lib/clock";
 import { requireBatch } from "@/lib/market/access";
@@ -35,7 +35,10 @@ export default async function ImagePage({ params }: Props) {
   const evidence = imageEvidence(db, image, { runId: image.currentRunId, named: actor.role === "admin" });
   const { run } = evidence;
   const runs = listRuns(db, imageId);
-  const dispute = findOpenDispute(db, imageId);
+  const disputes = listDisputesOf(db, batchId).filter((dispute) => dispute.imageId === imageId);
+  const isOver = disputes.some(
+    (dispute) => dispute.status === "open" || (dispute.status === "decided" && dispute.subject === imageId),
+  );
   const role = getTeamRole(db, batch.teamId, actor.id);
   const isInWindow = run !== undefined && nowMs() <= run.createdAtMs + batch.disputeWindowHours * 3_600_000;
   const mayContest =
@@ -43,7 +46,7 @@ export default async function ImagePage({ params }: Props) {
     image.consensusState === "settled" &&
     run?.origin === "engine" &&
     isInWindow &&
-    !dispute;
+    !isOver;
   return (
     <>
       <PageHeader
@@ -53,14 +56,14 @@ export default async function ImagePage({ params }: Props) {
           { href: `/batches/${batchId}`, label: batch.title },
         ]}
         marks={<ImageMark state={image.consensusState} />}
-        actions={mayContest ? <ContestImage imageId={imageId} fileName={image.fileName} /> : null}
+        actions={
+          mayContest ? (
+            <ContestImage imageId={imageId} fileName={image.fileName} classes={evidence.classes} />
+          ) : null
+        }
       />
       <div className="grid gap-6">
-        {dispute ? (
-          <Notice kind="caution" title="On the docket">
-            {dispute.reason} A decision is due <When at={dispute.dueAtMs} form="relative" />.
-          </Notice>
-        ) : null}
+        <DisputeNotices disputes={disputes} actorId={actor.id} />
         {run ? (
           <>
             <p className="max-w-prose">{run.result.reason}</p>

@@ -1,37 +1,19 @@
 "use client";
 
-import { useRouter } from "next/navigation";
-import { useState } from "react";
-import { toast } from "sonner";
-import { Button } from "@/components/ui/Button";
-import { ConfirmDialog } from "@/components/ui/ConfirmDialog";
-import { TextArea } from "@/components/ui/TextArea";
+import { ContestDialog, type KeyClass } from "@/app/(member)/_disputes/ContestDialog";
 import { contest } from "../../../../actions";
 
+type Props = { imageId: string; fileName: string; classes: readonly KeyClass[] };
+
 /** Puts the picture on the docket, with a reason. */
-export function ContestImage({ imageId, fileName }: { imageId: string; fileName: string }) {
-  const router = useRouter();
-  const [reason, setReason] = useState("");
+export function ContestImage({ imageId, fileName, classes }: Props) {
   return (
-    <ConfirmDialog
+    <ContestDialog
+      label="Contest the result"
       title={`Contest ${fileName}?`}
+      classes={classes}
       consequence="An admin looks at every outline and the brief, and keeps the result, picks one annotator's labels or draws it anew. Everybody concerned gets the reason. Pay is set right by the decision."
-      confirmLabel="Contest it"
-      trigger={<Button>Contest the result</Button>}
-      onConfirm={async () => {
-        const answer = await contest(null, { imageId, reason });
-        if (!answer.ok) return answer.message;
-        toast.success("It is on the docket.");
-        router.refresh();
-      }}
-    >
-      <TextArea
-        label="What is wrong?"
-        rows={4}
-        maxLength={2000}
-        value={reason}
-        onChange={(event) => setReason(event.currentTarget.value)}
-      />
-    </ConfirmDialog>
+      send={(about) => contest(null, { imageId, ...about })}
+    />
   );
 }
