@@ -139,6 +139,9 @@ export class Episode {
         if (this.broken !== undefined) throw this.broken;
         if (this.step % AUDIT_EVERY === 0) this.check();
       }
+      // A process that came by too few points to die is stopped as an operator would.
+      await this.product.stop();
+      this.product.start();
       await this.windDown();
       this.check(true);
     } catch (error) {
