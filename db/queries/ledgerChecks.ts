@@ -161,7 +161,10 @@ const submissionsAddUp: Check = (db) =>
         `submission ${row.id} earns ${row.pay} + ${row.fee}, its postings ${row.paid} + ${row.charged}`,
     );
 
-/** What takes a posting back mirrors all of it: same accounts, opposite cents. */
+/**
+ * What takes a posting back mirrors all of it: same accounts, opposite cents. What moved from pending to available
+ * in between is part of it; what moves afterwards belongs to the posting that took its place.
+ */
 const mirrorsMirror: Check = (db) =>
   db
     .all<{ id: string; linked_to: string }>(
@@ -170,7 +173,7 @@ const mirrorsMirror: Check = (db) =>
           select account_id, cents from ledger_entries where posting_id in (p.id, p.linked_to)
           union all
           select e.account_id, e.cents from ledger_postings m join ledger_entries e on e.posting_id = m.id
-            where m.source = p.source and m.source_id = p.source_id and m.kind = 'available'
+            where m.source = p.source and m.source_id = p.source_id and m.kind = 'available' and m.rowid < p.rowid
         ) group by account_id having sum(cents) <> 0)`,
     )
     .map((row) => `posting ${row.id} does not take back all of ${row.linked_to}`);

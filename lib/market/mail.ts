@@ -11,6 +11,9 @@ export type Letter = {
   tag: string;
 };
 
+/** Some four hours of a mail service that is not there; the keys that keep a letter single last a day. */
+const ATTEMPTS_MAX = 60;
+
 const escape = (text: string) =>
   text.replaceAll("&", "&amp;").replaceAll("<", "&lt;").replaceAll(">", "&gt;").replaceAll('"', "&quot;");
 
@@ -30,5 +33,6 @@ export function post(tx: Reader, letter: Letter, nowMs: number): void {
     payload: { to: letter.to, subject: letter.subject, html, text, tag: letter.tag },
     nowMs,
     priority: 5,
+    attemptsMax: ATTEMPTS_MAX,
   });
 }

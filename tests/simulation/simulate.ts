@@ -13,6 +13,7 @@ const { values } = parseArgs({
     steps: { type: "string", default: "5000" },
     seeds: { type: "string", default: "1" },
     kills: { type: "string", default: "5" },
+    first: { type: "boolean", default: false },
     verbose: { type: "boolean", default: false },
   },
 });
@@ -91,6 +92,7 @@ async function main(): Promise<number> {
       total.failed += 1;
       console.error(`VIOLATION at step ${report.at} of seed ${next}:\n  ${report.violations.join("\n  ")}`);
       console.error(`replay: npm run simulate -- --seed ${next} --steps ${steps} --kills ${kills}`);
+      if (values.first) break;
     }
   } finally {
     rmSync(folder, { recursive: true, force: true });

@@ -12,6 +12,9 @@ import { refreshAccount } from "./onboarding";
 import { settlePayout, settleReversals } from "./payouts";
 import { settleRefund } from "./refunds";
 
+/** Stripe sends nothing again that was answered, so the attempts outlast a day on which it cannot be asked. */
+const ATTEMPTS_MAX = 320;
+
 type Delivery = { body: string; signature: string | null; nowMs: number };
 
 /**
@@ -52,6 +55,7 @@ export function receiveStripeEvent({ body, signature, nowMs }: Delivery): void {
       uniqueKey: `stripe:${event.id}`,
       nowMs,
       priority: 8,
+      attemptsMax: ATTEMPTS_MAX,
     });
   });
 }
