@@ -1,8 +1,8 @@
 import { createHash } from "node:crypto";
+import { readFile } from "node:fs/promises";
 import Database from "better-sqlite3";
 import type { Browser, BrowserContext, Page } from "playwright-core";
 import { afterAll, beforeAll, describe, expect, it } from "vitest";
-import yauzl from "yauzl";
 import type { DeskDocument, DeskTask } from "@/lib/contracts/desk";
 import { shapeIou } from "@/lib/geometry/iou";
 import type { Box, Point, Shape } from "@/lib/geometry/types";
@@ -14,6 +14,7 @@ import { signIn, signUpByMail } from "../support/people";
 import { coinsPicture, pebblePicture, turned, type TestPicture } from "../support/jobPictures";
 import { discoverScreens } from "../support/screens";
 import { startStack, type Stack } from "../support/stack";
+import { unzip } from "../support/unzip";
 
 /**
  * The whole job in the real application, with the real worker and the stand-ins: people sign up by mail,
@@ -228,7 +229,7 @@ describe("the whole job", () => {
       const link = requester.getByRole("link", { name: "Download" });
       await link.waitFor({ timeout: 30_000 });
       const [download] = await Promise.all([requester.waitForEvent("download"), link.click()]);
-      const files = await unzip(await download.path());
+      const files = await unzip(await readFile(await download.path()));
       const manifest = files.get("manifest-sha256.txt")?.toString("utf8") ?? "";
       for (const line of manifest.trim().split("\n")) {
         const [sum = "", name = ""] = line.split("  ");
@@ -497,29 +498,6 @@ function boxOf(shape: Shape): Box {
     Math.max(...xs) - Math.min(...xs),
     Math.max(...ys) - Math.min(...ys),
   ];
-}
-
-function unzip(file: string): Promise<Map<string, Buffer>> {
-  return new Promise((resolve, reject) => {
-    yauzl.open(file, { lazyEntries: true }, (error, zip) => {
-      if (error) return reject(error);
-      const files = new Map<string, Buffer>();
-      zip.on("entry", (entry: yauzl.Entry) => {
-        zip.openReadStream(entry, (problem, stream) => {
-          if (problem) return reject(problem);
-          const chunks: Buffer[] = [];
-          stream.on("data", (chunk: Buffer) => chunks.push(chunk));
-          stream.on("end", () => {
-            files.set(entry.fileName, Buffer.concat(chunks));
-            zip.readEntry();
-          });
-        });
-      });
-      zip.on("end", () => resolve(files));
-      zip.on("error", reject);
-      zip.readEntry();
-    });
-  });
 }
 
 type Coco = {

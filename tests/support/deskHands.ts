@@ -18,22 +18,24 @@ export class DeskHands {
     await this.page.waitForTimeout(150);
   }
 
-  private async toPage([x, y]: Point): Promise<{ x: number; y: number }> {
-    const [rect, view] = await this.stage.evaluate(
-      (element): [DOMRect, { scale: number; x: number; y: number }] => {
-        const { scale = "1", x = "0", y = "0" } = (element as HTMLElement).dataset;
-        return [
-          element.getBoundingClientRect().toJSON() as DOMRect,
-          { scale: Number(scale), x: Number(x), y: Number(y) },
-        ];
-      },
-    );
-    return { x: rect.x + x * view.scale + view.x, y: rect.y + y * view.scale + view.y };
+  /** The stage's view: screen px for one image px, and where the image's corner lies on the page. */
+  view(): Promise<{ scale: number; left: number; top: number }> {
+    return this.stage.evaluate((element) => {
+      const { scale = "1", x = "0", y = "0" } = (element as HTMLElement).dataset;
+      const rect = element.getBoundingClientRect();
+      return { scale: Number(scale), left: rect.x + Number(x), top: rect.y + Number(y) };
+    });
+  }
+
+  /** Where an image point lies on the page, CSS px. */
+  async at([x, y]: Point): Promise<{ x: number; y: number }> {
+    const { scale, left, top } = await this.view();
+    return { x: left + x * scale, y: top + y * scale };
   }
 
   async box([x, y, width, height]: Box): Promise<void> {
-    const from = await this.toPage([x, y]);
-    const to = await this.toPage([x + width, y + height]);
+    const from = await this.at([x, y]);
+    const to = await this.at([x + width, y + height]);
     await this.page.mouse.move(from.x, from.y);
     await this.page.mouse.down();
     await this.page.mouse.move((from.x + to.x) / 2, (from.y + to.y) / 2);
@@ -41,16 +43,25 @@ export class DeskHands {
     await this.page.mouse.up();
   }
 
+  /** Presses and drags, and does not let go. */
+  async beginBox([x, y, width, height]: Box): Promise<void> {
+    const from = await this.at([x, y]);
+    const to = await this.at([x + width, y + height]);
+    await this.page.mouse.move(from.x, from.y);
+    await this.page.mouse.down();
+    await this.page.mouse.move(to.x, to.y);
+  }
+
   async outline(ring: readonly Point[]): Promise<void> {
     for (const point of ring) {
-      const at = await this.toPage(point);
+      const at = await this.at(point);
       await this.page.mouse.click(at.x, at.y);
     }
     await this.page.keyboard.press("Enter");
   }
 
   async click(point: Point): Promise<void> {
-    const at = await this.toPage(point);
+    const at = await this.at(point);
     await this.page.mouse.click(at.x, at.y);
   }
 

@@ -3,6 +3,7 @@ import os from "node:os";
 import path from "node:path";
 import { http } from "msw";
 import { setupServer, type SetupServer } from "msw/node";
+import { vi } from "vitest";
 import { startAll, type Fakes, type FakesOptions } from "@/fakes/index";
 import { fromRequest, type Core } from "@/fakes/shared/transport";
 import { createResendClient } from "@/lib/services/resend";
@@ -108,4 +109,12 @@ export async function eventually<T>(
     if (Date.now() > deadline) throw new Error("it did not come about in time");
     await new Promise((resolve) => setTimeout(resolve, 10));
   }
+}
+
+/** Lets the product's own object store (lib/services/store) talk to these stand-ins, for the rest of the test file. */
+export function pointStoreAt(fakes: TestFakes): void {
+  vi.stubEnv("S3_ENDPOINT", fakes.s3.url);
+  vi.stubEnv("S3_REGION", S3_KEYS.region);
+  vi.stubEnv("S3_ACCESS_KEY_ID", S3_KEYS.accessKeyId);
+  vi.stubEnv("S3_SECRET_ACCESS_KEY", S3_KEYS.secretAccessKey);
 }

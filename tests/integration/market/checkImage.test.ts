@@ -1,7 +1,7 @@
 import { createHash } from "node:crypto";
 import { eq, sql } from "drizzle-orm";
 import sharp from "sharp";
-import { afterAll, beforeAll, beforeEach, describe, expect, it, vi } from "vitest";
+import { afterAll, beforeAll, beforeEach, describe, expect, it } from "vitest";
 import type { Db } from "@/db/client";
 import { findImage } from "@/db/queries/batches";
 import { jobs } from "@/db/schema";
@@ -9,16 +9,13 @@ import { checkImage } from "@/lib/market/images/checkImage";
 import { openImage } from "@/lib/market/images/openImage";
 import { ensureBucket, findObjectSize, putObject } from "@/lib/services/store";
 import { freshDb } from "@/tests/support/db";
-import { S3_KEYS, startTestFakes, type TestFakes } from "@/tests/support/fakes";
+import { pointStoreAt, startTestFakes, type TestFakes } from "@/tests/support/fakes";
 import { draftBatch, image, person, START_MS, team } from "@/tests/support/market";
 
 let fakes: TestFakes;
 beforeAll(async () => {
   fakes = await startTestFakes();
-  vi.stubEnv("S3_ENDPOINT", fakes.s3.url);
-  vi.stubEnv("S3_REGION", S3_KEYS.region);
-  vi.stubEnv("S3_ACCESS_KEY_ID", S3_KEYS.accessKeyId);
-  vi.stubEnv("S3_SECRET_ACCESS_KEY", S3_KEYS.secretAccessKey);
+  pointStoreAt(fakes);
   await ensureBucket();
 });
 afterAll(() => fakes.remove());

@@ -1,8 +1,7 @@
 import { createHash } from "node:crypto";
 import { eq } from "drizzle-orm";
 import sharp, { type Sharp } from "sharp";
-import { afterAll, beforeAll, beforeEach, describe, expect, it, vi } from "vitest";
-import yauzl from "yauzl";
+import { afterAll, beforeAll, beforeEach, describe, expect, it } from "vitest";
 import { inTransaction, type Db } from "@/db/client";
 import { findImage, findRelease } from "@/db/queries/batches";
 import { images, type ReleaseOptions } from "@/db/schema";
@@ -14,7 +13,7 @@ import { requestRelease } from "@/lib/market/releases/requestRelease";
 import { settleImage } from "@/lib/market/consensus/settleImage";
 import { ensureBucket, getObject, putObject } from "@/lib/services/store";
 import { freshDb } from "@/tests/support/db";
-import { S3_KEYS, startTestFakes, type TestFakes } from "@/tests/support/fakes";
+import { pointStoreAt, startTestFakes, type TestFakes } from "@/tests/support/fakes";
 import {
   bottles,
   MINUTE_MS,
@@ -26,14 +25,12 @@ import {
   work,
   type Market,
 } from "@/tests/support/market";
+import { unzip } from "@/tests/support/unzip";
 
 let fakes: TestFakes;
 beforeAll(async () => {
   fakes = await startTestFakes();
-  vi.stubEnv("S3_ENDPOINT", fakes.s3.url);
-  vi.stubEnv("S3_REGION", S3_KEYS.region);
-  vi.stubEnv("S3_ACCESS_KEY_ID", S3_KEYS.accessKeyId);
-  vi.stubEnv("S3_SECRET_ACCESS_KEY", S3_KEYS.secretAccessKey);
+  pointStoreAt(fakes);
   await ensureBucket();
 });
 afterAll(() => fakes.remove());
@@ -64,28 +61,6 @@ async function release(options: Partial<ReleaseOptions> = {}) {
   const files = await unzip(zip);
   const json = <T>(name: string) => JSON.parse(files.get(name)?.toString("utf8") ?? "null") as T;
   return { releaseId, row, zip, files, json, coco: json<Coco>("data/coco/instances.json") };
-}
-
-function unzip(bytes: Buffer): Promise<Map<string, Buffer>> {
-  return new Promise((resolve, reject) => {
-    const files = new Map<string, Buffer>();
-    yauzl.fromBuffer(bytes, { lazyEntries: true }, (error, zip) => {
-      if (error) return reject(error);
-      zip.on("entry", (entry: yauzl.Entry) =>
-        zip.openReadStream(entry, (failure, stream) => {
-          if (failure) return reject(failure);
-          const parts: Buffer[] = [];
-          stream.on("data", (part: Buffer) => parts.push(part));
-          stream.on("end", () => {
-            files.set(entry.fileName, Buffer.concat(parts));
-            zip.readEntry();
-          });
-        }),
-      );
-      zip.on("end", () => resolve(files));
-      zip.readEntry();
-    });
-  });
 }
 
 const sha256 = (bytes: Buffer) => createHash("sha256").update(bytes).digest("hex");
