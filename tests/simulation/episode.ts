@@ -190,7 +190,7 @@ export class Episode {
       const actor = await this.product.get("person", { role: "requester", name });
       this.requesters.push({ actor, teamId: await this.product.get("team", { actor }) });
     }
-    for (const name of ["warden", "keeper"])
+    for (const name of ["warden", "keeper", "pilot", "reeve", "bailiff"])
       this.admins.push(await this.product.get("person", { role: "admin", name }));
     for (const [index, kind] of CROWD.entries()) {
       const actor = await this.product.get("person", { role: "annotator", name: `${kind}${index}` });
@@ -338,7 +338,7 @@ export class Episode {
       pause: batch?.status === "open" ? 1 : batch?.status === "paused" ? 8 : 0,
       close: batch && batch.status !== "draft" ? 3 : 0,
       target: batch ? 0.5 : 0,
-      contestImage: 2,
+      contestImage: 4,
       refund: 1,
     });
     switch (kind) {
@@ -394,7 +394,14 @@ export class Episode {
           await this.ask("target", { actor, batchId: batch.batchId, target: 0.5 + 0.4 * dice.next() });
         return;
       case "contestImage": {
-        const imageId = dice.pick(dice.pick(own)?.imageIds ?? []);
+        const imageIds = dice.pick(own)?.imageIds ?? [];
+        if (dice.chance(0.3)) {
+          const found = await this.ask("decided", { subjects: imageIds });
+          const disputeId = found?.ok ? dice.pick(found.value) : undefined;
+          if (disputeId) await this.ask("appeal", { actor, disputeId });
+          return;
+        }
+        const imageId = dice.pick(imageIds);
         if (imageId) await this.ask("contestImage", { actor, imageId });
         return;
       }
@@ -445,7 +452,7 @@ export class Episode {
     const annotator = dice.pick(this.annotators);
     if (!annotator) return;
     const { actor, kind } = annotator;
-    if (annotator.done.length > 0 && dice.chance(kind === "disputer" ? 0.15 : 0.01))
+    if (annotator.done.length > 0 && dice.chance(kind === "disputer" ? 0.3 : 0.04))
       return this.contest(annotator);
     const held = dice.pick(annotator.held);
     if (!held || (annotator.held.length < 2 && dice.chance(0.15))) {
@@ -532,6 +539,12 @@ export class Episode {
 
   private async contest(annotator: Annotator): Promise<void> {
     const { dice } = this;
+    if (dice.chance(0.3)) {
+      const found = await this.ask("decided", { subjects: annotator.done.slice(-8) });
+      const disputeId = found?.ok ? dice.pick(found.value) : undefined;
+      if (disputeId) await this.ask("appeal", { actor: annotator.actor, disputeId });
+      return;
+    }
     const submissionId = dice.pick(annotator.done.slice(-6));
     if (!submissionId) return;
     const reply = await this.ask("contest", { actor: annotator.actor, submissionId });
@@ -554,10 +567,8 @@ export class Episode {
     await this.bank.advance(HOUR_MS); // leases run out
     await this.ask("sweep", {});
     await this.quiet();
-    const [admin] = this.admins;
-    if (admin)
-      for (let left = 1; left > 0;)
-        left = (await this.product.get("decide", { actor: admin, nth: 0, share: this.dice.next() })).left;
+    const { left } = await this.product.get("decideAll", { share: this.dice.next() });
+    if (left > 0) throw new Violation(`${left} disputes cannot be decided`);
     await this.quiet();
     for (const batch of this.batches.filter(({ status }) => status !== "draft")) {
       const reply = await this.ask("close", { actor: batch.requester.actor, batchId: batch.batchId });

@@ -20,7 +20,9 @@ import { runJob, type Handlers } from "@/lib/jobs/runJob";
 import { closeBatch } from "@/lib/market/batches/closeBatch";
 import { setAgreementTarget } from "@/lib/market/batches/editBatch";
 import { setPaused } from "@/lib/market/batches/publishBatch";
-import { decideDispute } from "@/lib/market/disputes/decideDispute";
+import { appealDecision } from "@/lib/market/disputes/appeal";
+import { confirmProposal, decideDispute } from "@/lib/market/disputes/decideDispute";
+import { listImpartialAdmins } from "@/lib/market/disputes/impartial";
 import { contestImage, contestScore, withdrawDispute } from "@/lib/market/disputes/openDispute";
 import type { PayoutScheduleInput } from "@/lib/contracts/payments";
 import { setPayoutSchedule } from "@/lib/market/money/payoutSchedule";
@@ -33,7 +35,7 @@ import { claimTask } from "@/lib/market/work/claimTask";
 import { heartbeat, releaseClaim, saveDraft } from "@/lib/market/work/keepClaim";
 import { submitWork } from "@/lib/market/work/submitWork";
 import { listClasses } from "@/db/queries/batches";
-import { listLiveClaims, listSubmissionsOf } from "@/db/queries/work";
+import { findDispute, listLiveClaims, listSubmissionsOf, type DisputeRow } from "@/db/queries/work";
 import { draftBatch, imagesOf, person, publish, team, type PAY } from "@/tests/support/market";
 
 /** The work of the background that needs no pixels; learning from settled pictures is left out. */
@@ -104,27 +106,43 @@ export const OPERATIONS = {
   contestImage: (input: By & { imageId: string }, nowMs: number) =>
     contestImage({ ...input, reason: "Something on this picture is missing.", nowMs }),
   withdraw: (input: By & { disputeId: string }, nowMs: number) => withdrawDispute({ ...input, nowMs }),
-  /** An admin takes one case of the docket; `nth` and `share` say which, and how it is decided. */
-  decide({ actor, nth, share }: By & { nth: number; share: number }, nowMs: number) {
-    const open = getDb()
-      .select({ id: disputes.id, imageId: disputes.imageId })
+  appeal: (input: By & { disputeId: string }, nowMs: number) =>
+    appealDecision({ ...input, reason: "The decision overlooks my outlines.", nowMs }),
+  /** Disputes that were decided on these submissions or pictures: what can be appealed. */
+  decided({ subjects }: { subjects: string[] }) {
+    if (subjects.length === 0) return [];
+    const isDecided = and(eq(disputes.status, "decided"), inArray(disputes.subject, subjects));
+    return getDb()
+      .select({ id: disputes.id })
       .from(disputes)
-      .where(eq(disputes.status, "open"))
-      .orderBy(disputes.dueAtMs, disputes.id)
-      .all();
+      .where(isDecided)
+      .orderBy(disputes.id)
+      .all()
+      .map(({ id }) => id);
+  },
+  /**
+   * An admin takes one case of the docket: a proposal is confirmed or sent back, anything else is decided. `nth`
+   * and `share` say which case, and how.
+   */
+  decide({ actor, nth, share }: By & { nth: number; share: number }, nowMs: number) {
+    const open = listOpen();
     const dispute = open[nth % Math.max(1, open.length)];
-    if (!dispute) return { left: 0 };
-    const list = listSubmissionsOf(getDb(), dispute.imageId);
-    const picked = list[Math.floor(share * 1000) % list.length];
-    const reason = "Looked at in full and decided so.";
-    const decision: DecideInput =
-      !picked || share < 0.35
-        ? { outcome: "keep", reason }
-        : share < 0.75
-          ? { outcome: "pick", submissionId: picked.id, reason }
-          : { outcome: "redraw", document: picked.document, reason };
-    decideDispute({ actor, nowMs, disputeId: dispute.id, decision });
-    return { left: open.length - 1 };
+    if (dispute) answerCase(dispute, actor, share, nowMs);
+    return { left: listOpen().length };
+  },
+  /** The docket is emptied, each case by admins who had no part in it. */
+  decideAll({ share }: { share: number }, nowMs: number) {
+    for (let round = 0; round < 3; round += 1) {
+      for (const { id } of listOpen()) {
+        const dispute = findDispute(getDb(), id);
+        if (dispute?.status !== "open") continue; // decided with another one about the same picture
+        const admin = listImpartialAdmins(getDb(), dispute).find((row) => row.id !== dispute.proposedBy);
+        if (!admin) throw new InvariantError(`nobody may decide ${id}`);
+        const actor: Actor = { id: admin.id, role: "admin", name: admin.name, email: admin.email };
+        answerCase(dispute, actor, (share + round * 0.31) % 0.9, nowMs);
+      }
+    }
+    return { left: listOpen().length };
   },
 
   topUp: async (input: By & { teamId: string; amountCents: number }, nowMs: number) =>
@@ -171,6 +189,39 @@ export const OPERATIONS = {
   },
   waiting: (_input: unknown, nowMs: number) => waiting(nowMs),
 };
+
+const listOpen = (): DisputeRow[] =>
+  getDb()
+    .select()
+    .from(disputes)
+    .where(eq(disputes.status, "open"))
+    .orderBy(disputes.dueAtMs, disputes.id)
+    .all();
+
+function answerCase(dispute: DisputeRow, actor: Actor, share: number, nowMs: number): void {
+  const reason = "Looked at in full and decided so.";
+  const disputeId = dispute.id;
+  if (dispute.proposal && dispute.proposedAtMs !== null) {
+    const { proposedAtMs } = dispute;
+    const verdict =
+      share < 0.9 ? ({ verdict: "confirm" } as const) : ({ verdict: "send-back", reason } as const);
+    confirmProposal({ actor, nowMs, disputeId, answer: { ...verdict, proposedAtMs } });
+    return;
+  }
+  const list = listSubmissionsOf(getDb(), dispute.imageId);
+  const picked = list[Math.floor(share * 1000) % list.length];
+  const decision: DecideInput =
+    !picked || share < 0.3
+      ? { outcome: "keep", reason }
+      : share < 0.6
+        ? { outcome: "pick", submissionId: picked.id, reason }
+        : share < 0.75
+          ? { outcome: "redraw", document: picked.document, reason }
+          : share < 0.85 && dispute.appealOf
+            ? { outcome: "restore", reason }
+            : { outcome: "broken", fault: share < 0.95 ? "brief" : "product", reason };
+  decideDispute({ actor, nowMs, disputeId, decision });
+}
 
 function waiting(nowMs: number): { due: number; nextMs: number | null } {
   const queued = inArray(jobs.status, ["queued", "running"]);
