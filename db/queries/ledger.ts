@@ -45,6 +45,20 @@ export function findPosting(db: Reader, { source, sourceId, kind }: Cause): Post
     .get();
 }
 
+/** What was posted first about something, of whatever kind; postings are only ever added, so their order is time's. */
+export function findFirstPosting(
+  db: Reader,
+  { source, sourceId }: Pick<Cause, "source" | "sourceId">,
+): PostingRow | undefined {
+  return db
+    .select()
+    .from(ledgerPostings)
+    .where(and(eq(ledgerPostings.source, source), eq(ledgerPostings.sourceId, sourceId)))
+    .orderBy(sql`rowid`)
+    .limit(1)
+    .get();
+}
+
 /** The entries of a posting, sorted by account as `posting()` sorts them. */
 export function entriesOf(db: Reader, postingId: string): Entry[] {
   return db

@@ -1,6 +1,6 @@
 import type { Tx } from "@/db/client";
 import { findBatch } from "@/db/queries/batches";
-import { balanceOf, findPosting, insertPosting } from "@/db/queries/ledger";
+import { balanceOf, findFirstPosting, insertPosting } from "@/db/queries/ledger";
 import type { Actor } from "@/lib/auth/actor";
 import { AppError, invariant } from "@/lib/errors";
 import { accountId, type AccountId, type Entry } from "@/lib/ledger/posting";
@@ -73,7 +73,8 @@ type Adjust = {
  */
 export function adjustSubmissionPay(tx: Tx, change: Adjust): void {
   const { submissionId, batchId, annotatorId, cause, nowMs } = change;
-  const first = findPosting(tx, { source: "submission", sourceId: submissionId, kind: "release" });
+  // Work that was found without worth has no release: what raised it is the first.
+  const first = findFirstPosting(tx, { source: "submission", sourceId: submissionId });
   invariant(first || change.oldPayCents === 0, "pay that is corrected was posted");
   const payDeltaCents = change.newPayCents - change.oldPayCents;
   const feeDeltaCents = change.newFeeCents - change.oldFeeCents;

@@ -145,6 +145,26 @@ describe("pay of a submission", () => {
     expect(ledgerViolations(db)).toEqual([]);
   });
 
+  it("that began at nothing can be corrected twice, the second time by a posting linked to the first", () => {
+    const change = (cause: string, [oldPayCents, newPayCents]: [number, number]) =>
+      inside((tx) =>
+        adjustSubmissionPay(tx, {
+          submissionId: "sub_nothing",
+          batchId: market.batchId,
+          annotatorId: annotator.id,
+          cause,
+          ...{ oldPayCents, newPayCents, oldFeeCents: 0, newFeeCents: 0 },
+          nowMs: START_MS,
+        }),
+      );
+    change("dsp_1", [0, 12]); // found without worth at first: nothing was posted
+    change("dsp_2", [12, 5]);
+    expect(payable()).toBe(14 + 5);
+    const cause = { source: "submission", sourceId: "sub_nothing" };
+    const raised = findPosting(db, { ...cause, kind: "adjust:dsp_1" });
+    expect(findPosting(db, { ...cause, kind: "adjust:dsp_2" })?.linkedTo).toBe(raised?.id);
+  });
+
   it("corrected after the batch was closed moves between annotator and wallet, and the escrow stays at zero", () => {
     closeBatch({ actor: market.owner, nowMs: START_MS + HOUR_MS, batchId: market.batchId });
     const before = cents(db, "wallet", market.teamId);
