@@ -87,7 +87,25 @@ function drawingsOf(
       weight,
     });
   }
-  return drawings;
+  return withRectanglesAsBoxes(drawings);
+}
+
+/**
+ * Somebody whose outline fills its own bounding box, where most others drew something else, drew a box with the
+ * outline's tool: it says where the object ends and nothing of its form. Where most are rectangles, the object is one.
+ */
+function withRectanglesAsBoxes(drawings: Drawing[]): Drawing[] {
+  const outlines = drawings.filter(({ isBox }) => !isBox);
+  const rectangles = outlines.filter(isRectangle);
+  if (rectangles.length === 0 || 2 * rectangles.length >= outlines.length) return drawings;
+  return drawings.map((drawing) => (rectangles.includes(drawing) ? { ...drawing, isBox: true } : drawing));
+}
+
+/** Share of its bounding box from which an outline is a rectangle: four corners set by hand keep so much. */
+const RECTANGLE_FILL_MIN = 0.98;
+
+function isRectangle({ pieces, box }: Drawing): boolean {
+  return pieces.length === 1 && (pieces[0]?.areaPx2 ?? 0) >= RECTANGLE_FILL_MIN * box[2] * box[3];
 }
 
 export function unionBox(boxes: readonly Box[]): Box {
@@ -282,23 +300,32 @@ function voteField(
     for (const slot of slots) add(field, coverage[slot]!, 1 / slots.length);
     return field;
   }
-  shareInto(field, drawings, weights, coverage, sum);
-  const radius = Math.min(TUNING.blurMax, Math.round(TUNING.blurShare * Math.sqrt(countInside(field))));
+  const inside = shareInto(field, drawings, weights, coverage, sum);
+  const radius = Math.min(TUNING.blurMax, Math.round(TUNING.blurShare * Math.sqrt(inside)));
   if (radius >= 1) blur(grid, field, radius);
   return field;
 }
 
-/** Weighted mean of the coverages; boxes pull down what lies outside them and say little about the inside. */
+/**
+ * Weighted mean of the coverages; boxes pull down what lies outside them and say little about the inside. Returns how
+ * many nodes have a majority.
+ */
 function shareInto(
   field: Float32Array,
   drawings: readonly Drawing[],
   weights: readonly number[],
   coverage: readonly Float32Array[],
   sum: WeightedSum,
-): void {
+): number {
   const outlines = sum.weight;
-  for (let k = 0; k < field.length; k++) field[k] = sum.field[k]! / outlines;
-  if (drawings.every(({ isBox }) => !isBox)) return;
+  const all = sum.field;
+  let inside = 0;
+  for (let k = 0; k < field.length; k++) {
+    const share = all[k]! / outlines;
+    field[k] = share;
+    if (share >= 0.5) inside++;
+  }
+  if (drawings.every(({ isBox }) => !isBox)) return inside;
   let total = outlines;
   drawings.forEach(({ isBox }, slot) => {
     if (isBox) total += TUNING.boxWeight * weights[slot]!;
@@ -310,6 +337,7 @@ function shareInto(
     if (isBox) add(factor, coverage[slot]!, (TUNING.boxWeight * weights[slot]!) / total);
   });
   for (let k = 0; k < field.length; k++) field[k]! *= factor[k]!;
+  return countInside(field);
 }
 
 function countInside(field: Float32Array): number {

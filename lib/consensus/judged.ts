@@ -8,6 +8,8 @@ import type { Say, VoteModel } from "./votes";
 /** Everything known about one candidate once the votes are weighed. */
 export type Judged = {
   readonly candidate: Candidate;
+  /** What each annotator of the image says of it. */
+  readonly says: readonly Say[];
   /** P(class) per class of the model, last P(nothing there). */
   readonly posterior: Float64Array;
   /** Index of the likeliest class. */

@@ -96,6 +96,7 @@ function judge(
   const fused = accepted ? fuse(image, candidate, classId, settings, reliability) : null;
   return {
     candidate,
+    says,
     posterior,
     classIndex,
     real,

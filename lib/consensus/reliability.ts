@@ -19,17 +19,19 @@ import { logInvented, typicalReliability } from "./votes";
 /** Known truth of some images of the batch, by index into the images. */
 export type Gold = ReadonlyMap<number, readonly LabelledInstance[]>;
 
-/** One candidate as the votes see it: what each annotator of the image called it, null for nothing. */
-type VotedCandidate = { said: (string | null)[]; truth?: string | null };
-
-/** What is kept of an image: a few hundred bytes, no outlines. */
+/** What is kept of an image: about a kilobyte, no outlines. */
 export type ImageRecord = {
   annotatorIds: readonly string[];
   /** Share of a vote: 1 for the independent, 1 / k for each of k people whose labels here are copies. */
   weights: readonly number[];
-  candidates: VotedCandidate[];
-  /** IoU of two annotators' drawings of one object: indices into annotatorIds, then the IoU, then 1 for boxes. */
-  pairs: readonly (readonly [a: number, b: number, iou: number, boxes: 0 | 1])[];
+  /** Classes that are named in the image; the numbers of `said` and `truth` count them, NOTHING is none. */
+  classIds: readonly string[];
+  /** What each annotator called each candidate, candidates x annotators. */
+  said: Int16Array;
+  /** What gold calls each candidate, UNKNOWN where it is not gold. */
+  truth: Int16Array;
+  /** Two annotators' drawings of the same objects: indices into annotatorIds, the sum of 1 - IoU, how many. */
+  pairs: readonly (readonly [a: number, b: number, loss: number, count: number])[];
   /** IoU of an annotator's drawing with gold: index, IoU. */
   goldIous: readonly (readonly [annotator: number, iou: number])[];
   instances: readonly number[];
@@ -39,6 +41,9 @@ export type ImageRecord = {
   twinned: readonly number[];
   isGold: boolean;
 };
+
+const NOTHING = -1;
+const UNKNOWN = -2;
 
 /** Prior strength, in observations, of what is common to all annotators. */
 const STRENGTH = { person: 4, row: 6, inventions: 4, pooled: 2, outline: 6, coincidence: 10, objects: 1 };
@@ -109,15 +114,20 @@ export function recordOf(
   const { list } = groupImage(image, settings);
   const sharers = new Int32Array(image.annotatorIds.length);
   for (const voter of image.voterOf) sharers[voter]!++;
-  const pairs: [number, number, number, 0 | 1][] = [];
   const clusterOf = new Int32Array(image.items.length).fill(-1);
   list.forEach(({ members }, c) => members.forEach((item) => (clusterOf[item] = c)));
+  const people = image.annotatorIds.length;
+  const pairs = new Map<number, [number, number, number, number]>();
   for (const { a, b, iou } of image.pairs) {
     if (clusterOf[a] !== clusterOf[b] || clusterOf[a]! < 0) continue;
     const x = image.items[a]!;
     const y = image.items[b]!;
     if (x.voter === y.voter || tookTheSame(x.instance, y.instance)) continue;
-    pairs.push([x.annotator, y.annotator, iou, x.spans.isBox || y.spans.isBox ? 1 : 0]);
+    const key = x.annotator * people + y.annotator;
+    const entry = pairs.get(key) ?? [x.annotator, y.annotator, 0, 0];
+    entry[2] += 1 - iou;
+    entry[3] += 1;
+    pairs.set(key, entry);
   }
   const candidates: VotedCandidate[] = list.map(({ saidBy }) => ({
     said: [...saidBy].map((item) => (item < 0 ? null : image.items[item]!.instance.classId)),
@@ -127,8 +137,8 @@ export function recordOf(
   return {
     annotatorIds: image.annotatorIds,
     weights: [...image.voterOf].map((voter) => 1 / sharers[voter]!),
-    candidates,
-    pairs,
+    ...packed(candidates),
+    pairs: [...pairs.values()],
     goldIous,
     instances: image.itemsOf.map((items) => items.length),
     taken: image.itemsOf.map(
@@ -137,6 +147,23 @@ export function recordOf(
     twins: twinsOf(image),
     twinned: twinnedOf(image),
     isGold: truth !== undefined,
+  };
+}
+
+/** One candidate as the votes see it: what each annotator of the image called it, null for nothing. */
+type VotedCandidate = { said: (string | null)[]; truth?: string | null };
+
+function packed(candidates: readonly VotedCandidate[]): Pick<ImageRecord, "classIds" | "said" | "truth"> {
+  const classIds: string[] = [];
+  const indexOf = (classId: string | null): number => {
+    if (classId === null) return NOTHING;
+    const known = classIds.indexOf(classId);
+    return known >= 0 ? known : classIds.push(classId) - 1;
+  };
+  return {
+    said: Int16Array.from(candidates.flatMap(({ said }) => said.map(indexOf))),
+    truth: Int16Array.from(candidates, ({ truth }) => (truth === undefined ? UNKNOWN : indexOf(truth))),
+    classIds,
   };
 }
 
@@ -209,13 +236,7 @@ type Tables = {
 /** The EM over records; see estimateReliability. */
 export function estimateFrom(records: readonly ImageRecord[]): Reliability {
   const ids = [...new Set(records.flatMap(({ annotatorIds }) => annotatorIds))].sort();
-  const classIds = [
-    ...new Set(
-      records.flatMap(({ candidates }) => candidates.flatMap(({ said, truth }) => [...said, truth ?? null])),
-    ),
-  ]
-    .filter((id) => id !== null)
-    .sort();
+  const classIds = [...new Set(records.flatMap(({ classIds: named }) => named))].sort();
   const typical = typicalReliability(classIds);
   if (ids.length === 0 || classIds.length === 0) return { ...typical, annotators: blank(ids, typical) };
   const idIndex = new Map(ids.map((id, k) => [id, k]));
@@ -297,9 +318,9 @@ function flatten(
   const nothing = classIndex.size;
   let items = 0;
   let votes = 0;
-  for (const { candidates, annotatorIds } of records) {
-    items += candidates.length;
-    votes += candidates.length * annotatorIds.length;
+  for (const { said, truth } of records) {
+    items += truth.length;
+    votes += said.length;
   }
   const flat: FlatVotes = {
     offsets: new Int32Array(items + 1),
@@ -322,16 +343,19 @@ function flatten(
       return Math.min(weight, 1 / (1 + alike));
     });
     for (const k of people) flat.imagesOf[k]! += 1;
-    for (const { said, truth } of record.candidates) {
-      said.forEach((classId, k) => {
+    const classOf = record.classIds.map((id) => classIndex.get(id)!);
+    const numberOf = (own: number) => (own === NOTHING ? nothing : classOf[own]!);
+    for (let c = 0; c < record.truth.length; c++) {
+      for (let k = 0; k < people.length; k++) {
+        const said = numberOf(record.said[c * people.length + k]!);
         flat.annotators[vote] = people[k]!;
-        flat.said[vote] = classId === null ? nothing : classIndex.get(classId)!;
+        flat.said[vote] = said;
         flat.weights[vote] = weights[k]!;
         flat.people[item]! += weights[k]!;
-        if (classId !== null) flat.drawn[item]! += weights[k]!;
+        if (said !== nothing) flat.drawn[item]! += weights[k]!;
         vote++;
-      });
-      if (truth !== undefined) flat.truth[item] = truth === null ? nothing : classIndex.get(truth)!;
+      }
+      if (record.truth[c] !== UNKNOWN) flat.truth[item] = numberOf(record.truth[c]!);
       item++;
       flat.offsets[item] = vote;
     }
@@ -545,16 +569,16 @@ function outlineLosses(
   let total = 0;
   let count = 0;
   for (const { pairs, annotatorIds, goldIous } of records) {
-    for (const [a, b, iou] of pairs) {
+    for (const [a, b, lossOfPair, countOfPair] of pairs) {
       const x = idIndex.get(annotatorIds[a]!)!;
       const y = idIndex.get(annotatorIds[b]!)!;
       const key = Math.min(x, y) * people + Math.max(x, y);
       const entry = sums.get(key) ?? { loss: 0, count: 0 };
-      entry.loss += 1 - iou;
-      entry.count += 1;
+      entry.loss += lossOfPair;
+      entry.count += countOfPair;
       sums.set(key, entry);
-      total += 1 - iou;
-      count += 1;
+      total += lossOfPair;
+      count += countOfPair;
     }
     for (const [annotator, iou] of goldIous) {
       const x = idIndex.get(annotatorIds[annotator]!)!;

@@ -1,4 +1,4 @@
-import { nameOf, saysOf, whyExplained, type Judged, type JudgedImage } from "./judged";
+import { nameOf, whyExplained, type Judged, type JudgedImage } from "./judged";
 import type { AnnotatorScore, InstanceScore } from "./types";
 import { posteriorOf, type VoteModel } from "./votes";
 import { people, percent } from "./words";
@@ -125,7 +125,7 @@ function against(
 function judgedByOthers(state: JudgedImage, model: VoteModel, one: Judged, annotator: number): Others {
   const { image } = state;
   const voter = image.voterOf[annotator]!;
-  const says = saysOf(image, one.candidate, model).filter((_, other) => image.voterOf[other] !== voter);
+  const says = one.says.filter((_, other) => image.voterOf[other] !== voter);
   const posterior = posteriorOf(model, says);
   const nothing = model.classIds.length;
   let classIndex = 0;

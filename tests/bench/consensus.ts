@@ -5,6 +5,8 @@
  * paired: the same scenes, people and drawings for each, on seeds that no constant was tuned on.
  */
 import { existsSync } from "node:fs";
+import { setFlagsFromString } from "node:v8";
+import { runInNewContext } from "node:vm";
 import { mergeImage } from "@/lib/consensus/mergeImage";
 import { estimateReliability, ReliabilityBatch, type Gold } from "@/lib/consensus/reliability";
 import { regionIou, spansOf } from "@/lib/consensus/spans";
@@ -256,7 +258,7 @@ function outlines(): void {
 
 /** Scenes that are simulated; a larger batch takes them again, each time shifted and with other ids. */
 const SCALE_SCENES = 250;
-const SCALE_SIZES = [2500, 5000, 10_000];
+const SCALE_SIZES = argument("sizes", "2500,5000,10000").split(",").map(Number);
 
 function speed(): void {
   console.log(
@@ -269,7 +271,8 @@ function speed(): void {
   );
   const perAnnotator = instances / labels.length / 5;
   for (const size of SCALE_SIZES) {
-    global.gc?.();
+    collect();
+    const emptyBytes = process.memoryUsage().heapUsed;
     const peak = { heap: 0, rss: 0 };
     const look = () => {
       const { heapUsed, rss } = process.memoryUsage();
@@ -290,6 +293,8 @@ function speed(): void {
       if (k % 250 === 0) look();
     }
     const groupedUs = cpuUs;
+    collect();
+    const heldBytes = process.memoryUsage().heapUsed;
     const reliability = timed(() => batch.estimate());
     look();
     const estimatedUs = cpuUs;
@@ -301,9 +306,16 @@ function speed(): void {
     }
     const seconds = (us: number) => (us / 1e6).toFixed(1);
     console.log(
-      `  ${size} images x 5 x ${perAnnotator.toFixed(1)}: ${seconds(cpuUs)} s (group ${seconds(groupedUs)}, estimate ${seconds(estimatedUs - groupedUs)}, merge ${seconds(cpuUs - estimatedUs)}), ${((cpuUs / 1e6) * (7.7 / perAnnotator)).toFixed(1)} s at 7.7 an annotator; ${agreed} agreed; peak heap ${(peak.heap / 1e6).toFixed(0)} MB, rss ${(peak.rss / 1e6).toFixed(0)} MB`,
+      `  ${size} images x 5 x ${perAnnotator.toFixed(1)}: ${seconds(cpuUs)} s (group ${seconds(groupedUs)}, estimate ${seconds(estimatedUs - groupedUs)}, merge ${seconds(cpuUs - estimatedUs)}), ${((cpuUs / 1e6) * (7.7 / perAnnotator)).toFixed(1)} s at 7.7 an annotator; ${agreed} agreed; peak heap ${(peak.heap / 1e6).toFixed(0)} MB, rss ${(peak.rss / 1e6).toFixed(0)} MB; kept of the batch ${((heldBytes - emptyBytes) / 1e6).toFixed(1)} MB`,
     );
   }
+}
+
+/** Collects all garbage, so that what is held can be told from what was not yet collected. */
+function collect(): void {
+  setFlagsFromString("--expose-gc");
+  const gc: unknown = runInNewContext("gc");
+  if (typeof gc === "function") gc();
 }
 
 /** The same labels moved by a part of a pixel, as objects of their own. */
