@@ -1,5 +1,5 @@
 import { IOU_MODEL, iouLogit } from "./predict";
-import type { ImageConsensus, Verdict } from "./types";
+import type { ImageConsensus, Reliability, Verdict } from "./types";
 
 /** Share of the doubt about existence and class that one more label removes; measured on simulated pools. */
 const DOUBT_REMOVED = 0.6;
@@ -25,6 +25,22 @@ export function expectedGain({ agreed, predictedQuality }: ImageConsensus): numb
 
 function meanLoss(agreed: ImageConsensus["agreed"]): number {
   return agreed.reduce((sum, { predictedIou }) => sum + 1 - predictedIou, 0) / agreed.length;
+}
+
+/**
+ * Who is worth asking: the `share` (0..1) of known annotators with the highest expected quality, without those who
+ * copy, and everybody of whom nothing is known yet. Redundancy spent on people who are often wrong is what makes
+ * many labels necessary.
+ */
+export function invitedFrom(reliability: Reliability, share: number): (annotatorId: string) => boolean {
+  const qualities = Object.values(reliability.annotators)
+    .map(({ quality }) => quality)
+    .sort((a, b) => b - a);
+  const cut = share >= 1 ? 0 : (qualities[Math.floor(qualities.length * share)] ?? 0);
+  return (annotatorId) => {
+    const known = reliability.annotators[annotatorId];
+    return !known || share >= 1 || (known.quality >= cut && known.copyOf === null);
+  };
 }
 
 export type StopRule = {

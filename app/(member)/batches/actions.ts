@@ -78,9 +78,9 @@ export const closeBatch = action({ role: "requester", input: Batch }, ({ actor, 
 export const changeTarget = action(
   { role: "requester", input: Batch.extend({ target: z.coerce.number().min(0.3).max(0.98) }) },
   ({ actor, input }) => {
-    setAgreementTarget({ actor, nowMs: nowMs(), ...input });
+    const outcome = setAgreementTarget({ actor, nowMs: nowMs(), ...input });
     revalidatePath(`/batches/${input.batchId}`);
-    return {};
+    return outcome;
   },
 );
 

@@ -8,6 +8,7 @@ import { AppError } from "@/lib/errors";
 import { newId } from "@/lib/ids";
 import { requireBatch } from "@/lib/market/access";
 import { audit } from "@/lib/market/audit";
+import { relookShort } from "./relookShort";
 
 type By = { actor: Actor; nowMs: number; batchId: string };
 
@@ -115,21 +116,31 @@ export function saveQualityAndPay({ input, ...by }: By & { input: QualityAndPayI
   });
 }
 
-/** Sets another agreement target on an open batch. Images already settled keep their result. */
-export function setAgreementTarget({ target, ...by }: By & { target: number }): void {
-  inTransaction(getDb(), (tx) => {
+/**
+ * Sets another agreement target on an open batch. Images already settled keep their result; those that wait for one
+ * more annotator and reach the new target are looked at again. Returns how many those are.
+ */
+export function setAgreementTarget({ target, ...by }: By & { target: number }): { lookedAgain: number } {
+  return inTransaction(getDb(), (tx) => {
     const batch = requireBatch(tx, by.batchId, by.actor, "editor");
     if (batch.status === "closed") throw new AppError("conflict", "A closed batch cannot be changed.");
     tx.update(batches)
       .set({ agreementTarget: target, version: batch.version + 1 })
       .where(eq(batches.id, batch.id))
       .run();
+    const lookedAgain = relookShort(tx, {
+      batchId: batch.id,
+      target,
+      version: batch.version + 1,
+      nowMs: by.nowMs,
+    });
     audit(tx, {
       actorId: by.actor.id,
       action: "batch.target",
       subject: batch.id,
-      detail: { from: batch.agreementTarget, to: target },
+      detail: { from: batch.agreementTarget, to: target, lookedAgain },
       nowMs: by.nowMs,
     });
+    return { lookedAgain };
   });
 }

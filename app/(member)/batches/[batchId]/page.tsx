@@ -221,6 +221,7 @@ export default async function BatchPage({ params }: Props) {
             <TargetPanel
               batchId={batchId}
               target={batch.agreementTarget}
+              kMin={batch.kMin}
               kMax={batch.kMax}
               capCents={batch.capCents}
               feeBps={batch.feeBps}
