@@ -68,23 +68,25 @@ export default async function DocketPage({ searchParams }: Props) {
                       <span className="text-muted block text-sm font-normal">{batchTitle}</span>
                     </RowHead>
                     <Cell label={show === "open" ? "Contested" : "Outcome"}>
-                      <StateMark state={show === "open" ? "disputed" : "agreed"}>
-                        {dispute.appealOf ? "appeal: " : ""}
-                        {show === "decided" && dispute.decision
-                          ? OUTCOME_WORDS[dispute.decision.outcome]
-                          : ERROR_WORDS[dispute.errorKind]}
-                      </StateMark>
-                      <span className="text-muted block text-sm">
-                        {openerName ?? "by itself"}
-                        {show === "open" && whyPartial(db, dispute, actor.id)
-                          ? ", for another admin"
-                          : dispute.status === "open" && dispute.proposal
-                            ? dispute.proposedBy === actor.id
-                              ? ", your proposal waits"
-                              : ", to confirm"
-                            : show === "open" && takesTwo(dispute)
-                              ? ", takes two admins"
-                              : ""}
+                      <span>
+                        <StateMark state={show === "open" ? "disputed" : "agreed"}>
+                          {dispute.appealOf ? "appeal: " : ""}
+                          {show === "decided" && dispute.decision
+                            ? OUTCOME_WORDS[dispute.decision.outcome]
+                            : ERROR_WORDS[dispute.errorKind]}
+                        </StateMark>
+                        <span className="text-muted block text-sm">
+                          {openerName ?? "by itself"}
+                          {show === "open" && whyPartial(db, dispute, actor.id)
+                            ? ", for another admin"
+                            : dispute.status === "open" && dispute.proposal
+                              ? dispute.proposedBy === actor.id
+                                ? ", your proposal waits"
+                                : ", to confirm"
+                              : show === "open" && takesTwo(dispute)
+                                ? ", takes two admins"
+                                : ""}
+                        </span>
                       </span>
                     </Cell>
                     <Cell label="Reason given" className="max-w-80">
@@ -97,10 +99,12 @@ export default async function DocketPage({ searchParams }: Props) {
                       />
                     </Cell>
                     <Cell label={show === "open" ? "Due" : "Decided"} align="end">
-                      {show === "open" && dispute.dueAtMs < now ? (
-                        <StateMark state="disputed">overdue</StateMark>
-                      ) : null}{" "}
-                      <When at={dispute.decidedAtMs ?? dispute.dueAtMs} form="relative" />
+                      <span>
+                        {show === "open" && dispute.dueAtMs < now ? (
+                          <StateMark state="disputed">overdue</StateMark>
+                        ) : null}{" "}
+                        <When at={dispute.decidedAtMs ?? dispute.dueAtMs} form="relative" />
+                      </span>
                     </Cell>
                   </Row>
                 ))}

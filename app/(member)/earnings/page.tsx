@@ -122,10 +122,12 @@ export default async function EarningsPage({ searchParams }: Props) {
                       )}
                     </RowHead>
                     <Cell label="State">
-                      <PayoutMark status={payout.status} />
-                      {payout.failure ? (
-                        <span className="text-muted block text-sm">{payout.failure}</span>
-                      ) : null}
+                      <span>
+                        <PayoutMark status={payout.status} />
+                        {payout.failure ? (
+                          <span className="text-muted block text-sm">{payout.failure}</span>
+                        ) : null}
+                      </span>
                     </Cell>
                     <Cell label="Amount" figure>
                       <Money cents={payout.amountCents} />

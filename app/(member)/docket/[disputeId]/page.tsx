@@ -41,11 +41,11 @@ const TITLE = {
 } as const;
 
 const STEP_WORDS = {
-  opened: "opened",
+  opened: "opened it",
   proposed: "proposed a decision",
   "sent-back": "sent the proposal back",
   confirmed: "confirmed the proposal",
-  decided: "decided",
+  decided: "decided it",
   withdrawn: "took it back",
   appealed: "appealed the decision",
 } as const;
@@ -99,6 +99,13 @@ export default async function DisputePage({ params }: Props) {
             : `${opener?.name ?? "Somebody"} ${dispute.appealOf ? "appeals the decision on" : dispute.kind === "split" ? "contests" : TITLE[dispute.kind]}${dispute.kind === "score" && !dispute.appealOf ? ":" : ""} ${image.fileName}`
         }
         crumbs={[{ href: "/docket", label: "Docket" }]}
+        actions={
+          dispute.status === "open" && !partial ? (
+            <ButtonLink href={dispute.proposal ? "#proposal" : "#decide"}>
+              {dispute.proposal ? "Go to the proposal" : "Go to the decision"}
+            </ButtonLink>
+          ) : null
+        }
         lead={
           <>
             <Link className="link" href={`/batches/${batch.id}`}>
@@ -293,7 +300,7 @@ export default async function DisputePage({ params }: Props) {
                 <li key={step.id} className="py-2">
                   <p className="flex flex-wrap justify-between gap-2">
                     <span>
-                      {actorName ?? "By itself"} {actorName ? STEP_WORDS[step.kind] : `it was ${step.kind}`}
+                      {actorName ? `${actorName} ${STEP_WORDS[step.kind]}` : `It was ${step.kind} by itself`}
                     </span>
                     <span className="text-muted text-sm">
                       <When at={step.atMs} />

@@ -43,7 +43,7 @@ export function ScheduleForm({ rhythm, weekday, leastCents }: PayoutScheduleInpu
         options={[
           { value: "never", title: "when I ask", text: "Nothing moves by itself." },
           { value: "weekly", title: "every week", text: "On the day you choose." },
-          { value: "monthly", title: "every month", text: "On the first of the month." },
+          { value: "monthly", title: "every month", text: "On the first, at 06:00 UTC." },
         ]}
       />
       {chosen === "never" ? (
@@ -57,6 +57,7 @@ export function ScheduleForm({ rhythm, weekday, leastCents }: PayoutScheduleInpu
             <Select
               label="Day of the week"
               name="weekday"
+              hint="It begins at 06:00 UTC."
               defaultValue={String(weekday)}
               options={WEEKDAYS.map((label, index) => ({ value: String(index + 1), label }))}
             />
@@ -76,8 +77,7 @@ export function ScheduleForm({ rhythm, weekday, leastCents }: PayoutScheduleInpu
       )}
       {chosen === "never" ? null : (
         <p className="text-muted text-sm">
-          It begins at 06:00 UTC, and a letter tells you when it has left, when it has arrived, and if it
-          comes back.
+          A letter tells you when it has left, when it has arrived, and if it comes back.
         </p>
       )}
       <SubmitButton className="justify-self-start">Keep this</SubmitButton>
