@@ -22,6 +22,15 @@ const CARDS = {
 };
 const BANKS = { "000123456789": 80, "000111111116": 12, "000111111113": 8 };
 
+/** Events that may never arrive: what they tell of is found by the reconciliation as well. */
+const LOSABLE = [
+  "charge.succeeded",
+  "checkout.session.completed",
+  "refund.created",
+  "refund.updated",
+  "refund.failed",
+];
+
 /** An event on its way: the same letter may lie in the box twice. */
 type Posted = { body: string };
 
@@ -40,6 +49,7 @@ export class Bank {
   /** How bad the network is: seeds differ, for what calm weather hides. */
   private readonly weather: number;
   duplicated = 0;
+  vanished = 0;
   /** Letters that were taken although their key had been used. */
   private letters = 0;
 
@@ -54,6 +64,10 @@ export class Bank {
     world.settings.settleMs = dice.pick([0, 3_600_000, 2 * 86_400_000]) ?? 0;
     world.settings.payoutStepMs = dice.pick([1000, 600_000, 6 * 3_600_000]) ?? 1000;
     world.onEvent = (event) => {
+      if (!this.isCalm && LOSABLE.includes(event.type) && dice.chance(0.1)) {
+        this.vanished += 1;
+        return;
+      }
       const body = JSON.stringify(world.render(event));
       this.post.push({ body });
       if (!this.isCalm && dice.chance(0.15)) {

@@ -66,7 +66,7 @@ export type Report = {
   payoutCents: number;
   topUpCents: number;
   calls: number;
-  faults: Faults & { duplicated: number; interleaved: number };
+  faults: Faults & { duplicated: number; vanished: number; interleaved: number };
   /** Of operations, by name: answered, refused, unanswered because a hosted service was not there. */
   operations: Record<string, [number, number, number]>;
   violations: string[];
@@ -168,7 +168,12 @@ export class Episode {
         ),
       ),
       calls: this.product.calls,
-      faults: { ...this.bank.faults, duplicated: this.bank.duplicated, interleaved: this.interleaved },
+      faults: {
+        ...this.bank.faults,
+        duplicated: this.bank.duplicated,
+        vanished: this.bank.vanished,
+        interleaved: this.interleaved,
+      },
       operations: this.operations,
       violations,
       history: this.history.digest("hex").slice(0, 16),
