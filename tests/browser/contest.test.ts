@@ -198,6 +198,17 @@ describe("a contested score", () => {
       expect(closing).toBe(cents(db, "payable", tomas.id));
       expect(cents(db, "payable", maren.id)).toBe(20);
 
+      // ---- the annotator lets payouts come by themselves; the choice stays on the screen and is kept
+      await annotator.getByRole("radio", { name: /every week/ }).check();
+      await annotator.getByLabel("Day of the week").selectOption({ label: "Wednesday" });
+      await annotator.getByRole("button", { name: "Keep this" }).click();
+      await annotator.getByText(/Next on .*, if there is \$5\.00 or more/).waitFor();
+      for (const look of ["at once", "after a reload"]) {
+        expect(await annotator.getByRole("radio", { name: /every week/ }).isChecked(), look).toBe(true);
+        expect(await annotator.getByLabel("Day of the week").inputValue(), look).toBe("3");
+        await annotator.reload({ waitUntil: "networkidle" });
+      }
+
       // ---- the requester reads the reason; receipt and invoice add up to the ledger
       const requester = await pageOf(owner);
       const [image] = imagesOf(db, batchId);

@@ -1,13 +1,13 @@
 "use client";
 
 import { useRouter } from "next/navigation";
-import { useActionState, useState } from "react";
+import { useState, useTransition, type FormEvent } from "react";
 import { toast } from "sonner";
+import { Button } from "@/components/ui/Button";
 import { MoneyInput } from "@/components/ui/MoneyInput";
 import { Notice } from "@/components/ui/Notice";
 import { RadioCards } from "@/components/ui/RadioCards";
 import { Select } from "@/components/ui/Select";
-import { SubmitButton } from "@/components/ui/SubmitButton";
 import type { PayoutScheduleInput } from "@/lib/contracts/payments";
 import type { ActionResult } from "@/lib/http/action";
 import { saveSchedule } from "../actions";
@@ -18,17 +18,24 @@ const WEEKDAYS = ["Monday", "Tuesday", "Wednesday", "Thursday", "Friday", "Satur
 export function ScheduleForm({ rhythm, weekday, leastCents }: PayoutScheduleInput) {
   const router = useRouter();
   const [chosen, setChosen] = useState<string>(rhythm);
-  const [answer, submit] = useActionState(async (previous: ActionResult<unknown> | null, form: FormData) => {
-    const result = await saveSchedule(null, form);
-    if (result.ok) {
+  const [failed, setFailed] = useState<Extract<ActionResult<unknown>, { ok: false }> | null>(null);
+  const [pending, startTransition] = useTransition();
+
+  // Not a form action: React resets the fields after one, and the choice would jump back on the screen.
+  function submit(event: FormEvent<HTMLFormElement>): void {
+    event.preventDefault();
+    const form = new FormData(event.currentTarget);
+    startTransition(async () => {
+      const answer = await saveSchedule(null, form);
+      setFailed(answer.ok ? null : answer);
+      if (!answer.ok) return;
       toast.success("Kept.");
       router.refresh();
-    }
-    return result ?? previous;
-  }, null);
-  const failed = answer && !answer.ok ? answer : null;
+    });
+  }
+
   return (
-    <form action={submit} className="grid gap-5">
+    <form onSubmit={submit} className="grid gap-5">
       {failed ? (
         <Notice kind="danger" live>
           {failed.message}
@@ -80,7 +87,9 @@ export function ScheduleForm({ rhythm, weekday, leastCents }: PayoutScheduleInpu
           A letter tells you when it has left, when it has arrived, and if it comes back.
         </p>
       )}
-      <SubmitButton className="justify-self-start">Keep this</SubmitButton>
+      <Button type="submit" kind="primary" pending={pending} className="justify-self-start">
+        Keep this
+      </Button>
     </form>
   );
 }
