@@ -6,7 +6,7 @@ import { DEFAULT_SETTINGS } from "@/lib/consensus/types";
 import { batchOf, type SceneKind } from "./batches";
 
 const NAMES = ["constant", "pair", "count", "people", "size", "raggedness"] as const;
-const IMAGES = 30;
+const IMAGES = 10;
 const STEPS = 25;
 /** Pull of each weight to zero, so that terms that go together do not run apart. */
 const RIDGE = 1e-3;

@@ -1,8 +1,8 @@
 import { contours } from "@/lib/consensus/contour";
 import { addCoverage, gridFor, type Grid } from "@/lib/consensus/field";
 import { unionBox } from "@/lib/consensus/fuse";
-import { spansOf } from "@/lib/consensus/spans";
-import type { Ring, Rings } from "@/lib/geometry/types";
+import { boxesMeet, ROW_PHASE, spansOf, type Spans } from "@/lib/consensus/spans";
+import type { Box, Ring, Rings } from "@/lib/geometry/types";
 
 /** How "first" and "second" regions are combined. */
 export type Combination = "with" | "without" | "common" | "closed";
@@ -23,15 +23,34 @@ export function combine(first: readonly Rings[], second: readonly Rings[], how: 
     Math.max(0.5, ...all.map(({ stepPx }) => stepPx)),
     512,
   );
-  const a = cover(grid, first);
-  const b = cover(grid, second);
-  let field: Float32Array = a.map((value, k) => {
-    if (how === "without") return Math.min(value, 1 - b[k]!);
-    if (how === "common") return Math.min(value, b[k]!);
-    return Math.max(value, b[k]!);
-  });
+  const a = cover(grid, all.slice(0, first.length));
+  // What does not come near the first changes nothing in it.
+  const near = all
+    .slice(first.length)
+    .filter(
+      ({ box }) =>
+        how === "closed" ||
+        how === "with" ||
+        all.slice(0, first.length).some((own) => boxesMeet(own.box, grown(box))),
+    );
+  const b = cover(grid, near);
+  let field = a;
+  for (let k = 0; k < field.length; k++) {
+    const value = a[k]!;
+    field[k] =
+      how === "without"
+        ? Math.min(value, 1 - b[k]!)
+        : how === "common"
+          ? Math.min(value, b[k]!)
+          : Math.max(value, b[k]!);
+  }
   if (how === "closed") field = spread(grid, spread(grid, field, Math.max), Math.min);
   return [...contours(grid, field, 0.5)];
+}
+
+/** A margin of more than a node. */
+function grown([x, y, width, height]: Box): Box {
+  return [x - 4, y - 4, width + 8, height + 8];
 }
 
 /** Whether two regions come within a few px of each other. */
@@ -43,17 +62,25 @@ export function meet(a: Rings, b: Rings): boolean {
     Math.max(1, ...all.map(({ stepPx }) => stepPx)),
     512,
   );
-  const grown = spread(grid, cover(grid, [a]), Math.max);
-  const other = cover(grid, [b]);
-  return grown.some((value, k) => value > 0.5 && other[k]! > 0.5);
+  const wide = spread(grid, cover(grid, all.slice(0, 1)), Math.max);
+  const other = cover(grid, all.slice(1));
+  return wide.some((value, k) => value > 0.5 && other[k]! > 0.5);
 }
 
-function cover(grid: Grid, regions: readonly Rings[]): Float32Array {
-  const field = new Float32Array(grid.columns * grid.rows);
-  for (const rings of regions) {
-    const own = new Float32Array(field.length);
-    addCoverage(grid, spansOf({ kind: "polygon", rings }), own);
-    own.forEach((value, k) => (field[k] = Math.max(field[k]!, value)));
+/** Largest coverage of each node by any of the regions. */
+function cover(grid: Grid, regions: readonly Spans[]): Float32Array {
+  const { cellPx, columns, firstRow } = grid;
+  const field = new Float32Array(columns * grid.rows);
+  const own = new Float32Array(field.length);
+  for (const spans of regions) {
+    const [, y, , height] = spans.box;
+    const from = columns * Math.max(0, Math.floor((y - ROW_PHASE) / cellPx) - firstRow - 1);
+    const to = columns * Math.min(grid.rows, Math.ceil((y + height - ROW_PHASE) / cellPx) - firstRow + 2);
+    addCoverage(grid, spans, own);
+    for (let k = from; k < to; k++) {
+      if (own[k]! > field[k]!) field[k] = own[k]!;
+      own[k] = 0;
+    }
   }
   return field;
 }
