@@ -19,7 +19,7 @@ import { logInvented, typicalReliability } from "./votes";
 /** Known truth of some images of the batch, by index into the images. */
 export type Gold = ReadonlyMap<number, readonly LabelledInstance[]>;
 
-/** What is kept of an image: about a kilobyte, no outlines. */
+/** What is kept of an image: about three kilobytes (bench:consensus -- --only speed), no outlines. */
 export type ImageRecord = {
   annotatorIds: readonly string[];
   /** Share of a vote: 1 for the independent, 1 / k for each of k people whose labels here are copies. */
