@@ -1,6 +1,13 @@
 import { and, desc, eq, sql } from "drizzle-orm";
 import type { Reader } from "@/db/client";
-import { consensusRuns, images, proposalSets, submissions } from "@/db/schema";
+import {
+  consensusRuns,
+  importedPredictions,
+  images,
+  predictionImports,
+  proposalSets,
+  submissions,
+} from "@/db/schema";
 
 /** What annotators did with the proposals of a batch, over all that was handed in. */
 export type Acceptance = {
@@ -72,5 +79,44 @@ export function listProposalVerdicts(db: Reader, batchId: string, limit: number)
     .where(eq(submissions.batchId, batchId))
     .orderBy(desc(submissions.submittedAtMs), desc(submissions.id))
     .limit(limit)
+    .all();
+}
+
+/** What became of the latest results file of a batch, with the number of pictures that it has predictions for. */
+export function findPredictionImport(db: Reader, batchId: string) {
+  const row = db.select().from(predictionImports).where(eq(predictionImports.batchId, batchId)).get();
+  if (!row) return undefined;
+  const pictures = db
+    .select({ count: sql<number>`count(*)` })
+    .from(importedPredictions)
+    .where(eq(importedPredictions.batchId, batchId))
+    .get();
+  return { ...row, pictures: pictures?.count ?? 0 };
+}
+
+export function findImportedPredictions(db: Reader, imageId: string) {
+  return db.select().from(importedPredictions).where(eq(importedPredictions.imageId, imageId)).get();
+}
+
+/** The latest settled pictures of a batch for which predictions were imported, with what was agreed; newest first, ties by id. */
+export function listSettledImports(db: Reader, batchId: string, limit: number) {
+  return db
+    .select({ predictions: importedPredictions.predictions, result: consensusRuns.result })
+    .from(images)
+    .innerJoin(importedPredictions, eq(importedPredictions.imageId, images.id))
+    .innerJoin(consensusRuns, eq(consensusRuns.id, images.currentRunId))
+    .where(and(eq(images.batchId, batchId), eq(images.consensusState, "settled")))
+    .orderBy(desc(images.settledAtMs), desc(images.id))
+    .limit(limit)
+    .all();
+}
+
+/** Ready pictures of a batch by name and size, in upload order. */
+export function listNamedImages(db: Reader, batchId: string) {
+  return db
+    .select({ id: images.id, fileName: images.fileName, width: images.width, height: images.height })
+    .from(images)
+    .where(and(eq(images.batchId, batchId), eq(images.status, "ready")))
+    .orderBy(images.ordinal, images.id)
     .all();
 }

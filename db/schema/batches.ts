@@ -1,3 +1,4 @@
+import { EVERYDAY_LABELS } from "@/lib/proposals/everydayLabels";
 import { index, integer, real, sqliteTable, text, uniqueIndex } from "drizzle-orm/sqlite-core";
 import { teams, users } from "./people";
 
@@ -93,6 +94,8 @@ export const classes = sqliteTable(
     colour: text("colour").notNull(), // #rrggbb of the published palette
     pattern: text("pattern").notNull().default("solid"),
     geometry: text("geometry", { enum: ["box", "polygon"] }).notNull(),
+    /** What the detector of everyday things calls the class, confirmed by the requester; null: it does not know it. */
+    detectorLabel: text("detector_label", { enum: EVERYDAY_LABELS }),
   },
   (t) => [
     uniqueIndex("classes_number").on(t.batchId, t.number),

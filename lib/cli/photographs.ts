@@ -25,7 +25,7 @@ export type Annotation = {
   segmentation: number[][] | object;
 };
 export type Coco = {
-  images: { id: number; file_name: string; width: number; height: number }[];
+  images: { id: number; file_name: string; width: number; height: number; coco_url: string }[];
   annotations: Annotation[];
   categories: { id: number; name: string }[];
 };

@@ -1,4 +1,5 @@
 import { z } from "zod";
+import { EVERYDAY_LABELS } from "@/lib/proposals/everydayLabels";
 
 export const BatchParams = z.object({ batchId: z.string().min(5).max(40) });
 export const ImageParams = z.object({ imageId: z.string().min(5).max(40) });
@@ -14,6 +15,8 @@ export const ClassInput = z.object({
   colour: z.string().regex(/^#[0-9a-f]{6}$/i),
   pattern: z.string().max(20),
   geometry: z.enum(["box", "polygon"]),
+  /** What the detector of everyday things calls it, where the requester confirmed that. */
+  detectorLabel: z.enum(EVERYDAY_LABELS).nullish(),
 });
 export type ClassInput = z.output<typeof ClassInput>;
 
@@ -153,3 +156,21 @@ export const ReleaseInput = z
     path: ["coordinates"],
     message: "The pictures in a release are upright, so its coordinates must be too.",
   });
+
+/** A COCO results file as text; images and classes are matched when it is read. */
+export const ImportPredictionsInput = z.object({
+  fileName: z.string().min(1).max(255),
+  text: z.string().min(1, "The file is empty."),
+});
+/** Bytes of a results file that are taken. */
+export const PREDICTIONS_BYTES_MAX = 24 * 1024 * 1024;
+
+/** What became of a results file. */
+export const PredictionImportView = z.object({
+  fileName: z.string(),
+  used: z.int(),
+  pictures: z.int(),
+  wrongCount: z.int(),
+  wrong: z.array(z.object({ line: z.int(), reason: z.string() })),
+});
+export type PredictionImportView = z.output<typeof PredictionImportView>;

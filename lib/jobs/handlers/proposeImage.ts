@@ -1,9 +1,11 @@
 import { eq } from "drizzle-orm";
 import { getDb, inTransaction } from "@/db/client";
-import { findImage } from "@/db/queries/batches";
-import { findModel } from "@/db/queries/models";
+import { findImage, listClasses } from "@/db/queries/batches";
+import { findLatestTraining, findModel } from "@/db/queries/models";
 import { images, proposalSets, type StoredProposal } from "@/db/schema";
 import { newId } from "@/lib/ids";
+import { isDetectorOn, knownLabels } from "@/lib/market/proposals/detectorUse";
+import { calibratedImports } from "@/lib/market/proposals/calibratedImports";
 import { getObject } from "@/lib/services/store";
 import { threads } from "../pool";
 import type { ProposeTask, Proposed } from "../threads";
@@ -23,9 +25,19 @@ export const proposeImageJob: Handler<"image.propose"> = async ({ imageId }, { n
   progress(0.1, "reading");
   const bytes = await getObject(image.workingKey);
   const model = findModel(db, image.batchId);
+  const key = listClasses(db, image.batchId);
+  const known = isDetectorOn(findLatestTraining(db, image.batchId)) ? knownLabels(key) : [];
   progress(0.3, "finding");
   const startMs = performance.now();
-  const task: ProposeTask = { kind: "propose", bytes, limit: PROPOSALS_MAX, model: model?.model ?? null };
+  const task: ProposeTask = {
+    kind: "propose",
+    bytes,
+    limit: PROPOSALS_MAX,
+    model: model?.model ?? null,
+    known,
+    isAllKnown: known.length === key.length,
+    imported: calibratedImports(db, image),
+  };
   const found = (await threads().run(task)) as Proposed[];
   const millis = Math.round(performance.now() - startMs);
   const proposals = found.map((proposal): StoredProposal => ({ id: newId("pps"), ...proposal }));
@@ -33,7 +45,11 @@ export const proposeImageJob: Handler<"image.propose"> = async ({ imageId }, { n
     const values = {
       imageId,
       batchId: image.batchId,
-      model: model ? `exemplars ${model.version}` : "any image",
+      model: [
+        model ? `exemplars ${model.version}` : "any image",
+        ...(known.length > 0 ? ["everyday detector"] : []),
+        ...(task.imported.length > 0 ? ["imported"] : []),
+      ].join(", "),
       proposals,
       millis,
       createdAtMs: nowMs(),

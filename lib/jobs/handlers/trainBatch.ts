@@ -1,14 +1,14 @@
-import { and, eq, inArray, sql } from "drizzle-orm";
 import { getDb, inTransaction } from "@/db/client";
+import { listClasses } from "@/db/queries/batches";
 import { findLatestTraining, findModel } from "@/db/queries/models";
 import { listCurrentRuns } from "@/db/queries/work";
-import { claims, exemplarModels, images } from "@/db/schema";
+import { exemplarModels } from "@/db/schema";
 import { newId } from "@/lib/ids";
-import type { ExemplarModel } from "@/lib/proposals/exemplar";
+import { proposeAgain } from "@/lib/market/proposals/proposeAgain";
+import { isDetectorOn, knownLabels } from "@/lib/market/proposals/detectorUse";
 import { getObject } from "@/lib/services/store";
 import { threads } from "../pool";
-import { enqueue } from "../queue";
-import type { TrainTask } from "../threads";
+import type { Trained, TrainTask } from "../threads";
 import type { Handler } from "./index";
 
 /** Counts of settled images after which the batch's proposals are learned anew. */
@@ -28,7 +28,7 @@ export const trainBatchJob: Handler<"batch.train"> = async ({ batchId }, { nowMs
   const isDue = TRAIN_AT.some((mark) => settled.length >= mark && (last?.settledImages ?? 0) < mark);
   if (!isDue) return;
   const chosen = settled.slice(-IMAGES_MAX);
-  const task: TrainTask = { kind: "train", images: [] };
+  const task: TrainTask = { kind: "train", images: [], known: knownLabels(listClasses(db, batchId)) };
   for (const [index, { run, image }] of chosen.entries()) {
     if (!image.workingKey) continue;
     progress((0.3 * index) / chosen.length, "reading");
@@ -43,47 +43,27 @@ export const trainBatchJob: Handler<"batch.train"> = async ({ batchId }, { nowMs
   }
   progress(0.3, "learning");
   const startMs = performance.now();
-  const model = (await threads().run(task)) as ExemplarModel;
+  const { model, recall } = (await threads().run(task)) as Trained;
   const before = findModel(db, batchId);
+  const row = {
+    id: newId("mdl"),
+    batchId,
+    version: (last?.version ?? 0) + 1,
+    settledImages: settled.length,
+    instances: task.images.reduce((sum, entry) => sum + entry.instances.length, 0),
+    useful: model.useful && (model.apWith ?? 0) >= (before?.apWith ?? 0) - 0.02,
+    apWith: model.apWith,
+    apWithout: model.apWithout,
+    recallWithDetector: recall?.with ?? null,
+    recallWithoutDetector: recall?.without ?? null,
+    model,
+    millis: Math.round(performance.now() - startMs),
+    createdAtMs: nowMs(),
+  };
   inTransaction(db, (tx) => {
-    tx.insert(exemplarModels)
-      .values({
-        id: newId("mdl"),
-        batchId,
-        version: (last?.version ?? 0) + 1,
-        settledImages: settled.length,
-        instances: task.images.reduce((sum, entry) => sum + entry.instances.length, 0),
-        useful: model.useful && (model.apWith ?? 0) >= (before?.apWith ?? 0) - 0.02,
-        apWith: model.apWith,
-        apWithout: model.apWithout,
-        model,
-        millis: Math.round(performance.now() - startMs),
-        createdAtMs: nowMs(),
-      })
-      .run();
-    if (!model.useful) return;
-    const untouched = tx
-      .select({ id: images.id })
-      .from(images)
-      .where(
-        and(
-          eq(images.batchId, batchId),
-          eq(images.status, "ready"),
-          inArray(images.consensusState, ["none"]),
-          sql`not exists (select 1 from ${claims} c where c.image_id = ${images.id} and c.status in ('live', 'submitted'))`,
-        ),
-      )
-      .all();
-    for (const { id } of untouched) {
-      enqueue(tx, {
-        kind: "image.propose",
-        payload: { imageId: id },
-        subject: batchId,
-        uniqueKey: `propose:${id}`,
-        nowMs: nowMs(),
-        priority: -2,
-        attemptsMax: 3,
-      });
-    }
+    tx.insert(exemplarModels).values(row).run();
+    const wasOn = isDetectorOn(last);
+    const isChanged = isDetectorOn(row) !== wasOn && task.known.length > 0;
+    if (row.useful || isChanged) proposeAgain(tx, { batchId, nowMs: nowMs() });
   });
 };

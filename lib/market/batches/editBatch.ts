@@ -9,6 +9,7 @@ import { newId } from "@/lib/ids";
 import { requireBatch } from "@/lib/market/access";
 import { audit } from "@/lib/market/audit";
 import { relookShort } from "./relookShort";
+import { proposeAgain } from "@/lib/market/proposals/proposeAgain";
 
 type By = { actor: Actor; nowMs: number; batchId: string };
 
@@ -33,7 +34,12 @@ export function saveKeyAndBrief({ input, ...by }: By & { input: KeyAndBriefInput
   inTransaction(getDb(), (tx) => {
     const batch = requireFresh(tx, by, input.versionSeen);
     if (batch.status === "closed") throw new AppError("conflict", "A closed batch cannot be changed.");
-    if (batch.status === "draft") saveClasses(tx, batchId, input.classes);
+    if (batch.status === "draft") {
+      const before = knownToDetector(tx, batchId);
+      saveClasses(tx, batchId, input.classes);
+      // The pictures were looked at when they came, before the key was known.
+      if (knownToDetector(tx, batchId) !== before) proposeAgain(tx, { batchId, nowMs });
+    }
     const brief = findBrief(tx, batchId);
     const briefVersion = brief?.markdown === input.brief ? brief.version : (brief?.version ?? 0) + 1;
     if (briefVersion !== brief?.version) {
@@ -61,6 +67,15 @@ export function saveKeyAndBrief({ input, ...by }: By & { input: KeyAndBriefInput
       .where(eq(batches.id, batchId))
       .run();
   });
+}
+
+/** Which classes the detector knows and as what, to tell a change by. */
+function knownToDetector(tx: Tx, batchId: string): string {
+  return JSON.stringify(
+    listClasses(tx, batchId)
+      .filter(({ detectorLabel }) => detectorLabel !== null)
+      .map(({ id, detectorLabel }) => [id, detectorLabel]),
+  );
 }
 
 function saveClasses(tx: Tx, batchId: string, wanted: KeyAndBriefInput["classes"]): void {

@@ -1,7 +1,7 @@
 import { eq } from "drizzle-orm";
 import { getDb, inTransaction } from "@/db/client";
 import { findImage } from "@/db/queries/batches";
-import { briefExamples, images, proposalSets } from "@/db/schema";
+import { briefExamples, images, importedPredictions, proposalSets } from "@/db/schema";
 import type { Actor } from "@/lib/auth/actor";
 import { AppError } from "@/lib/errors";
 import { requireBatch } from "@/lib/market/access";
@@ -16,6 +16,7 @@ export async function removeImage({ actor, imageId }: { actor: Actor; imageId: s
     if (batch.status !== "draft") throw new AppError("conflict", "Images of a funded batch stay.");
     tx.delete(briefExamples).where(eq(briefExamples.imageId, imageId)).run();
     tx.delete(proposalSets).where(eq(proposalSets.imageId, imageId)).run();
+    tx.delete(importedPredictions).where(eq(importedPredictions.imageId, imageId)).run();
     tx.delete(images).where(eq(images.id, imageId)).run();
     return found;
   });

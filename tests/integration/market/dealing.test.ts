@@ -9,15 +9,7 @@ import { batchDealing } from "@/lib/market/proposals/batchDealing";
 import { claimTask } from "@/lib/market/work/claimTask";
 import { submitWork } from "@/lib/market/work/submitWork";
 import { freshDb } from "@/tests/support/db";
-import {
-  bottles,
-  classId,
-  drawing,
-  MINUTE_MS,
-  openMarket,
-  START_MS,
-  type Market,
-} from "@/tests/support/market";
+import { classId, drawing, MINUTE_MS, openMarket, START_MS, type Market } from "@/tests/support/market";
 
 const PROPOSALS = 16;
 

@@ -4,6 +4,7 @@ import { redirect } from "next/navigation";
 import { getDb } from "@/db/client";
 import { countWork, findBrief, listClasses, listImages, listReleases } from "@/db/queries/batches";
 import { findLatestTraining } from "@/db/queries/models";
+import { countAcceptance, findPredictionImport } from "@/db/queries/proposals";
 import { getTeamRole } from "@/db/queries/people";
 import { listAnnotatorsOf, listCurrentRuns, listDisputesOf, measureBatch } from "@/db/queries/work";
 import { Bars } from "@/components/ui/Bars";
@@ -23,11 +24,13 @@ import { When } from "@/components/ui/When";
 import { orNotFound, requirePageActor } from "@/lib/auth/page";
 import { requireBatch } from "@/lib/market/access";
 import { batchStatus } from "@/lib/market/batches/batchStatus";
+import { savingsOf } from "@/lib/market/proposals/savings";
 import { batchMoney } from "@/lib/market/money/queries";
 import { BatchMark } from "../_components/BatchMark";
 import { BatchActions } from "./_components/BatchActions";
 import { BatchProgress } from "./_components/BatchProgress";
 import { ImageGrid } from "./_components/ImageGrid";
+import { ProposalsPanel } from "./_components/ProposalsPanel";
 import { Releases } from "./_components/Releases";
 import { TargetPanel } from "./_components/TargetPanel";
 
@@ -233,39 +236,13 @@ export default async function BatchPage({ params }: Props) {
               medianPayCents={measured.medianPayCents}
             />
           ) : null}
-          <Sheet
-            title="Proposals"
-            lead={
-              training === undefined
-                ? "Proposals come from the pictures alone so far; they learn from the first settled ones."
-                : undefined
-            }
-          >
-            {training ? (
-              <p>
-                Version {training.version} learned from {training.settledImages} settled{" "}
-                {training.settledImages === 1 ? "picture" : "pictures"}.{" "}
-                {training.useful && training.apWith !== null ? (
-                  <>
-                    On settled pictures that it had not seen, its average precision is{" "}
-                    <span className="font-figures">{training.apWith.toFixed(2)}</span>
-                    {training.apWithout === null ? (
-                      ""
-                    ) : (
-                      <>
-                        {" "}
-                        (without learning{" "}
-                        <span className="font-figures">{training.apWithout.toFixed(2)}</span>)
-                      </>
-                    )}
-                    ; it is in use.
-                  </>
-                ) : (
-                  <>It is not better than what was there before, so it is not in use.</>
-                )}
-              </p>
-            ) : null}
-          </Sheet>
+          <ProposalsPanel
+            batchId={batchId}
+            training={training}
+            savings={savingsOf(countAcceptance(db, batchId), measured.hourlyCents)}
+            imported={findPredictionImport(db, batchId)}
+            mayImport={mayEdit && batch.status !== "closed"}
+          />
         </div>
         <Releases
           batchId={batchId}

@@ -15,6 +15,7 @@ import { Sheet } from "@/components/ui/Sheet";
 import { Tabs } from "@/components/ui/Tabs";
 import { TextArea } from "@/components/ui/TextArea";
 import { TextInput } from "@/components/ui/TextInput";
+import { suggestLabel, type EverydayLabel } from "@/lib/proposals/everydayLabels";
 import { saveKey } from "../../../actions";
 
 type ClassDraft = {
@@ -24,6 +25,8 @@ type ClassDraft = {
   colour: string;
   pattern: string;
   geometry: "box" | "polygon";
+  /** What the detector of everyday things calls it, once that is confirmed. */
+  detectorLabel: EverydayLabel | null;
 };
 type Example = { imageId: string; caption: string };
 type Batch = {
@@ -61,6 +64,7 @@ function freshClass(number: number): ClassDraft {
     colour: classColour(number).hex,
     pattern: classPattern(number),
     geometry: "polygon",
+    detectorLabel: null,
   };
 }
 
@@ -152,7 +156,12 @@ export function KeyStep({ batch, images }: { batch: Batch; images: { id: string;
                 maxLength={60}
                 disabled={!batch.isDraft}
                 error={field(`classes/${index}/name`)}
-                onChange={(event) => change(index, { name: event.currentTarget.value })}
+                onChange={(event) => {
+                  const name = event.currentTarget.value;
+                  // A confirmed match is of the name that it was confirmed for.
+                  const isSame = suggestLabel(name) === entry.detectorLabel;
+                  change(index, { name, detectorLabel: isSame ? entry.detectorLabel : null });
+                }}
               />
               <Select
                 label="Drawn as"
@@ -188,6 +197,11 @@ export function KeyStep({ batch, images }: { batch: Batch; images: { id: string;
                   />
                 </span>
               ) : null}
+              <KnownClass
+                entry={entry}
+                disabled={!batch.isDraft}
+                onChange={(detectorLabel) => change(index, { detectorLabel })}
+              />
             </li>
           ))}
         </ul>
@@ -309,6 +323,30 @@ export function KeyStep({ batch, images }: { batch: Batch; images: { id: string;
         ) : null}
       </div>
     </div>
+  );
+}
+
+/** Offers the detector of everyday things for a class whose name it probably knows. */
+function KnownClass({
+  entry,
+  disabled,
+  onChange,
+}: {
+  entry: ClassDraft;
+  disabled: boolean;
+  onChange: (label: EverydayLabel | null) => void;
+}) {
+  const label = entry.detectorLabel ?? suggestLabel(entry.name);
+  if (!label) return null;
+  return (
+    <Checkbox
+      className="sm:col-span-full sm:ms-10"
+      label={`“${entry.name.trim()}” is what the everyday detector calls “${label}”`}
+      hint="Confirm it if your pictures are everyday photographs: proposals of this class then come with its name. It is switched off by itself where it does not help on settled pictures."
+      checked={entry.detectorLabel !== null}
+      disabled={disabled}
+      onChange={(event) => onChange(event.currentTarget.checked ? label : null)}
+    />
   );
 }
 

@@ -28,14 +28,17 @@ export default async function KeyStepPage({ params }: Props) {
         sensitive: batch.sensitive,
         sensitiveNote: batch.sensitiveNote,
         safetyCritical: batch.safetyCritical,
-        classes: listClasses(db, batchId).map(({ id, number, name, colour, pattern, geometry }) => ({
-          id,
-          number,
-          name,
-          colour,
-          pattern,
-          geometry,
-        })),
+        classes: listClasses(db, batchId).map(
+          ({ id, number, name, colour, pattern, geometry, detectorLabel }) => ({
+            id,
+            number,
+            name,
+            colour,
+            pattern,
+            geometry,
+            detectorLabel,
+          }),
+        ),
         examples: listBriefExamples(db, batchId).map(({ imageId, caption }) => ({ imageId, caption })),
       }}
       images={images}

@@ -1,0 +1,35 @@
+import { and, eq, sql } from "drizzle-orm";
+import type { Tx } from "@/db/client";
+import { claims, images } from "@/db/schema";
+import { enqueue } from "@/lib/jobs/queue";
+
+/**
+ * Has the pictures of a batch that nobody has begun to draw looked at again, because what is known of the batch changed. A
+ * picture that people draw keeps the proposals that they were dealt. Returns how many.
+ */
+export function proposeAgain(tx: Tx, { batchId, nowMs }: { batchId: string; nowMs: number }): number {
+  const untouched = tx
+    .select({ id: images.id })
+    .from(images)
+    .where(
+      and(
+        eq(images.batchId, batchId),
+        eq(images.status, "ready"),
+        eq(images.consensusState, "none"),
+        sql`not exists (select 1 from ${claims} c where c.image_id = ${images.id} and c.status in ('live', 'submitted'))`,
+      ),
+    )
+    .all();
+  for (const { id } of untouched) {
+    enqueue(tx, {
+      kind: "image.propose",
+      payload: { imageId: id },
+      subject: batchId,
+      uniqueKey: `propose:${id}`,
+      nowMs,
+      priority: -2,
+      attemptsMax: 3,
+    });
+  }
+  return untouched.length;
+}
