@@ -1,6 +1,6 @@
 import { index, integer, real, sqliteTable, text } from "drizzle-orm/sqlite-core";
 import type { ExemplarModel } from "@/lib/proposals/exemplar";
-import type { ImportedPrediction, WrongRecord } from "@/lib/proposals/importedResults";
+import type { ImportedPrediction, WrongRecord } from "@/lib/formats/importedResults";
 import { batches, images } from "./batches";
 import { users } from "./people";
 

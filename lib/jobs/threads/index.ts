@@ -2,7 +2,7 @@ import type { Box, Rings } from "@/lib/geometry/types";
 import { decodeFile } from "@/lib/vision/decode";
 import type { EverydayLabel } from "@/lib/proposals/everydayLabels";
 import { everydayDetector } from "@/lib/proposals/everydayFiles";
-import type { ImportedPrediction } from "@/lib/proposals/importedResults";
+import type { ImportedPrediction } from "@/lib/formats/importedResults";
 import { propose, type Everyday, type Proposal } from "@/lib/proposals/propose";
 import { trainExemplars, type ExemplarModel } from "@/lib/proposals/exemplar";
 import { recallAmongFirst } from "@/lib/proposals/recall";

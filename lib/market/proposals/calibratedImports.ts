@@ -2,7 +2,7 @@ import type { Reader } from "@/db/client";
 import type { ImageRow } from "@/db/queries/batches";
 import { findImportedPredictions, listSettledImports } from "@/db/queries/proposals";
 import { calibrationOf, judgeBySettled } from "@/lib/proposals/dealing";
-import type { ImportedPrediction } from "@/lib/proposals/importedResults";
+import type { ImportedPrediction } from "@/lib/formats/importedResults";
 
 const SETTLED_MAX = 40;
 /** Predictions of one settled picture that are judged: what follows is hardly ever dealt. */

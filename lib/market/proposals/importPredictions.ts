@@ -13,7 +13,7 @@ import {
   readImportedResults,
   type ImportedResults,
   type ImportTarget,
-} from "@/lib/proposals/importedResults";
+} from "@/lib/formats/importedResults";
 import { proposeAgain } from "./proposeAgain";
 
 /** Wrong records that are kept by line; of the others only the count. */

@@ -1,5 +1,5 @@
-import { parseCocoAnnotation, parseCocoImage, type CocoContext } from "@/lib/formats/coco";
-import { FormatError, type DatasetImage } from "@/lib/formats/dataset";
+import { parseCocoAnnotation, parseCocoImage, type CocoContext } from "./coco";
+import { FormatError, type DatasetImage } from "./dataset";
 import { boxOfShape } from "@/lib/geometry/box";
 import type { Box, Rings } from "@/lib/geometry/types";
 

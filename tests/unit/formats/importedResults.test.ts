@@ -1,6 +1,6 @@
 import { describe, expect, it } from "vitest";
 import { FormatError } from "@/lib/formats/dataset";
-import { readImportedResults, type ImportTarget } from "@/lib/proposals/importedResults";
+import { readImportedResults, type ImportTarget } from "@/lib/formats/importedResults";
 
 const TARGET: ImportTarget = {
   images: [
