@@ -60,6 +60,7 @@ export function DeskSheet({ task, isAhead, mode, services }: Props) {
   const [handInOpen, setHandInOpen] = useState(false);
   const outline = useOutline(task, controller);
   useEffect(() => controller.setOutliner(outline), [controller, outline]);
+  useEffect(() => controller.setKeys(preferences.keys), [controller, preferences.keys]);
   useEffect(() => {
     if (isAhead && task.draft) draft.keeper.put(task.draft);
   }, [isAhead, task.draft, draft.keeper]);
@@ -314,9 +315,13 @@ export function DeskSheet({ task, isAhead, mode, services }: Props) {
           </>
         }
         onConfirm={async () => {
-          if (summary.boxesToOutline.length > 0) {
-            controller.select(summary.boxesToOutline[0] ?? null);
-            return `${summary.boxesToOutline.length} ${summary.boxesToOutline.length === 1 ? "box is" : "boxes are"} in a class that wants an outline. Select ${summary.boxesToOutline.length === 1 ? "it" : "each"} and press O, or draw ${summary.boxesToOutline.length === 1 ? "it" : "them"} anew.`;
+          const boxes = summary.boxesToOutline;
+          if (boxes.length > 0) {
+            await outline.outlineBoxes(boxes, { standIn: true });
+            controller.select(boxes[0] ?? null);
+            return boxes.length === 1
+              ? "One box was in a class that wants an outline, and was outlined just now. Look at it, then hand in."
+              : `${boxes.length} boxes were in classes that want outlines, and were outlined just now. Look at them, then hand in.`;
           }
           await draft.keeper.flush();
           return handIn();

@@ -8,6 +8,7 @@ import type { DeskProposal, DeskTask } from "@/lib/contracts/desk";
 import type { DeskController } from "@/lib/desk/controller";
 import type { KeyTable } from "@/lib/desk/keys";
 import { bounds } from "@/lib/desk/shapes";
+import { svgPathOf } from "@/lib/geometry/svgPath";
 
 type Props = {
   controller: DeskController;
@@ -93,10 +94,7 @@ const Cutting = memo(function Cutting({ proposal, task }: { proposal: DeskPropos
   const side = Math.max(width, height) * 1.3;
   const left = x + width / 2 - side / 2;
   const top = y + height / 2 - side / 2;
-  const path =
-    proposal.shape.kind === "box"
-      ? `M${x} ${y}h${width}v${height}h${-width}z`
-      : proposal.shape.rings.map((ring) => `M${ring.map(([px, py]) => `${px} ${py}`).join("L")}z`).join("");
+  const path = svgPathOf(proposal.shape);
   return (
     <svg
       aria-hidden

@@ -4,8 +4,9 @@ import type { Scene, Sketch } from "@/lib/desk/controller";
 import { bounds, ringsOf } from "@/lib/desk/shapes";
 import { draftOf } from "@/lib/desk/tool";
 import type { Viewport } from "@/lib/desk/viewport";
+import { svgPathOf } from "@/lib/geometry/svgPath";
 import type { Box, Point, Shape } from "@/lib/geometry/types";
-import { inkOn } from "@/components/ui/classPalette";
+import { classPattern, inkOn, type PatternName } from "@/components/ui/classPalette";
 
 const CASING = "rgba(10,16,20,0.85)";
 const PATTERN_CELL_PX = 12;
@@ -17,7 +18,7 @@ const REST_MS = 90;
 const DIMMED = 0.25;
 
 /** How the inside of a class is marked, so that classes differ without colour too. */
-function patternTile(pattern: string, colour: string): HTMLCanvasElement | undefined {
+function patternTile(pattern: PatternName, colour: string): HTMLCanvasElement | undefined {
   if (pattern === "solid") return undefined;
   const tile = document.createElement("canvas");
   tile.width = tile.height = PATTERN_CELL_PX;
@@ -47,15 +48,6 @@ function patternTile(pattern: string, colour: string): HTMLCanvasElement | undef
     ink.fillRect(n / 2, n / 2, n / 2, n / 2);
   }
   return tile;
-}
-
-function pathOf(shape: Shape): Path2D {
-  const path = new Path2D();
-  for (const ring of ringsOf(shape)) {
-    ring.forEach(([x, y], index) => (index === 0 ? path.moveTo(x, y) : path.lineTo(x, y)));
-    path.closePath();
-  }
-  return path;
 }
 
 type Look = { colour: string; number: number | null; tile: HTMLCanvasElement | undefined };
@@ -101,7 +93,7 @@ class ShapeMark extends Mark {
   ) {
     super();
     this.box = bounds(instance.shape);
-    this.path = pathOf(instance.shape);
+    this.path = new Path2D(svgPathOf(instance.shape));
   }
 
   draw(ink: CanvasRenderingContext2D, px: number): void {
@@ -183,7 +175,7 @@ class DealtMark extends Mark {
   ) {
     super();
     this.box = bounds(shape);
-    this.path = pathOf(shape);
+    this.path = new Path2D(svgPathOf(shape));
   }
   draw(ink: CanvasRenderingContext2D, px: number): void {
     ink.fillStyle = "rgba(255,255,255,0.14)";
@@ -334,7 +326,7 @@ export class ShapePainter {
     const look = {
       colour,
       number: kind?.number ?? null,
-      tile: patternTile(kind?.pattern ?? "solid", colour),
+      tile: kind && patternTile(classPattern(kind.number), colour),
     };
     this.looks.set(classId, look);
     return look;

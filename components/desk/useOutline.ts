@@ -4,7 +4,7 @@ import { useCallback, useEffect, useRef, useState } from "react";
 import type { DeskTask } from "@/lib/contracts/desk";
 import type { DeskController } from "@/lib/desk/controller";
 import { bounds } from "@/lib/desk/shapes";
-import type { Box, Point } from "@/lib/geometry/types";
+import type { Box, Point, Shape } from "@/lib/geometry/types";
 import type { OutlineAnswer, OutlineQuestion } from "./outlineWorker";
 
 /** Room around the box that the worker sees, as a share of its longer side. */
@@ -24,6 +24,15 @@ export function useOutline(task: DeskTask, controller: DeskController) {
   const picture = useRef<Promise<ImageBitmap> | null>(null);
   const seeds = useRef(new Map<string, Seeds>());
   const asked = useRef(0);
+  const waiting = useRef<Promise<void>>(Promise.resolve());
+  const second = useRef<Worker | null>(null);
+  useEffect(
+    () => () => {
+      second.current?.terminate();
+      second.current = null;
+    },
+    [],
+  );
 
   const stop = useCallback((): void => {
     asked.current += 1;
@@ -40,12 +49,10 @@ export function useOutline(task: DeskTask, controller: DeskController) {
       const id = ++asked.current;
       setRunning(true);
       try {
-        picture.current ??= fetch(task.imageUrl)
-          .then((answer) => answer.blob())
-          .then((blob) => createImageBitmap(blob));
+        picture.current ??= pictureAt(task.imageUrl);
         const question = cut(await picture.current, known, id);
         if (id !== asked.current) return; // dropped, or asked anew, meanwhile
-        worker.current ??= new Worker(new URL("./outlineWorker.ts", import.meta.url), { type: "module" });
+        worker.current ??= newWorker();
         const { rings } = await answerOf(worker.current, question);
         if (id !== asked.current) return;
         if (rings.length === 0) controller.warn("No outline was found. Draw it by hand.");
@@ -92,7 +99,57 @@ export function useOutline(task: DeskTask, controller: DeskController) {
     },
     [controller, ask],
   );
-  return { run, stop, fromExtremes, addStroke, isRunning };
+
+  const outlineOf = useCallback(
+    async (box: Box): Promise<Shape | null> => {
+      picture.current ??= pictureAt(task.imageUrl);
+      const question = cut(await picture.current, { box, extremes: [], inside: [], outside: [] }, 0);
+      second.current ??= newWorker();
+      const { rings } = await answerOf(second.current, question);
+      return rings.length === 0 ? null : { kind: "polygon", rings };
+    },
+    [task.imageUrl],
+  );
+
+  /**
+   * Outlines boxes that a class does not want, one after the other, in a worker of their own: taking three
+   * proposals in a row outlines three, and Escape drops none. `standIn` says whether the rectangle is put in
+   * where the engine could not be reached; without it such a box stays, to be tried again.
+   */
+  const outlineBoxes = useCallback(
+    (ids: readonly string[], { standIn }: { standIn: boolean }): Promise<void> => {
+      waiting.current = waiting.current.then(async () => {
+        for (const id of ids) {
+          const shape = controller.find(id)?.shape;
+          if (shape?.kind !== "box") continue; // undone, or outlined by hand meanwhile
+          try {
+            controller.outlineBox(id, shape, await outlineOf(shape.box));
+          } catch {
+            picture.current = null; // the network may be back at the next try
+            second.current?.terminate();
+            second.current = null;
+            if (standIn) controller.outlineBox(id, shape, null);
+          }
+        }
+      });
+      return waiting.current;
+    },
+    [controller, outlineOf],
+  );
+  const fromTaken = useCallback(
+    (id: string): void => void outlineBoxes([id], { standIn: false }),
+    [outlineBoxes],
+  );
+  return { run, stop, fromExtremes, fromTaken, addStroke, outlineBoxes, isRunning };
+}
+
+function newWorker(): Worker {
+  return new Worker(new URL("./outlineWorker.ts", import.meta.url), { type: "module" });
+}
+
+async function pictureAt(url: string): Promise<ImageBitmap> {
+  const answer = await fetch(url);
+  return createImageBitmap(await answer.blob());
 }
 
 function pointsAlong(from: Point, to: Point, stepPx: number): Point[] {

@@ -6,6 +6,7 @@ import { Checkbox } from "@/components/ui/Checkbox";
 import { ClassSwatch } from "@/components/ui/ClassSwatch";
 import { cn } from "@/components/ui/cn";
 import { StateSign, type MarkState } from "@/components/ui/StateMark";
+import { svgPathOf } from "@/lib/geometry/svgPath";
 import type { Shape } from "@/lib/geometry/types";
 
 export type EvidenceInstance = {
@@ -256,7 +257,7 @@ type OutlineProps = {
 
 /** One shape: a dark casing under the class colour, so that it shows on any ground. */
 function Outline({ shape, colour, dash, strong, faint, onPick }: OutlineProps) {
-  const path = pathOf(shape);
+  const path = svgPathOf(shape);
   const width = strong ? 4 : 2.2;
   return (
     <g opacity={faint ? 0.25 : 1} onClick={onPick} className="cursor-pointer">
@@ -280,14 +281,6 @@ function Outline({ shape, colour, dash, strong, faint, onPick }: OutlineProps) {
       />
     </g>
   );
-}
-
-function pathOf(shape: Shape): string {
-  if (shape.kind === "box") {
-    const [x, y, width, height] = shape.box;
-    return `M${x} ${y}h${width}v${height}h${-width}z`;
-  }
-  return shape.rings.map((ring) => `M${ring.map(([x, y]) => `${x} ${y}`).join("L")}z`).join("");
 }
 
 function HeatLayer({ heat, id }: { heat: Heat; id: string }) {

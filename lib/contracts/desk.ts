@@ -35,7 +35,6 @@ export const DeskClass = z.object({
   number: z.int(),
   name: z.string(),
   colour: z.string(),
-  pattern: z.string(),
   geometry: z.enum(["box", "polygon"]),
 });
 export type DeskClass = z.output<typeof DeskClass>;

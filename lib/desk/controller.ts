@@ -4,6 +4,7 @@ import { cutOut, joined, sharingBorder, splitBy } from "./combine";
 import { EMPTY_DOCUMENT, type Command } from "./document";
 import { amend, historyOf, perform, redo, undo, type History } from "./history";
 import { hitTest, SLOP_PX, type Hit } from "./hit";
+import { DEFAULT_KEYS, type KeyTable } from "./keys";
 import { bounds, inside, mend, moveShape, problemOfRings, replaceVertex, ringsOf, uncross } from "./shapes";
 import { changed, IDLE, step, type ToolContext, type ToolEvent, type ToolState } from "./tool";
 import { deal, taken } from "./tray";
@@ -52,6 +53,8 @@ type Options = {
 export type Outliner = {
   /** An outline was begun from its four extreme points. */
   fromExtremes: (id: string, extremes: readonly Point[]) => void;
+  /** A proposal that is but a box was taken in a class of outlines. */
+  fromTaken: (id: string) => void;
   /** A stroke was drawn over what belongs to an instance, or over what does not. */
   addStroke: (id: string, kind: "inside" | "outside", from: Point, to: Point) => void;
 };
@@ -81,6 +84,7 @@ export class DeskController {
   private isWarning = false;
   private lastNudge = { id: "", atMs: -Infinity };
   private outliner: Outliner | null = null;
+  private keys: KeyTable = DEFAULT_KEYS;
   private sceneListeners = new Set<Listener>();
   private sketchListeners = new Set<Listener>();
   private scene: Scene;
@@ -102,6 +106,11 @@ export class DeskController {
 
   setOutliner(outliner: Outliner | null): void {
     this.outliner = outliner;
+  }
+
+  /** The keys as this person has them, for what is said about them. */
+  setKeys(keys: KeyTable): void {
+    this.keys = keys;
   }
 
   get document(): DeskDocument {
@@ -230,7 +239,7 @@ export class DeskController {
     const outcome = step(this.tool, event, this.toolContext(kind));
     this.tool = outcome.state;
     if (outcome.refused) this.refused = outcome.refused;
-    if (outcome.problem) this.warn(PROBLEM[outcome.problem]);
+    if (outcome.problem) this.warn(this.problemText(outcome.problem));
     if (outcome.command?.type === "add" && this.intent) {
       this.combine(this.intent, outcome.command.instance.shape);
     } else {
@@ -517,7 +526,7 @@ export class DeskController {
     const rings = replaceVertex(shape.rings, place.ring, place.vertex, to);
     const problem = problemOfRings(rings);
     if (!problem) return { kind: "polygon", rings };
-    this.warn(PROBLEM[problem]);
+    this.warn(this.problemText(problem));
     return undefined;
   }
 
@@ -641,6 +650,20 @@ export class DeskController {
     this.changed();
   }
 
+  /**
+   * Puts the outline that was found for a box in its place; its rectangle, where none was found, so that the
+   * drawing can be handed in. One undoable command. Whose box it was stays as it was: nobody adjusted it.
+   * Does nothing where the shape is no longer `asked`, or its class wants boxes by now.
+   */
+  outlineBox(id: string, asked: Shape, found: Shape | null): void {
+    const instance = this.find(id);
+    if (instance?.shape !== asked || this.classOf(instance)?.geometry !== "polygon") return;
+    const shape: Shape = found ?? { kind: "polygon", rings: ringsOf(asked) };
+    this.perform({ type: "change", id, to: { shape } }, found ? "Outlined. Adjust it where it is off." : "");
+    if (!found) return this.warn("No outline was found: the rectangle stands in for it. Adjust it.");
+    this.changed();
+  }
+
   // ---- the tray
 
   get dealt(): DeskProposal | undefined {
@@ -663,6 +686,7 @@ export class DeskController {
     this.setSelected(adjust ? instance.id : null);
     if (adjust) this.fitIfHidden(instance);
     this.changed();
+    if (kind.geometry === "polygon" && instance.shape.kind === "box") this.outliner?.fromTaken(instance.id);
   }
 
   sendAway(): void {
@@ -709,6 +733,12 @@ export class DeskController {
     this.selectedId = id;
     this.vertex = null;
     if (this.intent && this.intent.id !== id) this.intent = null;
+  }
+
+  private problemText(problem: keyof typeof PROBLEM): string {
+    if (problem !== "crosses") return PROBLEM[problem];
+    const mend = `${PROBLEM.crosses} Press ${this.keys.mend.toUpperCase()} to mend it`;
+    return this.tool.mode === "idle" ? `${mend}.` : `${mend}, or Backspace to take points back.`;
   }
 
   private textOf(command: Command): string {
@@ -812,7 +842,7 @@ function locate(shape: Shape, count: number): { ring: number; vertex: number } |
 const PROBLEM = {
   "too-few": "An outline needs three points or more; four for the extremes.",
   "too-small": "Too small to be meant. Zoom in if it is real.",
-  crosses: "The outline crosses itself. Press R to mend it, or Backspace to take points back.",
+  crosses: "The outline crosses itself.",
 } as const;
 
 const INTENT: Record<IntentKind, string> = {

@@ -6,7 +6,6 @@ export const CAN: DeskClass = {
   number: 1,
   name: "can",
   colour: "#0072b2",
-  pattern: "rising",
   geometry: "polygon",
 };
 export const FLOAT: DeskClass = { ...CAN, id: "float", number: 2, name: "net float", geometry: "box" };

@@ -47,12 +47,11 @@ export function imageForDesk(
     imageUrl: `/api/images/${image.id}/working`,
     width: image.width,
     height: image.height,
-    classes: listClasses(db, batch.id).map(({ id, number, name, colour, pattern, geometry }) => ({
+    classes: listClasses(db, batch.id).map(({ id, number, name, colour, geometry }) => ({
       id,
       number,
       name,
       colour,
-      pattern,
       geometry,
     })),
     proposals: (findProposals(db, imageId)?.proposals ?? []).map((proposal) => ({

@@ -1,6 +1,7 @@
 import { beforeEach, describe, expect, it } from "vitest";
 import type { DeskDocument } from "@/lib/contracts/desk";
 import { DeskController } from "@/lib/desk/controller";
+import { DEFAULT_KEYS } from "@/lib/desk/keys";
 import { ringsArea } from "@/lib/geometry/region";
 import type { Point } from "@/lib/geometry/types";
 import { deskTask, instance, proposal, square } from "@/tests/support/deskTask";
@@ -101,7 +102,11 @@ describe("drawing without choosing a tool", () => {
   it("makes an outline that touches all four extremes' sides in a class of outlines, by one key", () => {
     const seeds: (readonly Point[])[] = [];
     const controller = desk();
-    controller.setOutliner({ fromExtremes: (_, points) => seeds.push(points), addStroke: () => undefined });
+    controller.setOutliner({
+      fromExtremes: (_, points) => seeds.push(points),
+      fromTaken: () => undefined,
+      addStroke: () => undefined,
+    });
     const extremes: Point[] = [
       [150, 100],
       [100, 160],
@@ -355,6 +360,96 @@ describe("the tray", () => {
     controller.undo();
     expect(controller.getScene().dealt.map((entry) => entry.id)).toEqual(["p2"]);
   });
+});
+
+describe("a box proposal that is taken in a class of outlines", () => {
+  const boxed = () =>
+    desk({
+      proposals: [{ id: "p1", classId: "can", shape: { kind: "box", box: [10, 20, 60, 40] }, score: 0.9 }],
+    });
+  const takenBox = () => {
+    const controller = boxed();
+    const wanted: string[] = [];
+    controller.setOutliner({
+      fromExtremes: () => undefined,
+      fromTaken: (id) => wanted.push(id),
+      addStroke: () => undefined,
+    });
+    controller.take(false);
+    return { controller, wanted, asked: only(controller).shape };
+  };
+  const found = { kind: "polygon", rings: square(20, 30, 25) } as const;
+
+  it("asks for its outline by itself, and undoes the outline apart from the taking", () => {
+    const { controller, wanted, asked } = takenBox();
+    expect(wanted).toEqual(["s1"]);
+    controller.outlineBox("s1", asked, found);
+    expect(only(controller)).toMatchObject({ shape: found, origin: "taken", proposalId: "p1" });
+    controller.undo();
+    expect(only(controller).shape).toEqual(asked);
+    controller.undo();
+    expect(controller.document.instances).toEqual([]);
+  });
+
+  it("stands in by its rectangle where no outline is found, and says so", () => {
+    const { controller, asked } = takenBox();
+    controller.outlineBox("s1", asked, null);
+    expect(only(controller).shape).toEqual({
+      kind: "polygon",
+      rings: [
+        [
+          [10, 20],
+          [70, 20],
+          [70, 60],
+          [10, 60],
+        ],
+      ],
+    });
+    expect(controller.getScene()).toMatchObject({ isWarning: true });
+  });
+
+  it("leaves alone what was undone, changed by hand or given a class of boxes meanwhile", () => {
+    const undone = takenBox();
+    undone.controller.undo();
+    undone.controller.outlineBox("s1", undone.asked, found);
+    expect(undone.controller.document.instances).toEqual([]);
+
+    const moved = takenBox();
+    moved.controller.select("s1");
+    moved.controller.nudge(5, 0);
+    moved.controller.outlineBox("s1", moved.asked, found);
+    expect(only(moved.controller).shape).toEqual({ kind: "box", box: [15, 20, 60, 40] });
+
+    const reclassed = takenBox();
+    reclassed.controller.select("s1");
+    reclassed.controller.setClass("float");
+    reclassed.controller.outlineBox("s1", reclassed.asked, found);
+    expect(only(reclassed.controller).shape.kind).toBe("box");
+  });
+
+  it("is not asked about in a class of boxes", () => {
+    const controller = desk({ proposals: [proposal("p1", square(10, 10, 60), { classId: "float" })] });
+    controller.setOutliner({
+      fromExtremes: () => undefined,
+      fromTaken: () => expect.fail("a box is what this class wants"),
+      addStroke: () => undefined,
+    });
+    controller.take(false);
+    expect(only(controller).shape.kind).toBe("box");
+  });
+});
+
+it("names the key that mends a crossing as this person has it", () => {
+  const controller = desk();
+  controller.setKeys({ ...DEFAULT_KEYS, mend: "z" });
+  clicks(controller, [
+    [100, 100],
+    [200, 200],
+    [200, 100],
+    [100, 200],
+  ]);
+  controller.finish();
+  expect(controller.getScene().message).toContain("Press Z to mend it");
 });
 
 describe("the view and the listeners", () => {
