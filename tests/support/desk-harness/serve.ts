@@ -41,7 +41,14 @@ export async function serveDesk(picture?: Buffer): Promise<Served> {
       },
     ],
   };
-  await build(config);
+  // Vite goes by NODE_ENV, which a test runner sets to "test": React's development build would be mixed in.
+  const before = process.env.NODE_ENV ?? "production";
+  Object.assign(process.env, { NODE_ENV: "production" });
+  try {
+    await build(config);
+  } finally {
+    Object.assign(process.env, { NODE_ENV: before });
+  }
   const server = await preview({ ...config, preview: { host: "127.0.0.1", port: 0, open: false } });
   const address = server.httpServer.address();
   if (address === null || typeof address === "string") throw new Error("the harness got no port");
