@@ -4,7 +4,7 @@ import type { Scene, Sketch } from "@/lib/desk/controller";
 import { bounds, ringsOf } from "@/lib/desk/shapes";
 import { draftOf } from "@/lib/desk/tool";
 import type { Viewport } from "@/lib/desk/viewport";
-import { svgPathOf } from "@/lib/geometry/svgPath";
+import { traceShape } from "@/lib/geometry/svgPath";
 import type { Box, Point, Shape } from "@/lib/geometry/types";
 import { classPattern, inkOn, type PatternName } from "@/components/ui/classPalette";
 
@@ -93,7 +93,7 @@ class ShapeMark extends Mark {
   ) {
     super();
     this.box = bounds(instance.shape);
-    this.path = new Path2D(svgPathOf(instance.shape));
+    this.path = traceShape(instance.shape, new Path2D());
   }
 
   draw(ink: CanvasRenderingContext2D, px: number): void {
@@ -175,7 +175,7 @@ class DealtMark extends Mark {
   ) {
     super();
     this.box = bounds(shape);
-    this.path = new Path2D(svgPathOf(shape));
+    this.path = traceShape(shape, new Path2D());
   }
   draw(ink: CanvasRenderingContext2D, px: number): void {
     ink.fillStyle = "rgba(255,255,255,0.14)";

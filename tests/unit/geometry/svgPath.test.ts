@@ -2,7 +2,7 @@ import { expect, it } from "vitest";
 import { svgPathOf } from "@/lib/geometry/svgPath";
 
 it("writes a box clockwise from its top left corner, and closes it", () => {
-  expect(svgPathOf({ kind: "box", box: [1, 2, 30.5, 40] })).toBe("M1 2H31.5V42H1Z");
+  expect(svgPathOf({ kind: "box", box: [1, 2, 30.5, 40] })).toBe("M1 2L31.5 2L31.5 42L1 42Z");
 });
 
 it("writes each ring as a closed subpath of its own, so that a hole stays one under the even-odd rule", () => {
