@@ -99,7 +99,7 @@ export function DeskSheet({ task, isAhead, mode, services }: Props) {
       <header className="border-line flex flex-wrap items-center gap-x-5 gap-y-1 border-b px-3 py-1.5 sm:px-4">
         <div className="min-w-0 grow basis-40">
           <h1 className="font-heading truncate text-base leading-tight font-semibold">{task.imageName}</h1>
-          <p className="text-muted truncate text-sm leading-tight">{task.batchTitle}</p>
+          <p className="text-muted truncate text-sm leading-[1.125rem]">{task.batchTitle}</p>
         </div>
         {mode === "annotate" ? (
           <TaskFigures task={task} seconds={activity.seconds} expectedCents={summary.expectedCents} />

@@ -9,11 +9,7 @@ import { AppError } from "@/lib/errors";
 import { FormatError } from "@/lib/formats/dataset";
 import { requireBatch } from "@/lib/market/access";
 import { audit } from "@/lib/market/audit";
-import {
-  readImportedResults,
-  type ImportedResults,
-  type ImportTarget,
-} from "@/lib/formats/importedResults";
+import { readImportedResults, type ImportedResults, type ImportTarget } from "@/lib/formats/importedResults";
 import { proposeAgain } from "./proposeAgain";
 
 /** Wrong records that are kept by line; of the others only the count. */
