@@ -10,7 +10,7 @@ import { EmptyState } from "@/components/ui/EmptyState";
 import { Money } from "@/components/ui/Money";
 import { PageHeader } from "@/components/ui/PageHeader";
 import { Notice } from "@/components/ui/Notice";
-import { formatDuration, formatPercent } from "@/components/ui/Figures";
+import { formatDuration } from "@/components/ui/Figures";
 import { Sheet } from "@/components/ui/Sheet";
 import { Stat, Stats } from "@/components/ui/Stat";
 import { StateMark } from "@/components/ui/StateMark";
