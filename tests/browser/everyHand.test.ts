@@ -236,7 +236,7 @@ describe("a known point", () => {
           const anchor = await hands.at(SMALL.centre);
           await page.mouse.move(anchor.x, anchor.y);
           await page.mouse.wheel(0, zoom < 7 ? 120 : -120);
-          await page.waitForTimeout(60);
+          await page.waitForTimeout(25);
         }
         await context.close();
       }

@@ -359,7 +359,8 @@ describe("the evidence", () => {
   it("names the brief that was shown at the claim, not the one of today", () => {
     const first = work(market, annotator(0), bottles());
     editBrief("Draw bottles only.");
-    work(market, annotator(1), bottles(1));
+    // Later than the first: submissions of one moment come in no stated order.
+    work(market, annotator(1), bottles(1), { nowMs: START_MS + 2 * MINUTE_MS });
     settleImage({ imageId, nowMs: START_MS + 5 * MINUTE_MS });
     const dispute = findDispute(db, contest(first));
     expect(dispute?.evidence.briefVersion).toBe(1);
