@@ -1,6 +1,4 @@
-import * as tf from "@tensorflow/tfjs-core";
-import { loadGraphModel, type GraphModel } from "@tensorflow/tfjs-converter";
-import { setThreadsCount } from "@tensorflow/tfjs-backend-wasm";
+import type { io, Tensor } from "@tensorflow/tfjs-core";
 import type { Box } from "@/lib/geometry/types";
 import { cutRaster, type Raster } from "@/lib/vision/raster";
 import { EVERYDAY_LABELS, type EverydayLabel } from "./everydayLabels";
@@ -56,15 +54,21 @@ export function everydayProbability(score: number, { slope, offset } = KEPT): nu
 /**
  * Makes the detector from its graph and weights: NanoDet (RangiLyu, 2020; Apache License 2.0), a one-stage detector with
  * distributions over box sides (Li et al., Generalized Focal Loss, 2020). Runs in WebAssembly on one core, without network;
- * the same in Node and in a worker of the browser. The picture is stretched to the input's square.
+ * the same in Node and in a worker of the browser. The picture is stretched to the input's square. TensorFlow.js is loaded
+ * by the first call only: who never asks for the detector does not wait for it.
  */
 export async function openEverydayDetector(graph: object, weights: ArrayBuffer): Promise<EverydayDetector> {
+  const [tf, { loadGraphModel }, { setThreadsCount }] = await Promise.all([
+    import("@tensorflow/tfjs-core"),
+    import("@tensorflow/tfjs-converter"),
+    import("@tensorflow/tfjs-backend-wasm"),
+  ]);
   setThreadsCount(1);
   await tf.setBackend("wasm");
   await tf.ready();
   const { modelTopology, weightsManifest } = graph as {
     modelTopology: object;
-    weightsManifest: { weights: tf.io.WeightsManifestEntry[] }[];
+    weightsManifest: { weights: io.WeightsManifestEntry[] }[];
   };
   const model = await loadGraphModel(
     tf.io.fromMemory({
@@ -73,11 +77,21 @@ export async function openEverydayDetector(graph: object, weights: ArrayBuffer):
       weightData: weights,
     }),
   );
-  return { find: (raster, labels) => findInAll(model, raster, labels) };
+  const network: Network = (values) => {
+    const outputs: Float32Array[] = [];
+    tf.tidy(() => {
+      const input = tf.tensor(values, [1, 3, SIDE_PX, SIDE_PX]);
+      // Kept outside: what tidy returns is searched for tensors number by number, which takes longer than the network.
+      for (const tensor of model.execute(input, OUTPUTS.flat()) as Tensor[])
+        outputs.push(tensor.dataSync() as Float32Array);
+    });
+    return outputs;
+  };
+  return { find: (raster, labels) => findInAll(network, raster, labels) };
 }
 
-function findInAll(model: GraphModel, raster: Raster, labels?: ReadonlySet<EverydayLabel>): EverydayHit[] {
-  const found = findIn(model, raster, labels);
+function findInAll(network: Network, raster: Raster, labels?: ReadonlySet<EverydayLabel>): EverydayHit[] {
+  const found = findIn(network, raster, labels);
   const isWide = raster.width >= raster.height;
   const long = Math.max(raster.width, raster.height);
   const half = Math.round(long * HALF_SHARE);
@@ -85,7 +99,7 @@ function findInAll(model: GraphModel, raster: Raster, labels?: ReadonlySet<Every
     const part = isWide
       ? cutRaster(raster, start, 0, half, raster.height)
       : cutRaster(raster, 0, start, raster.width, half);
-    for (const { box, label, score } of findIn(model, part, labels)) {
+    for (const { box, label, score } of findIn(network, part, labels)) {
       const [x, y, w, h] = box;
       const [near, far] = isWide ? [x, x + w] : [y, y + h];
       const isCut = start === 0 ? far > half - CUT_PX : near < CUT_PX;
@@ -100,15 +114,12 @@ function findInAll(model: GraphModel, raster: Raster, labels?: ReadonlySet<Every
   ).map((index) => found[index]!);
 }
 
+/** The planes of one picture in, the graph's OUTPUTS out. */
+type Network = (input: Float32Array) => Float32Array[];
+
 /** Hits of one look, several a thing. */
-function findIn(model: GraphModel, raster: Raster, labels?: ReadonlySet<EverydayLabel>): EverydayHit[] {
-  const outputs: Float32Array[] = [];
-  tf.tidy(() => {
-    const input = tf.tensor(inputOf(raster), [1, 3, SIDE_PX, SIDE_PX]);
-    // Kept outside: what tidy returns is searched for tensors number by number, which takes longer than the network.
-    for (const tensor of model.execute(input, OUTPUTS.flat()) as tf.Tensor[])
-      outputs.push(tensor.dataSync() as Float32Array);
-  });
+function findIn(network: Network, raster: Raster, labels?: ReadonlySet<EverydayLabel>): EverydayHit[] {
+  const outputs = network(inputOf(raster));
   const hits: { box: Box; label: number; score: number }[] = [];
   STRIDES.forEach((stride, level) => {
     const scores = outputs[level * 2]!;
