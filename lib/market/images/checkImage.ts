@@ -5,7 +5,7 @@ import { getDb, inTransaction } from "@/db/client";
 import { findImage } from "@/db/queries/batches";
 import { images } from "@/db/schema";
 import { IMAGE_BYTES_MAX, IMAGE_PIXELS_MAX } from "@/lib/contracts/batches";
-import { enqueue } from "@/lib/jobs/queue";
+import { queueProposals } from "@/lib/market/proposals/queueProposals";
 import { deleteObject, getObject, putObject } from "@/lib/services/store";
 import { mediaTypeOf } from "./mediaType";
 
@@ -64,14 +64,7 @@ export async function checkImage({ imageId, nowMs }: { imageId: string; nowMs: n
       })
       .where(eq(images.id, imageId))
       .run();
-    enqueue(tx, {
-      kind: "image.propose",
-      payload: { imageId },
-      subject: image.batchId,
-      uniqueKey: `propose:${imageId}`,
-      nowMs,
-      attemptsMax: 3,
-    });
+    queueProposals(tx, { imageId, batchId: image.batchId, nowMs });
   });
   // The original carries camera and place: the upright, stripped copy replaces it. Last, so that an attempt
   // that was cut short finds it again.

@@ -2,8 +2,8 @@ import { and, eq, inArray } from "drizzle-orm";
 import { getDb, inTransaction } from "@/db/client";
 import { images } from "@/db/schema";
 import type { Actor } from "@/lib/auth/actor";
-import { enqueue } from "@/lib/jobs/queue";
 import { requireBatch } from "@/lib/market/access";
+import { queueProposals } from "@/lib/market/proposals/queueProposals";
 
 /** Looks for proposals once more on the images where it failed or never ran. Returns how many. */
 export function retryProposals({
@@ -29,14 +29,7 @@ export function retryProposals({
       )
       .all();
     for (const { id } of waiting) {
-      enqueue(tx, {
-        kind: "image.propose",
-        payload: { imageId: id },
-        subject: batchId,
-        uniqueKey: `propose:${id}`,
-        nowMs,
-        attemptsMax: 3,
-      });
+      queueProposals(tx, { imageId: id, batchId, nowMs });
       tx.update(images).set({ proposalState: "queued" }).where(eq(images.id, id)).run();
     }
     return waiting.length;

@@ -1,7 +1,7 @@
 import { and, eq, sql } from "drizzle-orm";
 import type { Tx } from "@/db/client";
 import { claims, images } from "@/db/schema";
-import { enqueue } from "@/lib/jobs/queue";
+import { queueProposals } from "./queueProposals";
 
 /**
  * Has the pictures of a batch that nobody has begun to draw looked at again, because what is known of the batch changed. A
@@ -21,15 +21,7 @@ export function proposeAgain(tx: Tx, { batchId, nowMs }: { batchId: string; nowM
     )
     .all();
   for (const { id } of untouched) {
-    enqueue(tx, {
-      kind: "image.propose",
-      payload: { imageId: id },
-      subject: batchId,
-      uniqueKey: `propose:${id}`,
-      nowMs,
-      priority: -2,
-      attemptsMax: 3,
-    });
+    queueProposals(tx, { imageId: id, batchId, nowMs, priority: -2 });
   }
   return untouched.length;
 }
